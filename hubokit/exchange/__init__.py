@@ -1,0 +1,1 @@
+"""Files, and the objects of other libraries."""

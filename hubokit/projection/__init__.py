@@ -1,0 +1,1 @@
+"""The minimum of a quadratic model over its auxiliaries, by algebra."""

@@ -1,0 +1,1 @@
+"""Order reduction: from k-local to quadratic."""

@@ -1,0 +1,1 @@
+"""Gadgets: one file for each published family."""

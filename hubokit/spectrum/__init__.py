@@ -1,0 +1,1 @@
+"""Energies of many states: exhaustion, elimination, neighbourhoods."""

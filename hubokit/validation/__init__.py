@@ -1,0 +1,1 @@
+"""Claims about a reduction, and the evidence for them."""
