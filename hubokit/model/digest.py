@@ -15,6 +15,7 @@ from __future__ import annotations
 import hashlib
 from collections.abc import Sequence
 from fractions import Fraction
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -52,7 +53,7 @@ def function_digest(
     return "sha256:" + hashlib.sha256(canonical).hexdigest()
 
 
-def coefficient_texts(weights: NDArray[np.generic], resolution: Fraction) -> list[str]:
+def coefficient_texts(weights: NDArray[Any], resolution: Fraction) -> list[str]:
     """``weights * resolution`` as rationals in lowest terms.
 
     Examples

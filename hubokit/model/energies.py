@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,7 +15,7 @@ CELLS = 2**22
 """Products held at once."""
 
 
-def integer_energies(blocks: Sequence[Block], states: States) -> NDArray[np.generic]:
+def integer_energies(blocks: Sequence[Block], states: States) -> NDArray[Any]:
     """Sum of weights times products for each state.
 
     Parameters

@@ -13,6 +13,7 @@ import re
 from collections.abc import Iterable
 from decimal import Decimal
 from fractions import Fraction
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -133,7 +134,7 @@ def common_resolution(values: Iterable[Fraction]) -> Fraction:
     return Fraction(numerator, denominator) if numerator else Fraction(1)
 
 
-def absolute_sum(weights: NDArray[np.generic]) -> int:
+def absolute_sum(weights: NDArray[Any]) -> int:
     """Sum of absolute values as a Python integer, whatever the dtype; no wrap.
 
     Examples
@@ -151,7 +152,7 @@ def absolute_sum(weights: NDArray[np.generic]) -> int:
     return total - 2 * below
 
 
-def as_weights(values: object, place: str | None = None) -> NDArray[np.generic]:
+def as_weights(values: object, place: str | None = None) -> NDArray[Any]:
     """Whole numbers as int64 where every one fits, else as Python integers in an object array.
 
     Parameters
@@ -181,8 +182,15 @@ def as_weights(values: object, place: str | None = None) -> NDArray[np.generic]:
     raise InputError(f"weights of type {array.dtype} are not whole numbers; give integers and a resolution", place)
 
 
-def smallest_weights(weights: NDArray[np.generic]) -> NDArray[np.generic]:
+def smallest_weights(weights: NDArray[Any]) -> NDArray[Any]:
     """The same integers as int64 when the sum of their absolute values is below ``INT64_BOUND``, else as objects."""
     if absolute_sum(weights) < INT64_BOUND:
         return weights.astype(np.int64)
     return weights.astype(object)
+
+
+def times(weights: NDArray[Any], factor: int) -> NDArray[Any]:
+    """Weights times an integer; objects where int64 might wrap."""
+    if weights.dtype != object and absolute_sum(weights) * abs(factor) >= INT64_BOUND:
+        weights = weights.astype(object)
+    return weights * factor if weights.dtype == object else weights * np.int64(factor)

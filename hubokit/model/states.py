@@ -8,6 +8,7 @@ variable 0 as the most significant bit, states sort in lift order.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -93,7 +94,7 @@ def to_bits(states: States, domain: str) -> NDArray[np.uint8]:
     return np.asarray(states).astype(np.uint8)
 
 
-def from_bits(bits: NDArray[np.generic], domain: str) -> States:
+def from_bits(bits: NDArray[Any], domain: str) -> States:
     """States from bits; the inverse of `to_bits`."""
     small = np.asarray(bits).astype(np.int8)
     return 1 - 2 * small if domain == "spin" else small
@@ -116,7 +117,7 @@ def pack(bits: NDArray[np.uint8]) -> NDArray[np.uint64]:
     return packed
 
 
-def unpack(index: NDArray[np.generic], size: int) -> NDArray[np.uint8]:
+def unpack(index: NDArray[Any], size: int) -> NDArray[np.uint8]:
     """Bits (m, size) of unsigned integers (m,); the inverse of `pack`."""
     index = np.asarray(index).astype(np.uint64)
     shifts = np.arange(size - 1, -1, -1, dtype=np.uint64)

@@ -10,9 +10,11 @@ While an expression is being built a member of -1 means *absent*, so that rows o
 from __future__ import annotations
 
 import itertools
+import math
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
-from math import comb
+from fractions import Fraction
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,7 +27,7 @@ EXPANSION_LIMIT = 2**24
 
 ABSENT = -1
 
-Part = tuple[NDArray[np.generic], NDArray[np.generic]]
+Part = tuple[NDArray[Any], NDArray[Any]]
 """Members (m, k) and weights (m,), in any order, with repeats."""
 
 
@@ -42,7 +44,7 @@ class Block:
     """
 
     members: NDArray[np.int32]
-    weights: NDArray[np.generic]
+    weights: NDArray[Any]
 
     def __post_init__(self) -> None:
         self.members.setflags(write=False)
@@ -99,7 +101,7 @@ def canonical_blocks(parts: Iterable[Part], domain: str) -> tuple[int, tuple[Blo
     return constant, blocks
 
 
-def _reduced_rows(members: NDArray[np.generic], weights: NDArray[np.generic], domain: str) -> Iterator[Part]:
+def _reduced_rows(members: NDArray[Any], weights: NDArray[Any], domain: str) -> Iterator[Part]:
     """Rows sorted, absent and repeated members taken out, grouped by the number of members left."""
     rows = np.sort(members.astype(np.int32, copy=False), axis=1)
     width = rows.shape[1]
@@ -152,7 +154,7 @@ def _merged(parts: Sequence[Part]) -> Block:
     return Block(np.ascontiguousarray(members, dtype=np.int32), np.array(weights))
 
 
-def row_keys(members: NDArray[np.generic], size: int) -> list[NDArray[np.int64]]:
+def row_keys(members: NDArray[Any], size: int) -> list[NDArray[np.int64]]:
     """Rows of positions below `size` as int64 keys, most significant first: row order is the order of the keys.
 
     Examples
@@ -205,73 +207,14 @@ def product_parts(
     return parts
 
 
-def affine_parts(blocks: Iterable[Block], offset: int, slope: int) -> list[Part]:
-    """Every variable v replaced by ``offset + slope*v``, expanded: the subsets of each product, weighted.
-
-    A term of locality k gives 2**k products.
-
-    Raises
-    ------
-    LimitError
-        More than ``EXPANSION_LIMIT`` products.
-    """
-    blocks = list(blocks)
-    for block in blocks:
-        refuse_expansion(len(block) << block.locality, f"a change of domain of {block.locality}-body terms")
-    refuse_expansion(sum(len(b) << b.locality for b in blocks), "the change of domain")
-    growth = abs(offset) + abs(slope)
-    bound = sum(absolute_sum(block.weights) * growth**block.locality for block in blocks)
-    kind = np.int64 if bound < INT64_BOUND else object
-    parts = []
-    for block in blocks:
-        k, weights = block.locality, block.weights.astype(kind)
-        for size in range(k + 1):
-            factor = offset ** (k - size) * slope**size
-            if factor == 0:
-                continue
-            subsets = list(itertools.combinations(range(k), size))
-            members = block.members[:, np.array(subsets, dtype=np.intp).reshape(comb(k, size), size)]
-            parts.append((members.reshape(-1, size), np.repeat(weights * factor, comb(k, size))))
-    return parts
-
-
-def spin_substitution(blocks: Iterable[Block], targets: NDArray[np.int64], signs: NDArray[np.int64]) -> list[Part]:
-    """Spin v replaced by ``signs[v]`` times the spin ``targets[v]`` (-1: nothing but the sign)."""
-    return [(targets[block.members], block.weights * np.prod(signs[block.members], axis=1)) for block in blocks]
-
-
-def boolean_substitution(
-    blocks: Iterable[Block],
-    targets: NDArray[np.int64],
-    negated: NDArray[np.bool_],
-    zero: NDArray[np.bool_],
-) -> list[Part]:
-    """Boolean v replaced by ``targets[v]`` (-1: one), by its complement where ``negated``, by 0 where ``zero``.
-
-    A term with j complemented members gives 2**j products.
-
-    Raises
-    ------
-    LimitError
-        More than ``EXPANSION_LIMIT`` products.
-    """
-    parts = []
-    count = 0
-    for block in blocks:
-        kept = ~zero[block.members].any(axis=1)
-        members, weights = block.members[kept], block.weights[kept]
-        flips = negated[members]
-        number = np.bincount(flips.sum(axis=1), minlength=1) if len(members) else np.zeros(1, int)
-        count += sum(int(m) << j for j, m in enumerate(number))
-        refuse_expansion(count, "the complemented literals")
-        rows = targets[members]
-        for column in range(block.locality):
-            flipped = flips[:, column]
-            if flipped.any():
-                dropped = rows[flipped].copy()
-                dropped[:, column] = ABSENT
-                rows = np.concatenate([rows, dropped])
-                weights = np.concatenate([np.where(flipped, -weights, weights), weights[flipped]])
-                flips = np.concatenate([flips, flips[flipped]])
-        parts.append((rows, weights))
-    return parts
+def coprime(resolution: Fraction, blocks: tuple[Block, ...]) -> tuple[Fraction, tuple[Block, ...]]:
+    """The same terms with weights of greatest common divisor one."""
+    if not blocks:
+        return Fraction(1), ()
+    common = math.gcd(*(int(np.gcd.reduce(block.weights)) for block in blocks))
+    if common > 1:
+        divided = [Block(block.members, block.weights // common) for block in blocks]
+        narrow = sum(absolute_sum(block.weights) for block in divided) < INT64_BOUND
+        kind = np.int64 if narrow else object
+        blocks = tuple(Block(block.members, block.weights.astype(kind)) for block in divided)
+    return resolution * common, blocks

@@ -1,8 +1,8 @@
 """The recorded steps from a source model to the one at hand.
 
 Each step says everything about itself: its name, the function it started from, its scale and shift (the new energy,
-minimised over the auxiliaries the step added, is ``scale * old + shift``), the auxiliaries it added and its parameters.
-A trail is a chain of steps, with as much of the source as is known.
+minimised over the auxiliaries the step added, is ``scale * old + shift``), the auxiliaries it added and its
+parameters. A trail is a chain of steps, with as much of the source as is known.
 """
 
 from __future__ import annotations
@@ -26,8 +26,8 @@ class Step:
     Parameters
     ----------
     name : str
-        ``"domain"`` (parameters from, to, convention), ``"rounding"`` (resolution, deviation), ``"reduction"`` (keep, method,
-        ...) or another word.
+        ``"domain"`` (parameters from, to, convention), ``"rounding"`` (resolution, deviation), ``"reduction"`` (keep,
+        method, ...) or another word.
     start : str
         Function digest of the model that the step began from.
     scale, shift : Fraction
