@@ -237,7 +237,7 @@ class Hamiltonian(Expression):
         ----------
         origin : mapping
             A variable of this model to a label (two may share one), to ``("not", label)``, or to a value of the
-            domain. Variables that are not named stay. The result has the variables that are left, in order of first use.
+            domain. Variables that are not named stay. The result has the variables that are left, by first use.
 
         Raises
         ------

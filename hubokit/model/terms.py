@@ -22,7 +22,7 @@ from numpy.typing import NDArray
 from hubokit.errors import LimitError
 from hubokit.model.numbers import INT64_BOUND, absolute_sum
 
-EXPANSION_LIMIT = 2**24
+EXPANSION_LIMIT = 2**25
 """Largest number of products that an expansion may write down before it merges them."""
 
 ABSENT = -1
@@ -87,8 +87,7 @@ def canonical_blocks(parts: Iterable[Part], domain: str) -> tuple[int, tuple[Blo
     constant = 0
     gathered: dict[int, list[Part]] = {}
     for members, weights in parts:
-        if wide:
-            weights = weights.astype(object)
+        weights = weights.astype(object if wide else np.int64, copy=False)
         for reduced, kept in _reduced_rows(members, weights, domain):
             if reduced.shape[1] == 0:
                 constant += int(kept.sum())
