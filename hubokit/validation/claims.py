@@ -21,9 +21,7 @@ from typing import Literal, get_args
 
 from hubokit.errors import InputError
 
-ClaimName = Literal[
-    "quadratic", "ground-energy", "ground-states", "even-multiplicity", "energies", "one-to-one"
-]
+ClaimName = Literal["quadratic", "ground-energy", "ground-states", "even-multiplicity", "energies", "one-to-one"]
 Status = Literal["proved", "refuted", "tested", "open"]
 
 #: Every claim, in the order in which a verdict prints them.

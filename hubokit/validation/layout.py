@@ -43,8 +43,7 @@ def verdict_to_json(verdict: Verdict) -> Json:
         "model_digest": verdict.model_digest,
         "figures": {name: _figure_to_json(figure) for name, figure in verdict.figures.items()},
         "evenness": [
-            {"beta_gap": format(step.beta_gap, "g"), "ratio": format(step.ratio, ".6g")}
-            for step in verdict.evenness
+            {"beta_gap": format(step.beta_gap, "g"), "ratio": format(step.ratio, ".6g")} for step in verdict.evenness
         ],
         "lost": _list_to_json(verdict.lost),
         "spurious": _list_to_json(verdict.spurious),
@@ -67,9 +66,7 @@ def verdict_from_json(fields: Mapping[str, Any]) -> Verdict:
         source_digest=fields["source_digest"],
         model_digest=fields["model_digest"],
         figures={name: _figure_from_json(figure) for name, figure in fields["figures"].items()},
-        evenness=tuple(
-            Evenness(float(step["beta_gap"]), float(step["ratio"])) for step in fields["evenness"]
-        ),
+        evenness=tuple(Evenness(float(step["beta_gap"]), float(step["ratio"])) for step in fields["evenness"]),
         lost=_list_from_json(fields["lost"]),
         spurious=_list_from_json(fields["spurious"]),
         inversions=_inversions_from_json(fields["inversions"]),

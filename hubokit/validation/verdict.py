@@ -242,9 +242,7 @@ class Verdict:
     @property
     def auxiliary_gap(self) -> AuxiliaryGap:
         """The two auxiliary gaps, in energy units of the model."""
-        return AuxiliaryGap(
-            self._figure("auxiliary-gap-at-minimisers"), self._figure("auxiliary-gap-everywhere")
-        )
+        return AuxiliaryGap(self._figure("auxiliary-gap-at-minimisers"), self._figure("auxiliary-gap-everywhere"))
 
     def _figure(self, name: str) -> Fraction | None:
         return self.figures[name].value if name in self.figures else None

@@ -1,0 +1,54 @@
+"""Evidence by exhaustion: every state visited."""
+
+from __future__ import annotations
+
+from hubokit.errors import LimitError
+from hubokit.validation.case import Case
+from hubokit.validation.evidence import Options
+from hubokit.validation.findings import Findings
+from hubokit.validation.inversions import inversions_below
+from hubokit.validation.judging import Judge, relation_of
+from hubokit.validation.scaling import judge_scale
+from hubokit.validation.tables import Tables, tables_by_blocks, tables_from_model, tables_from_polynomial
+
+
+def by_exhaustion(case: Case, options: Options, found: Findings) -> None:
+    """Settle every claim from tables over all states, or from a streamed comparison where these are too large."""
+    try:
+        tables = small_tables(case, found)
+    except LimitError as refusal:
+        from hubokit.validation.by_levels import by_enumeration
+
+        by_enumeration(case, options, found, str(refusal))
+        return
+    found.take_scale(judge_scale(case.declared, relation_of(tables)))
+    judge = Judge(case, found, tables)
+    judge.judge()
+    judge.figures()
+    found.evidence.append(
+        {
+            "kind": "exhaustion",
+            "auxiliaries": list(case.auxiliaries),
+            "originals": len(case.originals),
+            "account": tables.account,
+        }
+    )
+    if found.refuted("energies"):
+        found.inversions = inversions_below(judge, options.below)
+
+
+def small_tables(case: Case, found: Findings) -> Tables:
+    """Tables over all states: from P where projection gave it, else from the model itself, else state by state.
+
+    Raises
+    ------
+    LimitError
+        When none of these is small enough.
+    """
+    polynomial = case.projection.polynomial if found.used("projection") else None
+    if polynomial is not None:
+        return tables_from_polynomial(case, polynomial)
+    try:
+        return tables_from_model(case)
+    except LimitError:
+        return tables_by_blocks(case)

@@ -1,0 +1,135 @@
+"""check(): claims about a reduction, each proved, refuted, tested or left open, by evidence anyone can re-check."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable
+from concurrent.futures import Executor
+from importlib.metadata import PackageNotFoundError, version
+from typing import Any
+
+from hubokit.model.numbers import Number, as_fraction
+from hubokit.reduction.result import Reduction
+from hubokit.validation.case import Case
+from hubokit.validation.claims import CLAIMS, asked_claims
+from hubokit.validation.evidence import EVIDENCE, Options, kinds_for
+from hubokit.validation.figures import add_figures
+from hubokit.validation.findings import Findings
+from hubokit.validation.verdict import Verdict
+
+#: Claims nobody asked for are settled too while the model has at most this many variables.
+UNASKED_LIMIT = 20
+
+
+def check(
+    reduction: Reduction,
+    claims: str | Iterable[str] | None = None,
+    evidence: str = "auto",
+    radius: int | None = None,
+    around: Any = None,
+    executor: Executor | None = None,
+    progress: Callable[[int, int], None] | None = None,
+    time: float = 600.0,
+    below: Number | None = None,
+) -> Verdict:
+    """Judge a reduction, made here or elsewhere.
+
+    Parameters
+    ----------
+    reduction : Reduction
+    claims : None, "all", a name or names
+        None asks for what the trail says was kept, for all claims where there is no trail.
+    evidence : "auto" | "projection" | "exhaustion" | "elimination" | "neighbourhood"
+        "auto" tries them in this order until every asked claim is settled.
+    radius : int, optional
+        Hamming radius of the neighbourhood (default 2).
+    around : states of the source, optional
+        Its centres; by default states that a descent finds.
+    executor, progress
+        Handed to the engine that enumerates states.
+    time : float
+        Seconds that an enumeration may be predicted to take; above it the claim stays open.
+    below : number, optional
+        Order inversions of a refuted reduction are listed among source states with at most this energy; by
+        default among the three lowest levels.
+
+    Returns
+    -------
+    Verdict
+
+    Raises
+    ------
+    InputError
+        An unknown claim or kind of evidence.
+
+    Examples
+    --------
+    >>> from hubokit.model.hamiltonian import Hamiltonian
+    >>> E = Hamiltonian({("a", "b", "c"): -1}, "boolean")
+    >>> F = Hamiltonian({("y",): 2, ("a", "y"): -1, ("b", "y"): -1, ("c", "y"): -1}, "boolean", ["a", "b", "c", "y"])
+    >>> verdict = check(Reduction(E, F, ["y"]))
+    >>> verdict.claims["energies"].status, verdict.claims["one-to-one"].status
+    ('proved', 'refuted')
+    """
+    case, found = Case(reduction), Findings()
+    kinds = kinds_for(evidence)
+    options = Options(
+        asked=asked_claims(claims, case.keep),
+        radius=radius,
+        around=around,
+        below=None if below is None else as_fraction(below, "below"),
+        executor=executor,
+        progress=progress,
+        time=time,
+    )
+    _inspect(case, found)
+    for kind in kinds:
+        if _enough(case, options, found):
+            break
+        EVIDENCE[kind](case, options, found)
+    add_figures(case, options, found)
+    return _verdict(case, options, found)
+
+
+def _inspect(case: Case, found: Findings) -> None:
+    locality = case.model.locality
+    if locality <= 2:
+        found.prove("quadratic", "inspection", f"locality {locality}")
+    else:
+        found.refute("quadratic", "inspection", f"locality {locality}")
+
+
+def _enough(case: Case, options: Options, found: Findings) -> bool:
+    """Whether every claim that matters is settled: the asked ones, and on a small model the others too."""
+    wanted = CLAIMS if case.model.size <= UNASKED_LIMIT else options.asked
+    return all(found.settled(name) for name in wanted)
+
+
+def _verdict(case: Case, options: Options, found: Findings) -> Verdict:
+    if not found.scale_known and case.declared is not None:
+        found.scale, found.shift = case.declared
+        found.scale_from = "declared"
+    return Verdict(
+        claims=found.in_order(),
+        asked=options.asked,
+        scale=found.scale,
+        shift=found.shift,
+        scale_from=found.scale_from,
+        source_digest=case.source.digest,
+        model_digest=case.model.digest,
+        figures=found.figures,
+        evenness=found.evenness,
+        lost=found.lost,
+        spurious=found.spurious,
+        inversions=found.inversions,
+        difference=found.difference,
+        notes=tuple(found.notes),
+        evidence=tuple(found.evidence),
+        version=_version(),
+    )
+
+
+def _version() -> str:
+    try:
+        return version("hubokit")
+    except PackageNotFoundError:
+        return "unreleased"
