@@ -1,1 +1,1 @@
-"""Gadgets: one file for each published family."""
+"""One published family of gadgets a file, and the table of them in ``table.py``."""

@@ -1,0 +1,173 @@
+"""reduce(): the reduced model is quadratic and its minimum over the auxiliaries is the source, by enumeration."""
+
+from __future__ import annotations
+
+import random
+from fractions import Fraction
+from itertools import product
+
+import numpy as np
+import pytest
+
+from hubokit.errors import InputError
+from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.reduction.gadgets.table import FAMILIES
+from hubokit.reduction.reduce import fresh_labels, reduce
+from hubokit.reduction.result import Reduction
+
+LIMIT = 17
+
+
+def random_model(seed: int, size: int = 6) -> Hamiltonian:
+    """Up to six variables, a few terms of up to six members, small rational weights."""
+    chance = random.Random(seed)
+    labels = [f"v{i}" for i in range(chance.randint(3, size))]
+    terms = {}
+    for _ in range(chance.randint(1, 5)):
+        members = chance.sample(labels, chance.choice([1, 2, 3, 3, 3, 4, len(labels)]) if len(labels) > 3 else 3)
+        terms[tuple(sorted(members))] = Fraction(
+            chance.choice([-7, -3, -2, -1, 1, 2, 5]), chance.choice([1, 1, 2, 3])
+        )
+    return Hamiltonian(terms, chance.choice(["spin", "boolean"]), labels=labels)
+
+
+def minimum_by_enumeration(R: Reduction) -> tuple[list[Fraction], set[int], Fraction | None]:
+    """P for all source states in lift order of the originals, multiplicities, and least auxiliary gap."""
+    count = len(R.auxiliaries)
+    assert R.model.labels[-count:] == R.auxiliaries or not count
+    values = (1, -1) if R.model.domain == "spin" else (0, 1)
+    states = np.array(list(product(values, repeat=R.model.size)), np.int8)
+    energies = R.model.integer_energies(states).reshape(-1, 2**count)
+    least = energies.min(axis=1)
+    excess = energies - least[:, None]
+    gap = Fraction(int(excess[excess > 0].min())) * R.model.resolution if (excess > 0).any() else None
+    minima = [R.model.constant + int(value) * R.model.resolution for value in least]
+    return minima, set((excess == 0).sum(axis=1).tolist()), gap
+
+
+def source_energies(R: Reduction) -> list[Fraction]:
+    """E in the same order."""
+    values = (1, -1) if R.model.domain == "spin" else (0, 1)
+    count = len(R.auxiliaries)
+    states = np.array([(*state, *[values[0]] * count) for state in product(values, repeat=R.source.size)], np.int8)
+    return [R.source.energy(state) for state in R.project(states)]
+
+
+@pytest.mark.parametrize("seed", range(240))
+def test_one_to_one_keeps_every_energy_with_one_best_setting(seed: int) -> None:
+    R = reduce(random_model(seed), prefer=["auxiliaries", "range", "couplers"][seed % 3])
+    if R.model.size > LIMIT:
+        R = reduce(random_model(seed))
+    assert R.model.locality <= 2
+    assert R.model.size <= LIMIT
+    minima, multiplicities, gap = minimum_by_enumeration(R)
+    assert minima == source_energies(R)
+    assert multiplicities == {1}
+    assert gap is None or gap >= R.source.resolution
+
+
+@pytest.mark.parametrize("seed", range(40))
+def test_the_gap_asked_for_is_there(seed: int) -> None:
+    R = reduce(random_model(seed, size=5), auxiliary_gap="7/2")
+    if R.model.size > LIMIT:
+        pytest.skip("too many auxiliaries to enumerate")
+    minima, multiplicities, gap = minimum_by_enumeration(R)
+    assert minima == source_energies(R)
+    assert multiplicities == {1}
+    assert gap is None or gap >= Fraction(7, 2)
+
+
+@pytest.mark.parametrize("seed", range(40))
+@pytest.mark.parametrize("domain", ["spin", "boolean"])
+def test_the_model_may_have_the_other_domain(seed: int, domain: str) -> None:
+    R = reduce(random_model(seed, size=4), domain=domain, keep="energies")
+    assert R.model.domain == domain
+    assert R.model.locality <= 2
+    minima, _, _ = minimum_by_enumeration(R)
+    assert minima == source_energies(R)
+
+
+@pytest.mark.parametrize("name", [one.name for one in FAMILIES])
+def test_a_named_family_serves_what_it_can_and_the_energies_stay(name: str) -> None:
+    for domain in ("spin", "boolean"):
+        H = Hamiltonian({("a", "b", "c"): 2, ("b", "c", "d"): -3, ("a", "b", "c", "d", "e"): 1}, domain)
+        R = reduce(H, method=name)
+        minima, multiplicities, _ = minimum_by_enumeration(R)
+        assert minima == source_energies(R)
+        assert multiplicities == {1}
+        served = {row["method"] for row in R.trail.steps[-1].parameters["methods"]}
+        assert (name in served) == any(one.name == name and one.domain == domain for one in FAMILIES)
+
+
+def test_a_quadratic_model_comes_back_without_auxiliaries() -> None:
+    H = Hamiltonian({("a", "b"): 2, ("c",): -1, (): 5}, "spin")
+    R = reduce(H)
+    assert R.auxiliaries == ()
+    assert R.model == H
+
+
+def test_a_constant_comes_back_as_it_is() -> None:
+    H = Hamiltonian({(): "7/3"}, "boolean")
+    assert reduce(H).model == H
+
+
+def test_the_trail_says_where_it_started_what_was_kept_and_what_served() -> None:
+    H = Hamiltonian({("a", "b", "c"): -1, ("b", "c", "d"): -2}, "boolean")
+    R = reduce(H, keep="energies")
+    step = R.trail.steps[-1]
+    assert (step.name, step.start, step.scale, step.shift) == ("reduction", H.digest, 1, 0)
+    assert step.auxiliaries == R.auxiliaries
+    assert step.parameters["keep"] == R.keep == "energies"
+    assert R.trail.source is H
+
+
+def test_a_change_of_domain_is_a_step_of_its_own() -> None:
+    H = Hamiltonian({("a", "b", "c"): -1}, "boolean", convention="2x-1")
+    R = reduce(H, domain="spin")
+    assert [step.name for step in R.trail.steps] == ["domain", "reduction"]
+    assert R.trail.steps[0].parameters == {"from": "boolean", "to": "spin", "convention": "2x-1"}
+    assert R.trail.steps[1].start == H.in_domain("spin").digest
+
+
+def test_the_same_call_gives_the_same_model() -> None:
+    first, second = (reduce(random_model(5)) for _ in range(2))
+    assert first.model.digest == second.model.digest
+    assert first.trail.steps == second.trail.steps
+
+
+def test_auxiliaries_avoid_the_names_in_use() -> None:
+    assert fresh_labels(["y0", "y2"], 3) == ("y1", "y3", "y4")
+    assert reduce(Hamiltonian({("y0", "a", "b"): 1}, "spin")).auxiliaries == ("y1",)
+
+
+def test_lifting_and_projecting_come_back_to_the_same_state() -> None:
+    R = reduce(random_model(3))
+    values = (1, -1) if R.source.domain == "spin" else (0, 1)
+    states = np.array(list(product(values, repeat=R.source.size)), np.int8)
+    lifted = R.lift(states)
+    assert np.array_equal(R.project(lifted), states)
+    assert [R.model.energy(state) for state in lifted] == [R.source.energy(state) for state in states]
+
+
+def test_huge_weights_stay_exact() -> None:
+    H = Hamiltonian({("a", "b", "c"): 10**30 + 1, ("a",): -1}, "spin")
+    R = reduce(H)
+    minima, multiplicities, _ = minimum_by_enumeration(R)
+    assert minima == source_energies(R)
+    assert multiplicities == {1}
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        ({"keep": "spectrum"}, "keep: 'spectrum'"),
+        ({"prefer": "speed"}, "prefer: 'speed'"),
+        ({"domain": "qubit"}, "domain: 'qubit'"),
+        ({"method": "magic"}, "no such reduction method: 'magic'"),
+        ({"auxiliary_gap": -1}, "must be positive"),
+        ({"auxiliary_gap": 0}, "must be positive"),
+    ],
+)
+def test_an_unknown_word_is_refused(arguments: dict[str, object], words: str) -> None:
+    with pytest.raises(InputError, match=words):
+        reduce(Hamiltonian({("a", "b", "c"): 1}, "spin"), **arguments)  # type: ignore[arg-type]
