@@ -136,7 +136,8 @@ class Case:
         else:
             _, first, counts = np.unique(column, return_index=True, return_counts=True)
             bits[0, first[counts > 1][0]] ^= 1
-        return from_bits(bits, self.source.domain)[0]
+        state: States = from_bits(bits, self.source.domain)[0]
+        return state
 
     def witness(
         self,

@@ -109,7 +109,7 @@ def _verdict(case: Case, options: Options, found: Findings) -> Verdict:
         found.scale, found.shift = case.declared
         found.scale_from = "declared"
     return Verdict(
-        claims=found.in_order(),
+        claims=found.in_order(options.asked),
         asked=options.asked,
         scale=found.scale,
         shift=found.shift,

@@ -94,7 +94,8 @@ def nonzero_state(polynomial: Hamiltonian) -> States:
         zero = -polynomial.constant / polynomial.resolution
         root = values == int(zero) if zero.denominator == 1 else np.zeros(len(values), bool)
         if not root.all():
-            return states[int(np.argmin(root))]
+            found: States = states[int(np.argmin(root))]
+            return found
     raise AssertionError("a polynomial with a term vanishes nowhere")
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from fractions import Fraction
 from typing import Any, Literal
 
@@ -90,9 +91,14 @@ class Findings:
         if sentence not in self.notes:
             self.notes.append(sentence)
 
-    def in_order(self) -> dict[str, Claim]:
+    def in_order(self, asked: Iterable[str]) -> dict[str, Claim]:
         """Every claim in the order of `CLAIMS`; those that no evidence touched are open."""
-        return {name: self.claims.get(name, Claim(name, "open", "", "not asked")) for name in CLAIMS}
+        wanted = set(asked)
+
+        def untouched(name: str) -> Claim:
+            return Claim(name, "open", "", "the evidence does not settle it" if name in wanted else "not asked")
+
+        return {name: self.claims.get(name, untouched(name)) for name in CLAIMS}
 
     def _set(self, claim: Claim) -> None:
         before = self.claims.get(claim.name)

@@ -50,7 +50,7 @@ def verdict_to_json(verdict: Verdict) -> Json:
         "inversions": _inversions_to_json(verdict.inversions),
         "difference": list(verdict.difference),
         "notes": list(verdict.notes),
-        "evidence": list(verdict.evidence),
+        "evidence": [_evidence_to_json(piece) for piece in verdict.evidence],
         "made_by": verdict.version,
     }
 
@@ -75,6 +75,10 @@ def verdict_from_json(fields: Mapping[str, Any]) -> Verdict:
         evidence=tuple(fields["evidence"]),
         version=fields["made_by"],
     )
+
+
+def _evidence_to_json(piece: Mapping[str, Any]) -> Json:
+    return {name: dict(value) if isinstance(value, Mapping) else value for name, value in piece.items()}
 
 
 def _rational(value: Fraction | None) -> str | None:

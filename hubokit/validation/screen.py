@@ -32,14 +32,17 @@ def screen(verdict: Verdict) -> str:
 
 
 def _claim_lines(verdict: Verdict) -> list[str]:
-    lines = []
+    lines: list[str] = []
+    shown: list[Witness | None] = []
     for name, claim in verdict.claims.items():
         asked = "*" if name in verdict.asked else " "
         method = f"by {claim.method}" if claim.method else ""
         head = f"{asked} {name:<17} {claim.status:<8} {method}"
         lines.append(head)
         lines += wrap(claim.detail, WIDTH, initial_indent=" " * 4, subsequent_indent=" " * 4)
-        lines += _witness_lines(claim)
+        if claim.witness not in shown:
+            lines += _witness_lines(claim)
+            shown.append(claim.witness)
     lines.append("  (* asked for)")
     return lines
 

@@ -182,12 +182,16 @@ def tables_from_polynomial(case: Case, polynomial: Hamiltonian) -> Tables:
 
 
 def comparable(tables: Tables, scale: Fraction, shift: Fraction) -> tuple[NDArray[Any], NDArray[Any]]:
+    """P and alpha * E + beta of every row as integers in one unit."""
+    return comparable_columns(tables.minimum, tables.energy, scale, shift)
+
+
+def comparable_columns(P: Column, E: Column, scale: Fraction, shift: Fraction) -> tuple[NDArray[Any], NDArray[Any]]:
     """P and alpha * E + beta as integers in one unit, exact: int64 where both fit, else Python integers."""
-    P, E = tables.minimum, tables.energy
-    unit = _common(P.resolution, scale * E.resolution, scale * E.constant + shift - P.constant)
-    offset = (scale * E.constant + shift - P.constant) / unit
+    offset = scale * E.constant + shift - P.constant
+    unit = _common(P.resolution, scale * E.resolution, offset)
     left = _times(P.integers, int(P.resolution / unit), 0)
-    right = _times(E.integers, int(scale * E.resolution / unit), int(offset))
+    right = _times(E.integers, int(scale * E.resolution / unit), int(offset / unit))
     return left, right
 
 

@@ -19,11 +19,15 @@ CLUSTERS, TOUCHED, RANDOM = 256, 12, 4096
 def tied_state(case: Case) -> States | None:
     """An original state, int8 (n,), with multiplicity above one, or None when none was found.
 
-    Every state is tried where there are few; else, for the first clusters of auxiliaries, every setting of
-    the variables that one cluster touches (the multiplicity of a state is a product over clusters, so a tie
-    of one cluster is a tie of the state); else states at random.
+    The projection offers one where its tables show it. Else every state is tried where there are few; or,
+    for the first clusters of auxiliaries, every setting of the variables that one cluster touches (the
+    multiplicity of a state is a product over clusters, so a tie of one cluster is a tie of the state); else
+    states at random.
     """
     n = len(case.originals)
+    offered = case.projection.multiplicity_witness()
+    if offered is not None and (found := _first_tied(case, offered)) is not None:
+        return found
     if n <= ALL_STATES:
         return _first_tied(case, from_bits(unpack(np.arange(2**n), n), case.model.domain))
     for touched in _touched_sets(case):

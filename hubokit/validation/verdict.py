@@ -6,9 +6,10 @@ fields.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 from fractions import Fraction
+from functools import cached_property
 from typing import Any, Literal, NamedTuple
 
 from hubokit.errors import InputError
@@ -152,6 +153,36 @@ class AuxiliaryGap(NamedTuple):
     everywhere: Fraction | None
 
 
+class Deferred(Mapping[str, Any]):
+    """A JSON object that is made when it is first looked into: a certificate of a large proof is not small.
+
+    Examples
+    --------
+    >>> Deferred(lambda: {"kind": "table"}) == {"kind": "table"}
+    True
+    """
+
+    def __init__(self, make: Callable[[], dict[str, Any]]) -> None:
+        self._make = make
+
+    @cached_property
+    def made(self) -> dict[str, Any]:
+        """The object itself."""
+        return self._make()
+
+    def __getitem__(self, key: str) -> Any:
+        return self.made[key]
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(self.made)
+
+    def __len__(self) -> int:
+        return len(self.made)
+
+    def __repr__(self) -> str:
+        return "Deferred()"
+
+
 @dataclass(frozen=True)
 class Verdict:
     """The whole answer of a check.
@@ -180,7 +211,7 @@ class Verdict:
     notes : tuple of str
         Plain sentences: how scale and shift were chosen, what unevenness does, what a declared intent says.
     evidence : tuple of dict
-        JSON objects that the audit re-checks; each has a ``kind``.
+        JSON objects that the audit re-checks; each has a ``kind``. A certificate may be `Deferred`.
     source_digest, model_digest : str
         Function digests of both models.
     version : str

@@ -1,0 +1,173 @@
+"""Evidence from a neighbourhood: all source states within a Hamming radius of chosen centres, and no others.
+
+What holds there is `tested`, never proved. What fails there refutes a claim only where one state settles it
+for all: `energies` and `one-to-one`. A set of minimisers that differs among the visited states leaves the
+claim open, unless the ground states of the source are known from elsewhere.
+"""
+
+from __future__ import annotations
+
+from itertools import combinations
+from math import comb
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hubokit.errors import InputError, LimitError
+from hubokit.model.states import from_bits, to_bits
+from hubokit.validation.case import Case, States
+from hubokit.validation.evidence import Options
+from hubokit.validation.findings import Findings
+from hubokit.validation.probing import columns_at
+from hubokit.validation.scaling import Column, Relation, column_relation, judge_scale
+from hubokit.validation.tables import comparable_columns
+
+METHOD = "neighbourhood"
+#: Radius where none is given, and states visited at most.
+RADIUS, VISITED = 2, 200_000
+#: Entries (states times variables) held at most.
+ENTRIES = 2**27
+#: Random starts of the descent that finds centres, and centres taken from it.
+STARTS, CENTRES = 64, 4
+
+
+def by_neighbourhood(case: Case, options: Options, found: Findings) -> None:
+    """Test the claims on the states near the centres."""
+    if case.model.locality > 2:
+        _leave(options, found, "the model is not quadratic")
+        return
+    try:
+        states, account = visited(case, options)
+        originals, known = case.original_states(states)
+        originals = originals[known]
+        if not len(originals):
+            _leave(options, found, "the model has no state near the centres")
+            return
+        E, P, best, counts = columns_at(case, originals)
+    except LimitError as refusal:
+        _leave(options, found, str(refusal))
+        return
+    relation = column_relation(P, E)
+    if not found.scale_known:
+        found.take_scale(judge_scale(case.declared, relation))
+        if found.scale_from == "found":
+            found.note("scale and shift were found on the visited states alone")
+    _judge(case, found, account, (originals, best), (E, P), counts, relation)
+    found.evidence.append({"kind": METHOD, "auxiliaries": list(case.auxiliaries), "account": account})
+
+
+def _leave(options: Options, found: Findings, reason: str) -> None:
+    for name in options.asked:
+        found.leave_open(name, f"{METHOD}: {reason}")
+
+
+def visited(case: Case, options: Options) -> tuple[States, str]:
+    """Distinct source states within the radius of the centres, and a phrase that counts them.
+
+    Raises
+    ------
+    InputError
+        A negative radius.
+    LimitError
+        More states than may be held, with their number.
+    """
+    radius = RADIUS if options.radius is None else options.radius
+    if radius < 0:
+        raise InputError(f"the radius is {radius}; it must be at least 0", place="radius")
+    n = case.source.size
+    centres = descended(case) if options.around is None else case.source.states(options.around)
+    number = sum(comb(n, flips) for flips in range(min(radius, n) + 1)) * len(centres)
+    if number > VISITED or number * max(n, len(case.model.labels)) > ENTRIES * 8:
+        raise LimitError(
+            f"{number:,} states lie within radius {radius} of {len(centres)} centres; "
+            f"at most {VISITED:,} are visited: take a smaller radius or fewer centres"
+        )
+    bits = to_bits(centres, case.source.domain)
+    flips = [
+        np.array(chosen, np.int64) for size in range(min(radius, n) + 1) for chosen in combinations(range(n), size)
+    ]
+    mask = np.zeros((len(flips), n), np.uint8)
+    for row, chosen in enumerate(flips):
+        mask[row, chosen] = 1
+    states = np.unique((bits[:, None, :] ^ mask[None, :, :]).reshape(-1, n), axis=0)
+    origin = "found by descent" if options.around is None else "given"
+    centre = f"{len(centres)} centre{'s' if len(centres) != 1 else ''} {origin}"
+    account = f"{len(states):,} states visited, all within radius {radius} of {centre}; not a proof"
+    return from_bits(states, case.source.domain), account
+
+
+def descended(case: Case) -> States:
+    """Centres: the lowest distinct states that single-flip descent reaches from seeded random starts."""
+    E = case.source
+    rng = np.random.default_rng(0)
+    starts = max(1, min(STARTS, 2**22 // max(E.size, 1)))
+    bits = rng.integers(0, 2, (starts, E.size), np.uint8)
+    energy = E.integer_energies(from_bits(bits, E.domain))
+    for _ in range(3):
+        for column in rng.permutation(E.size)[: 2**22 // max(E.size, 1)]:
+            bits[:, column] ^= 1
+            turned = E.integer_energies(from_bits(bits, E.domain))
+            worse = turned >= energy
+            bits[worse, column] ^= 1
+            energy = np.where(worse, energy, turned)
+    order = np.argsort(energy, kind="stable")
+    _, first = np.unique(bits[order], axis=0, return_index=True)
+    return from_bits(bits[order][np.sort(first)[:CENTRES]], E.domain)
+
+
+def _judge(
+    case: Case,
+    found: Findings,
+    account: str,
+    states: tuple[States, States],
+    columns: tuple[Column, Column],
+    counts: NDArray[np.object_],
+    relation: Relation | None,
+) -> None:
+    (originals, best), (E, P) = states, columns
+    left, right = comparable_columns(P, E, found.scale, found.shift)
+    off, tied = np.flatnonzero(left != right), np.flatnonzero(counts != 1)
+
+    def refute(name: str, text: str, at: int) -> None:
+        witness = case.witness(originals[at], best[at], "projection", int(counts[at]), P[at])
+        found.refute(name, METHOD, f"{text}; {account}", witness)
+
+    if len(off) and not found.settled("energies"):
+        refute("energies", f"P differs from alpha E + beta at {len(off)} visited states", int(off[0]))
+    elif not case.represents_all and not found.settled("energies"):
+        text = "variables are merged or fixed: the model lacks source states"
+        found.refute("energies", METHOD, text, case.bare_witness(case.unrepresented_state()))
+    else:
+        found.test("energies", METHOD, account)
+    if len(tied) and not found.settled("one-to-one"):
+        refute("one-to-one", f"{len(tied)} visited states have more than one best setting", int(tied[0]))
+    elif not len(off):
+        found.test("one-to-one", METHOD, account)
+    _ground_claims(found, account, (left, right), counts)
+
+
+def _ground_claims(
+    found: Findings,
+    account: str,
+    columns: tuple[NDArray[np.int64], NDArray[np.int64]],
+    counts: NDArray[np.object_],
+) -> None:
+    """The three claims about ground states: tested on the visited states, or open with what was seen."""
+    P, A = columns
+    if P.min() == A.min():
+        found.test("ground-energy", METHOD, account)
+    else:
+        found.leave_open("ground-energy", f"{METHOD}: the least visited energies differ; {account}")
+    low, lowest = P.min() == P, A.min() == A
+    if not np.array_equal(low, lowest):
+        lost, spurious = int((lowest & ~low).sum()), int((low & ~lowest).sum())
+        text = f"{METHOD}: among visited states {lost} minimisers are lost and {spurious} spurious; {account}"
+        for name in ("ground-states", "even-multiplicity"):
+            found.leave_open(name, text)
+        return
+    found.test("ground-states", METHOD, account)
+    if len(set(counts[low])) == 1:
+        found.test("even-multiplicity", METHOD, account)
+    else:
+        text = f"{METHOD}: m differs among the lowest visited states; {account}"
+        found.leave_open("even-multiplicity", text)
