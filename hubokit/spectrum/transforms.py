@@ -1,8 +1,8 @@
 """All energies of a small model by fast transforms: the slow, obvious oracle of the other engines.
 
 A multilinear polynomial over booleans and its table of values are each other's Moebius (subset-sum) transforms; over
-spins they are each other's Walsh-Hadamard transforms. A table has length 2**d, and its index carries variable 0 in the most
-significant bit, so that the order of the table is lift order: bit 0 is spin +1 or boolean 0.
+spins they are each other's Walsh-Hadamard transforms. A table has length 2**d, and its index carries variable 0 in
+the most significant bit, so that the order of the table is lift order: bit 0 is spin +1 or boolean 0.
 
 A transform is d rounds of one addition per entry; ``all_energies`` needs 2**n entries: refused above 24 variables.
 
@@ -21,15 +21,13 @@ import numpy.typing as npt
 
 from hubokit.errors import InputError, LimitError
 from hubokit.spectrum.levels import Density, Level, density_from_integers, levels_from_integers
+from hubokit.spectrum.polynomial import INT64_BOUND, Polynomial, polynomial_of
 
 if TYPE_CHECKING:
     from hubokit.model.hamiltonian import Hamiltonian
 
 TABLE_LIMIT = 24
 """Most variables of which all energies are tabulated (2**24 energies, 128 MB as int64)."""
-
-INT64_BOUND = 2**62
-"""Sums of absolute weights below this are int64; above it Python integers."""
 
 Table = npt.NDArray[Any]
 Round = Callable[[Table, Table], None]
@@ -182,12 +180,15 @@ def all_energies(H: Hamiltonian) -> Table:
             f"a table of all energies holds 2**{H.size} entries; the most is 2**{TABLE_LIMIT}: "
             "use ground_states, low_levels or density_of_states, which keep no table"
         )
-    exact = H.weight_bound < INT64_BOUND
-    table: Table = np.zeros(1 << H.size, dtype=np.int64 if exact else object)
-    for block in H.blocks:
-        masks = (np.int64(1) << (H.size - 1 - block.members.astype(np.int64))).sum(axis=1)
-        table[masks] = block.weights
-    return walsh_hadamard(table) if H.domain == "spin" else inverse_moebius(table)
+    return tabulated(polynomial_of(H))
+
+
+def tabulated(polynomial: Polynomial) -> Table:
+    """Every value of a polynomial with distinct masks: int64 or object, shape (2**n,), in lift order."""
+    exact = polynomial.bound < INT64_BOUND
+    table: Table = np.zeros(1 << polynomial.size, dtype=np.int64 if exact else object)
+    table[polynomial.masks] = polynomial.weights
+    return walsh_hadamard(table) if polynomial.spin else inverse_moebius(table)
 
 
 def spectrum_by_transform(
