@@ -182,7 +182,7 @@ def state_rows(value: list[Any], pointer: str) -> tuple[NDArray[np.int64], NDArr
     return _rows(value, -1, 1, pointer, "a value of a variable", 0)
 
 
-def weights(value: list[Any], pointer: str) -> NDArray[np.generic]:
+def weights(value: list[Any], pointer: str) -> NDArray[Any]:
     """Weights of a block: all integers within 2**53 - 1 (int64), or all strings of integers (Python integers).
 
     Raises

@@ -1,0 +1,205 @@
+"""read() and write(): a file's suffix, or a name, to a format; one table of formats."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from hubokit.errors import HubokitError, InputError
+from hubokit.exchange import documents
+from hubokit.exchange.cnf import load_cnf, write_cnf
+from hubokit.exchange.documents import Document, as_document, write_document
+from hubokit.exchange.opb import load_opb, write_opb
+from hubokit.exchange.reading import Reading
+from hubokit.exchange.wcnf import load_wcnf, write_wcnf
+from hubokit.model.hamiltonian import Hamiltonian
+
+if TYPE_CHECKING:
+    from hubokit.exchange.documents import Thing
+
+
+@dataclass(frozen=True)
+class Format:
+    """A file format.
+
+    Parameters
+    ----------
+    name : str
+        What ``--format`` takes.
+    suffixes : tuple of str
+        Each also with ``.gz`` behind it where `packed`.
+    load : callable or None
+        Path to `Reading`; None where the format is only written.
+    write : callable or None
+        ``write(model, path, force=...)``; None where it is only read.
+    carries : str
+        In words, which models it holds and how.
+    domain : "any", "boolean" or "spin"
+        Domain in which the file speaks; a model of the other is changed, and changed back on reading.
+    locality : int or None
+        Largest product it can hold.
+    packed : bool
+        Whether ``.gz`` is read and written.
+    """
+
+    name: str
+    suffixes: tuple[str, ...]
+    load: Callable[[str | os.PathLike[str]], Reading] | None
+    write: Callable[..., None] | None
+    carries: str
+    domain: str = "any"
+    locality: int | None = None
+    packed: bool = True
+
+
+JSON = "json"
+
+FORMATS: dict[str, Format] = {
+    entry.name: entry
+    for entry in (
+        Format(JSON, (".json",), None, None, "any model, a reduction with its trail, a verdict: the schema"),
+        Format("opb", (".opb",), load_opb, write_opb, "any model as an integer objective with products", "boolean"),
+        Format("wcnf", (".wcnf",), load_wcnf, write_wcnf, "any model as weighted clauses", "boolean"),
+        Format("cnf", (".cnf", ".dimacs"), load_cnf, write_cnf, "a model of small weights as clauses", "boolean"),
+    )
+}
+"""Every format by its name."""
+
+
+def format_of(path: str | os.PathLike[str], name: str | None = None) -> Format:
+    """The format of a file by its suffix, or the one of that name.
+
+    Raises
+    ------
+    InputError
+        No such format; the message lists them.
+
+    Examples
+    --------
+    >>> format_of("plan.opb.gz").name
+    'opb'
+    """
+    file = os.fspath(path)
+    if name is not None:
+        if name not in FORMATS:
+            raise InputError(f"no such format: {name!a}; there are {', '.join(FORMATS)}", file=file)
+        return FORMATS[name]
+    lower = file.lower()
+    bare = lower.removesuffix(".gz")
+    for entry in FORMATS.values():
+        if bare.endswith(entry.suffixes):
+            if bare != lower and not entry.packed:
+                raise InputError(f"{entry.name} files are not read or written as .gz", file=file)
+            return entry
+    known = ", ".join(suffix for entry in FORMATS.values() for suffix in entry.suffixes)
+    raise InputError(f"the suffix says no format; use one of {known}, or name it with --format", file=file)
+
+
+def read_document(
+    path: str | os.PathLike[str], source: Hamiltonian | None = None, format: str | None = None
+) -> Document:
+    """Read a file with everything it holds beside the model.
+
+    Parameters
+    ----------
+    path : path
+    source : Hamiltonian, optional
+        The source of a reduced model whose trail does not embed it.
+    format : str, optional
+        Name of the format, where the suffix does not say it.
+
+    Returns
+    -------
+    Document
+        What a reader of a foreign format has to say stands in ``notes["reading"]``.
+
+    Raises
+    ------
+    InputError, LimitError
+        Bad input, with file and place.
+    """
+    entry = format_of(path, format)
+    if entry.name == JSON:
+        return documents.read_document(path, source)
+    if entry.load is None:
+        raise InputError(f"{entry.name} files are only written", file=os.fspath(path))
+    try:
+        reading = entry.load(path)
+    except HubokitError as error:
+        raise error.located(file=os.fspath(path)) from None
+    notes: dict[str, object] = {"reading": list(reading.remarks)} if reading.remarks else {}
+    if source is not None:
+        return _reduced(reading.model, source, notes)
+    return Document(reading.model, notes=notes)
+
+
+def _reduced(model: Hamiltonian, source: Hamiltonian, notes: dict[str, object]) -> Document:
+    """A foreign file beside its source: variables that the source does not have are the auxiliaries."""
+    from hubokit.reduction.result import Reduction
+
+    auxiliaries = tuple(label for label in model.labels if label not in source.positions)
+    return Document(Reduction(source, model, auxiliaries), auxiliaries, notes=notes)
+
+
+def read(path: str | os.PathLike[str], source: Hamiltonian | None = None, format: str | None = None) -> Thing:
+    """Read a file.
+
+    Returns
+    -------
+    Hamiltonian, Reduction or Verdict
+        A Reduction where the document's trail embeds its source or `source` is given.
+
+    Raises
+    ------
+    InputError, LimitError
+        Bad input, with file and place.
+    """
+    return read_document(path, source, format).thing
+
+
+def write(
+    thing: Thing | Document,
+    path: str | os.PathLike[str],
+    format: str | None = None,
+    *,
+    force: bool = False,
+    detached: bool = False,
+    source_file: str | None = None,
+) -> None:
+    """Write a Hamiltonian, Reduction, Verdict or Document.
+
+    Parameters
+    ----------
+    thing : Hamiltonian, Reduction, Verdict or Document
+        In every format but JSON a Reduction is written as its model.
+    path : path
+    format : str, optional
+        Name of the format; by default the suffix says it.
+    force : bool
+        Whether an existing file is replaced.
+    detached, source_file
+        In JSON: leave the source out of the trail, and the name of its file.
+
+    Raises
+    ------
+    InputError, LimitError
+        The file exists, or the format cannot hold the thing.
+    """
+    entry = format_of(path, format)
+    if entry.name == JSON:
+        write_document(thing, path, force=force, detached=detached, source_file=source_file)
+        return
+    if entry.write is None:
+        raise InputError(f"{entry.name} files are only read", file=os.fspath(path))
+    try:
+        model = as_document(thing).model
+        if entry.locality is not None and model.locality > entry.locality:
+            raise InputError(
+                f"the model has products of {model.locality} variables, {entry.name} holds {entry.locality}; "
+                "reduce it first (hubokit reduce)"
+            )
+        entry.write(model, path, force=force)
+    except HubokitError as error:
+        raise error.located(file=os.fspath(path)) from None
