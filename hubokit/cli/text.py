@@ -65,7 +65,7 @@ def fields(pairs: Iterable[tuple[str, str]], column: int = 16) -> str:
     """
     lines = []
     for name, value in pairs:
-        first = f"{INDENT}{name:<{column}}"
+        first = f"{INDENT}{name:<{column - 1}} "
         rest = " " * (len(INDENT) + column)
         folded = textwrap.wrap(
             printable(value), WIDTH, initial_indent=first, subsequent_indent=rest, break_long_words=False,
@@ -140,3 +140,16 @@ def size_of(octets: int) -> str:
     if octets < 1_000_000:
         return f"{octets / 1000:.1f} kB"
     return f"{octets / 1_000_000:.1f} MB"
+
+
+def section(title: str, *parts: str) -> str:
+    """A titled block: the title, its lines, and an empty line.
+
+    Examples
+    --------
+    >>> print(section("FILES", "  one"))
+    FILES
+      one
+    <BLANKLINE>
+    """
+    return "\n".join([printable(title), *(part for part in parts if part), ""])
