@@ -55,6 +55,16 @@ class Rules:
         """Number of guards of each auxiliary."""
         return int(self.guards.shape[1])
 
+    def taken(self, chosen: Integers) -> Rules:
+        """The rules at the chosen indices."""
+        return Rules(
+            self.auxiliaries[chosen],
+            self.guards[chosen],
+            self.function[chosen],
+            self.margin[chosen],
+            self.attained[chosen],
+        )
+
     def bits(self, guard_bits: Integers) -> Integers:
         """Bits of the auxiliaries, shape (m, r), from the guards' bits, shape (m, r, g)."""
         index = np.zeros(guard_bits.shape[:2], np.uint64)
@@ -113,7 +123,7 @@ def decide(structure: Structure, candidates: Positions) -> list[list[Rules]]:
 def _one_round(structure: Structure, waiting: Positions, known: Integers) -> list[Rules]:
     row, other, weight = structure.neighbours.rows(waiting)
     usable = known[other]
-    order = np.lexsort((_ranks(-np.abs(weight)), ~usable, row))
+    order = np.lexsort((sorting_keys(-np.abs(weight)), ~usable, row))
     row, other, weight, usable = row[order], other[order], weight[order], usable[order]
     count = len(waiting)
     starts = np.searchsorted(row, np.arange(count))
@@ -174,7 +184,7 @@ def reach(weight: Integers, domain: str) -> tuple[Integers, Integers]:
     return np.minimum(weight, 0), np.maximum(weight, 0)
 
 
-def _ranks(values: Integers) -> Positions:
+def sorting_keys(values: Integers) -> Positions:
     """Sorting keys as int64 for arrays of any integer dtype."""
     if values.dtype != object:
         return values

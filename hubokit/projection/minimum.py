@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from hubokit.errors import LimitError
 from hubokit.model.states import States, from_bits, to_bits
 from hubokit.projection.clusters import Batch, Components, batches, components
-from hubokit.projection.elimination import WIDTH_LIMIT, Best, elimination_order, minimise
+from hubokit.projection.elimination import WIDTH_LIMIT, elimination_order, minimise
 from hubokit.projection.guards import Rules
 from hubokit.projection.structure import Integers, Positions, Structure
 from hubokit.projection.tables import NONE, fold, least_positive, settings
@@ -140,11 +140,11 @@ class Minimiser:
         column = np.full(len(structure.is_auxiliary), -1)
         column[self.others] = np.arange(len(self.others))
         for batch in self.small:
-            best = _enumerate(fields[:, column[batch.auxiliaries]], batch.between, domain)
-            bits = settings_bits(best.bits, batch.a)
+            _, counts, nearest, chosen = _enumerate(fields[:, column[batch.auxiliaries]], batch.between, domain)
+            bits = settings_bits(chosen, batch.a)
             states[:, batch.auxiliaries.ravel()] = from_bits(bits, domain).reshape(count, -1)
-            multiplicity = multiplicity * _product(best.multiplicity)
-            gap = _nearer(gap, least_positive(best.gap))
+            multiplicity = multiplicity * _product(counts)
+            gap = _nearer(gap, least_positive(nearest))
         bound = 4 * structure.model.weight_bound
         for auxiliaries, between in self.large:
             f = fields[:, column[auxiliaries]]
@@ -173,8 +173,11 @@ def settings_bits(index: Integers, count: int) -> NDArray[np.int8]:
     return ((index[..., None] >> shifts) & 1).astype(np.int8)
 
 
-def _enumerate(fields: Integers, between: Integers, domain: str) -> Best:
-    """All settings of B clusters at m states: fields (m, B, a), between (B, a, a); `bits` holds setting numbers."""
+def _enumerate(fields: Integers, between: Integers, domain: str) -> tuple[Integers, Integers, Integers, Integers]:
+    """All settings of B clusters at m states, fields (m, B, a), between (B, a, a).
+
+    Minimum, multiplicity, gap and the number of the first best setting, each of shape (m, B).
+    """
     best = count = gap = chosen = np.zeros(0, np.int64)
     for index, setting in enumerate(settings(between.shape[1], domain)):
         pairs = (between * np.multiply.outer(setting, setting)).sum(axis=(1, 2))
@@ -185,24 +188,24 @@ def _enumerate(fields: Integers, between: Integers, domain: str) -> Best:
         else:
             chosen = np.where(energy < best, index, chosen)
             best, count, gap = fold(best, count, gap, energy)
-    return Best(best, count, gap, chosen)
+    return best, count, gap, chosen
 
 
 def _fields(structure: Structure, chosen: Positions, states: States) -> Integers:
     """h + sum of couplings times the values already set, for the chosen auxiliaries; shape (m, len(chosen))."""
     row, other, weight = structure.neighbours.rows(chosen)
-    fields = np.repeat(structure.field[chosen][None, :], len(states), axis=0)
+    fields: Integers = np.repeat(structure.field[chosen][None, :], len(states), axis=0)
     if not len(row):
         return fields
-    values = states[:, other].astype(weight.dtype) if weight.dtype == object else None
-    if values is None:
-        from scipy.sparse import csr_array
+    if weight.dtype == object:
+        values = states[:, other].astype(object)
+        np.add.at(fields.T, row, (values * weight).T)
+        return fields
+    from scipy.sparse import csr_array
 
-        starts = np.searchsorted(row, np.arange(len(chosen) + 1))
-        matrix = csr_array((weight, other, starts), shape=(len(chosen), states.shape[1]))
-        return fields + (matrix @ states.T.astype(np.int64)).T
-    np.add.at(fields.T, row, (values * weight).T)
-    return fields
+    starts = np.searchsorted(row, np.arange(len(chosen) + 1))
+    matrix = csr_array((weight, other, starts), shape=(len(chosen), states.shape[1]))
+    return np.asarray(fields + (matrix @ states.T.astype(np.int64)).T)
 
 
 def _merged(structure: Structure, found: Components, chosen: NDArray[np.bool_]) -> list[Batch]:

@@ -20,18 +20,26 @@ from numpy.typing import NDArray
 from hubokit.errors import LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.states import States, from_bits
+from hubokit.projection.chains import eliminate
 from hubokit.projection.clusters import Components, batches, components
-from hubokit.projection.guards import Rules, decide
+from hubokit.projection.findings import Findings, RuleStep
+from hubokit.projection.guards import decide
 from hubokit.projection.minimum import Minimiser
 from hubokit.projection.polynomial import Gathered
 from hubokit.projection.result import ClusterSummary, GapBound, least
-from hubokit.projection.settle import Settled, by_counting, by_tables
+from hubokit.projection.settle import TABLE_WORK, Settled, by_counting, by_tables
 from hubokit.projection.structure import Positions, Structure, structure_of
 from hubokit.projection.substitution import substituted
 from hubokit.projection.tables import NONE
 
 SMALL = 12
 """Auxiliaries plus touched variables up to which a cluster is tabulated without looking for guards."""
+
+CHEAP = 2**22
+"""Energies that the tables of a batch may take before chains are tried."""
+
+DENSE = 2**24
+"""Largest number of couplings of one cluster that are written out as a dense array."""
 
 SMALL_WORK = 2**28
 """Energies that these tables may take together."""
@@ -138,29 +146,7 @@ class Projection:
         """What a second checker needs to follow the proof: see `hubokit.projection.certificate`."""
         from hubokit.projection.certificate import certificate
 
-        return certificate(self.findings, self.polynomial is not None)
-
-
-@dataclass
-class Findings:
-    """Everything found out about the clusters of one model.
-
-    Parameters
-    ----------
-    structure : Structure
-    gathered : Gathered
-        Terms of P so far, over originals and decided auxiliaries.
-    settled : list of (Settled, bool)
-        Batches settled by tables or counting; whether they touch originals only.
-    rounds : list of rounds of Rules
-    undecided : list of str
-    """
-
-    structure: Structure
-    gathered: Gathered
-    settled: list[tuple[Settled, bool]] = field(default_factory=list)
-    rounds: list[list[Rules]] = field(default_factory=list)
-    undecided: list[str] = field(default_factory=list)
+        return certificate(self.findings, self.uniform_multiplicity, self.gap_everywhere)
 
 
 def project(model: Hamiltonian, auxiliaries: Sequence[str], *, table_bits: int = 20) -> Projection:
@@ -199,6 +185,7 @@ def project(model: Hamiltonian, auxiliaries: Sequence[str], *, table_bits: int =
     if rest.any():
         waiting = found.members[rest[found.cluster]]
         findings.rounds = decide(structure, waiting)
+        findings.steps.extend(RuleStep(False, rules) for rules in findings.rounds)
         _add_decided_terms(findings)
         _settle_rest(findings, _undecided(findings, waiting), table_bits)
     return _projection(findings)
@@ -216,11 +203,11 @@ def _tabulate_small(findings: Findings, found: Components, table_bits: int) -> N
         limit = bits
     chosen = (size <= limit) & (found.d <= table_bits)
     for batch in batches(findings.structure, found, chosen):
-        settled = by_tables(batch, findings.structure.domain, findings.gathered, table_bits)
+        settled = by_tables(batch, findings.structure.domain, findings.gathered, table_bits, TABLE_WORK)
         if settled is None:
             chosen[found.cluster[np.isin(found.members, batch.auxiliaries)]] = False
         else:
-            findings.settled.append((settled, True))
+            findings.settle(settled)
     return ~chosen
 
 
@@ -247,28 +234,60 @@ def _add_decided_terms(findings: Findings) -> None:
 
 
 def _settle_rest(findings: Findings, waiting: Positions, table_bits: int) -> None:
-    """Counting, then larger tables, for the auxiliaries that no guards decide."""
-    structure = findings.structure
+    """What plain guards leave: counting and cheap tables, then chains, then larger tables, then single states."""
     if not len(waiting):
         return
-    found = components(structure, waiting)
-    dense = found.a * (found.a + found.d) <= 2**24
-    open_clusters: Counter[tuple[int, int]] = Counter()
-    for a, d in zip(found.a[~dense].tolist(), found.d[~dense].tolist(), strict=True):
-        open_clusters[a, d] += 1
+    found = components(findings.structure, waiting)
+    left = _by_shape(findings, found, np.ones(len(found), bool), table_bits, CHEAP)
+    left = _by_chains(findings, found, left)
+    left = _by_shape(findings, found, left, table_bits, TABLE_WORK)
+    kinds = Counter(zip(found.a[left].tolist(), found.d[left].tolist(), strict=True))
+    for (a, d), number in sorted(kinds.items()):
+        findings.undecided.append(
+            f"{number} cluster{'s' if number > 1 else ''} of {a} coupled auxiliaries touching {d} variables: no few "
+            f"guards decide them, and tables over {d} variables with {a} auxiliaries are too large"
+        )
+
+
+def _by_shape(
+    findings: Findings, found: Components, chosen: NDArray[np.bool_], table_bits: int, work: int
+) -> NDArray[np.bool_]:
+    """Counting or tables for the chosen clusters; returns which of them are left."""
+    structure = findings.structure
+    cluster_of = np.full(len(structure.is_auxiliary), -1)
+    cluster_of[found.members] = found.cluster
+    left = chosen.copy()
+    dense = chosen & (found.a * (found.a + found.d) <= DENSE)
     for batch in batches(structure, found, dense):
         settled = by_counting(batch, structure.domain, findings.gathered) or by_tables(
-            batch, structure.domain, findings.gathered, table_bits
+            batch, structure.domain, findings.gathered, table_bits, work
         )
-        if settled is None:
-            open_clusters[batch.a, batch.d] += len(batch)
-        else:
-            findings.settled.append((settled, not structure.is_auxiliary[batch.touched].any()))
-    for (a, d), number in sorted(open_clusters.items()):
-        findings.undecided.append(
-            f"{number} cluster{'s' if number > 1 else ''} of {a} auxiliaries touching {d} variables: no few guards decide "
-            f"them, and tables over more than {table_bits} variables or {a} coupled auxiliaries are not made"
-        )
+        if settled is not None:
+            findings.settle(settled)
+            left[cluster_of[batch.auxiliaries[:, 0]]] = False
+    return left
+
+
+def _by_chains(findings: Findings, found: Components, chosen: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    """Auxiliaries eliminated in turn, for clusters that come out decided whole; returns which of the chosen are left."""
+    structure = findings.structure
+    known = ~structure.is_auxiliary
+    for rules in findings.rounds:
+        for one in rules:
+            known[one.auxiliaries] = True
+    cluster_of = np.full(len(structure.is_auxiliary), -1)
+    cluster_of[found.members] = found.cluster
+    left = chosen.copy()
+    trying = chosen
+    # A second pass without the clusters that stayed open: the terms of one cluster never meet those of another.
+    while trying.any():
+        chain = eliminate(structure, found.members[trying[found.cluster]], known)
+        if not len(chain.left):
+            findings.follow(chain)
+            return left & ~trying
+        trying = trying.copy()
+        trying[cluster_of[chain.left]] = False
+    return left
 
 
 def _projection(findings: Findings) -> Projection:

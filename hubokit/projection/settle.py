@@ -81,14 +81,14 @@ def looked_alike(batch: Batch) -> tuple[Batch, Integers, Positions]:
     return shapes(batch)
 
 
-def by_tables(batch: Batch, domain: str, gathered: Gathered, table_bits: int) -> Settled | None:
-    """Tabulate a batch and add its polynomials; None where the tables would take more than `TABLE_WORK` energies."""
+def by_tables(batch: Batch, domain: str, gathered: Gathered, table_bits: int, work: int) -> Settled | None:
+    """Tabulate a batch and add its polynomials; None where the tables would take more than `work` energies."""
     distinct, factors, shape = looked_alike(batch)
-    if batch.d > table_bits or not affordable(distinct):
+    if batch.d > table_bits or not affordable(distinct, work):
         return None
     if distinct is batch:
         return _unlike(batch, domain, gathered)
-    tables = _tables(distinct, domain)
+    tables = tables_of(distinct, domain)
     coefficient, shift = coefficients(tables.minimum, domain)
     step = max(1, (1 << 22) >> batch.d)
     for start in range(0, len(batch), step):
@@ -98,14 +98,14 @@ def by_tables(batch: Batch, domain: str, gathered: Gathered, table_bits: int) ->
     return Settled("table", batch, distinct, factors, shape, *_extremes(tables, batch.d))
 
 
-def affordable(distinct: Batch) -> bool:
-    """Whether tables of these shapes stay within `TABLE_WORK` energies."""
-    if len(distinct) << (distinct.a + distinct.d) <= TABLE_WORK:
+def affordable(distinct: Batch, work: int) -> bool:
+    """Whether tables of these shapes stay within `work` energies."""
+    if len(distinct) << (distinct.a + distinct.d) <= work:
         return True
-    if len(distinct) << distinct.d > TABLE_WORK:
+    if len(distinct) << distinct.d > work:
         return False
     width = max(elimination_order(one)[1] for one in distinct.between)
-    return (len(distinct) * distinct.a) << (distinct.d + width + 1) <= TABLE_WORK
+    return (len(distinct) * distinct.a) << (distinct.d + width + 1) <= work
 
 
 def by_counting(batch: Batch, domain: str, gathered: Gathered) -> Settled | None:
@@ -176,7 +176,7 @@ def _extremes(tables: Tables, d: int) -> tuple[Positions, Positions, Integers, N
     )
 
 
-def _tables(distinct: Batch, domain: str) -> Tables:
+def tables_of(distinct: Batch, domain: str) -> Tables:
     """By enumeration of the auxiliaries, or by eliminating them where there are many of small width."""
     if len(distinct) << (distinct.a + distinct.d) <= TABLE_WORK >> 4 or distinct.a < 8:
         return joined([tables for _, tables in tabulated_parts(distinct, domain)], distinct)

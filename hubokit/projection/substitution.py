@@ -127,7 +127,7 @@ def _polynomials(rules: list[Rules], domain: str) -> tuple[list[Replacements], i
         table = one.truth_tables()
         values = 1 - 2 * table if domain == "spin" else table
         coefficient, shift = coefficients(values, domain)
-        pieces.extend((shift, first + row, *rest) for row, *rest in written_by_row(coefficient, one.guards))
+        pieces.extend((shift, first + row, m, w) for row, m, w in written_by_row(coefficient, one.guards))
         first += len(one)
     shift = max((piece[0] for piece in pieces), default=0)
     by_locality: dict[int, list[tuple[Positions, Positions, Integers]]] = {}

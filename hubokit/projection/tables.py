@@ -54,7 +54,8 @@ def least_positive(gaps: Integers) -> Integers:
     if gaps.shape[-1] == 0:
         return np.full(gaps.shape[:-1], NONE, gaps.dtype)
     top = gaps.max(axis=-1, keepdims=True)
-    return np.where(gaps == NONE, top, gaps).min(axis=-1)
+    least: Integers = np.where(gaps == NONE, top, gaps).min(axis=-1)
+    return least
 
 
 def settings(count: int, domain: str) -> Positions:

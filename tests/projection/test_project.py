@@ -115,3 +115,26 @@ def test_a_model_that_is_not_quadratic_or_auxiliaries_that_are_not_there_are_ref
         project(pair, ["z"])
     with pytest.raises(InputError, match="twice"):
         project(pair, ["x", "x"])
+
+
+def pair_chain(length: int, penalty: int) -> tuple[Hamiltonian, list[str]]:
+    """x0 x1 ... by a chain y1 = x0 x1, y2 = y1 x2, ...; the last auxiliary gets weight -1."""
+    terms: dict[tuple[str, ...], int] = {}
+    before = "x0"
+    names = []
+    for k in range(1, length):
+        x, y = f"x{k}", f"y{k}"
+        names.append(y)
+        for key, c in (((before, x), 1), ((before, y), -2), ((x, y), -2), ((y,), 3)):
+            terms[key] = terms.get(key, 0) + c * penalty
+        before = y
+    terms[(before,)] = terms.get((before,), 0) - 1
+    return Hamiltonian(terms, domain="boolean"), names
+
+
+def test_a_chain_of_pairs_is_decided_link_by_link(monkeypatch):
+    monkeypatch.setattr(module, "SMALL", -1)
+    F, auxiliaries = pair_chain(30, 5)
+    P = project(F, auxiliaries, table_bits=4)
+    assert P.polynomial == Hamiltonian({tuple(f"x{k}" for k in range(30)): -1}, domain="boolean")
+    assert P.uniform_multiplicity == 1
