@@ -32,7 +32,7 @@ MEMORY = 4 * 2**30
 LISTED_TOGETHER = 1 << 20
 """Levels with fewer states than this in all are listed by one walk over the energy window."""
 
-Progress = Callable[[int, int], object]
+Progress = Callable[[int, int], None]
 
 
 @dataclass(frozen=True)
@@ -98,7 +98,7 @@ def ground_states(
     limit: int = 100_000,
     *,
     progress: Progress | None = None,
-    time: float = 600.0,
+    time: float | None = 600.0,
     memory: int = MEMORY,
     cost: EliminationCost | None = None,
 ) -> Level:
@@ -111,8 +111,8 @@ def ground_states(
         Most states to list; beyond it the first in lift order.
     progress : callable, optional
         Called with table entries done and in all.
-    time : float
-        Seconds; work predicted to take longer is refused.
+    time : float or None
+        Seconds; work predicted to take longer is refused. None for any.
     memory : int
         Bytes; work predicted to take more is refused.
     cost : EliminationCost, optional
@@ -159,7 +159,7 @@ def low_levels(
     limit: int = 100_000,
     *,
     progress: Progress | None = None,
-    time: float = 600.0,
+    time: float | None = 600.0,
     memory: int = MEMORY,
     cost: EliminationCost | None = None,
 ) -> list[Level]:
@@ -213,7 +213,7 @@ def draw_ground_states(
     number: int,
     seed: int = 0,
     *,
-    time: float = 600.0,
+    time: float | None = 600.0,
     memory: int = MEMORY,
     cost: EliminationCost | None = None,
 ) -> States:
@@ -249,7 +249,9 @@ def draw_ground_states(
     return from_bits(draw(count_ground_states(elimination), H.size, number, seed), H.domain)
 
 
-def _allowed(H: Hamiltonian, count: int, time: float, memory: int, cost: EliminationCost | None) -> EliminationCost:
+def _allowed(
+    H: Hamiltonian, count: int, time: float | None, memory: int, cost: EliminationCost | None
+) -> EliminationCost:
     chosen = predicted_cost(H, count) if cost is None else cost
     instead = "exhaustion would do" if H.size <= 40 else "a neighbourhood of given states would do"
     if chosen.order is None:
@@ -261,7 +263,7 @@ def _allowed(H: Hamiltonian, count: int, time: float, memory: int, cost: Elimina
             f"elimination at width {chosen.width} would take {_bytes(chosen.memory)} of memory, "
             f"{_bytes(memory)} are allowed; raise memory=, or {instead}"
         )
-    if chosen.seconds > time:
+    if time is not None and chosen.seconds > time:
         raise LimitError(
             f"elimination at width {chosen.width} would take about {chosen.seconds:.0f} s, {time:g} s are "
             f"allowed; raise time=, or {instead}"

@@ -63,9 +63,9 @@ def _sweep(elimination: Elimination, count: int, prime: int) -> list[tuple[int, 
     waiting: list[list[tuple[tuple[int, ...], Table, Table]]] = [[] for _ in separators]
     excess, number = _identity(1, count, kind)
     here = np.zeros(1, np.int64)
+    combine, merge = _loops(elimination.order.entries * count >= COMPILED_FROM and not wide)
     for rank, separator in enumerate(separators):
         entries = 2 << len(separator)
-        combine, merge = _loops(entries * count >= COMPILED_FROM and not wide)
         table, numbers = _identity(entries, count, kind)
         for scope, other, other_numbers in waiting[rank]:
             high, low = partner_index(scope, (rank, *separator))

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import random
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, ClassVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -62,7 +62,8 @@ def states_within(elimination: Elimination, size: int, window: int) -> tuple[Bit
     """
     order = elimination.order
     bits = np.zeros((1, size), np.uint8)
-    used = np.zeros(1, object if window >= 2**62 else np.int64)
+    wide = any(difference.dtype == object for difference in elimination.differences)
+    used = np.zeros(1, object if wide else np.int64)
     for rank in range(len(order.variables) - 1, -1, -1):
         difference = elimination.differences[rank][_entry(bits, order, rank)].astype(used.dtype)
         first, second = used + np.maximum(-difference, 0), used + np.maximum(difference, 0)
@@ -155,6 +156,9 @@ class LevelSearch:
     energy: int
     below: int
 
+    SPARE: ClassVar[int] = 1024
+    """So many more states than four times those needed are listed rather than looked for more closely."""
+
     def first(self, need: int, given: Bits | None = None) -> Bits:
         """The first `need` states in lift order among those that begin with the `given` bits.
 
@@ -181,7 +185,7 @@ class LevelSearch:
                 short = middle
             else:
                 long = middle
-        if self._count(leader[:short]) <= 4 * need + 1024:
+        if self._count(leader[:short]) <= 4 * need + self.SPARE:
             return self._listed(leader[:short])[:need]
         sooner = self._listed(leader[: short + 1])
         later = self.first(need - len(sooner), np.append(leader[:short], np.uint8(1)))

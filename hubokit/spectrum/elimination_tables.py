@@ -107,7 +107,7 @@ class Elimination:
 
 
 def eliminate(
-    problem: Problem, order: EliminationOrder, progress: Callable[[int, int], object] | None = None
+    problem: Problem, order: EliminationOrder, progress: Callable[[int, int], None] | None = None
 ) -> Elimination:
     """Minimise the variables of `order` out of the problem.
 
