@@ -137,15 +137,15 @@ def _verdict_from_json(document: Json) -> Document:
 
 
 def _model_from_json(document: Json, source: Hamiltonian | None) -> Document:
-    refuse_invalid("model", document)
+    arrays = refuse_invalid("model", document)
     for key in ("intent", "notes", "extensions"):
         refuse_unplain(document.get(key, {}), pointer=f"/{key}")
     for place, entry in enumerate(document.get("trail", ())):
         refuse_unplain({k: v for k, v in entry.items() if k != "model"}, pointer=f"/trail/{place}")
-    model, fields = read_model(document)
+    model, fields = read_model(document, arrays)
     auxiliaries = as_labels(document.get("auxiliaries", ()), "/auxiliaries")
     refuse_strangers(model, auxiliaries)
-    trail, entries = read_trail(document.get("trail", ()))
+    trail, entries = read_trail(document.get("trail", ()), arrays)
     if "trail" in fields:
         fields["trail"] = entries
     digests = document.get("digests", {})

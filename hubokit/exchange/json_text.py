@@ -7,6 +7,7 @@ Time and memory are bounded by the length of the text.
 
 from __future__ import annotations
 
+import gc
 import json
 import math
 import re
@@ -69,6 +70,8 @@ def parsed(text: str, *, file: str | None = None) -> Any:
         twice.append(marked)
         return marked
 
+    collecting = gc.isenabled()
+    gc.disable()  # a million small lists without one cycle: looking for cycles takes longer than parsing
     try:
         value = json.loads(text, object_pairs_hook=unique)
     except json.JSONDecodeError as error:
@@ -78,6 +81,9 @@ def parsed(text: str, *, file: str | None = None) -> Any:
         raise InputError(f"nested deeper than {DEPTH_LIMIT} levels", "line 1", file) from None
     except ValueError:
         raise InputError(*_long_number(text), file) from None
+    finally:
+        if collecting:
+            gc.enable()
     if twice:
         pointer, found = next((pointer, found) for pointer, found in _walk(value) if isinstance(found, _Twice))
         raise InputError(

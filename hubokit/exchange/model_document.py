@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from hubokit.errors import InputError
 from hubokit.exchange.json_text import SAFE_INTEGER, quoted
-from hubokit.exchange.term_arrays import LARGEST_NAME, LARGEST_WEIGHT, member_rows, weights
+from hubokit.exchange.term_arrays import LARGEST_NAME, LARGEST_WEIGHT
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.labels import as_labels
 from hubokit.model.numbers import as_fraction, format_fraction
@@ -73,13 +73,17 @@ def _written_weights(values: NDArray[Any], pointer: str) -> NDArray[np.int64] | 
     return [str(value) for value in listed]
 
 
-def read_model(fields: Mapping[str, Any], pointer: str = "") -> tuple[Hamiltonian, dict[str, Any]]:
+def read_model(
+    fields: Mapping[str, Any], arrays: Mapping[str, Any], pointer: str = ""
+) -> tuple[Hamiltonian, dict[str, Any]]:
     """A Hamiltonian from fields that the schema has accepted.
 
     Parameters
     ----------
     fields : mapping
         A model document, or one embedded in a trail.
+    arrays : mapping
+        Its long lists as arrays, as `refuse_invalid` returns them.
     pointer : str
         Where `fields` stand in the whole document.
 
@@ -103,7 +107,7 @@ def read_model(fields: Mapping[str, Any], pointer: str = "") -> tuple[Hamiltonia
         if locality in seen:
             raise InputError(f"locality {locality} has a block already; join the two", f"{here}/locality")
         seen.add(locality)
-        blocks.append(_read_block(block, locality, len(labels), here))
+        blocks.append(_read_block(arrays, locality, len(labels), here))
     model = Hamiltonian.from_arrays(
         [members for members, _ in blocks],
         [values for _, values in blocks],
@@ -125,10 +129,10 @@ def read_model(fields: Mapping[str, Any], pointer: str = "") -> tuple[Hamiltonia
 
 
 def _read_block(
-    block: Mapping[str, Any], locality: int, size: int, pointer: str
+    arrays: Mapping[str, Any], locality: int, size: int, pointer: str
 ) -> tuple[NDArray[Any], NDArray[Any]]:
-    lengths, flat = member_rows(block["members"], f"{pointer}/members")
-    values = weights(block["weights"], f"{pointer}/weights")
+    lengths, flat = arrays[f"{pointer}/members"]
+    values = arrays[f"{pointer}/weights"]
     if len(lengths) != len(values):
         raise InputError(f"{len(values)} weights for {len(lengths)} terms", f"{pointer}/weights")
     if (lengths != locality).any():

@@ -23,7 +23,7 @@ _TYPES = {
 }
 
 
-def refuse_invalid(kind: str, document: Any) -> None:
+def refuse_invalid(kind: str, document: Any) -> dict[str, Any]:
     """Raise unless the schema of the kind accepts the document.
 
     Parameters
@@ -31,6 +31,11 @@ def refuse_invalid(kind: str, document: Any) -> None:
     kind : "model", "verdict" or "summary"
     document : object
         Plain JSON values; in a model, term lists may be numpy arrays, which are passed over.
+
+    Returns
+    -------
+    dict
+        The long lists of a model as arrays, by their JSON pointers.
 
     Raises
     ------
@@ -47,8 +52,7 @@ def refuse_invalid(kind: str, document: Any) -> None:
     error = next(iter(validator(kind).iter_errors(skeleton)), None)
     if error is not None:
         raise sentence(error)
-    for pointer, check, value in lists:
-        check(value, pointer)
+    return {pointer: check(value, pointer) for pointer, check, value in lists}
 
 
 def kind_of(document: Any) -> str:

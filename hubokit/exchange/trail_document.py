@@ -105,8 +105,8 @@ def plain(value: Any) -> Any:
     return value.item() if isinstance(value, np.generic) else value
 
 
-def read_trail(entries: Sequence[Json]) -> tuple[Trail, list[Json]]:
-    """A trail from entries that the schema has accepted.
+def read_trail(entries: Sequence[Json], arrays: Mapping[str, Any]) -> tuple[Trail, list[Json]]:
+    """A trail from entries that the schema has accepted, with the long lists of the document as arrays.
 
     Returns
     -------
@@ -124,7 +124,7 @@ def read_trail(entries: Sequence[Json]) -> tuple[Trail, list[Json]]:
     first = dict(entries[0])
     source: Hamiltonian | None = None
     if "model" in first:
-        source, first["model"] = read_model(first["model"], "/trail/0/model")
+        source, first["model"] = read_model(first["model"], arrays, "/trail/0/model")
         if source.digest != first["digest"]:
             raise InputError(
                 f"the embedded source is another function than the digest says; its own is {source.digest}",
