@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from hubokit.errors import InputError
-from hubokit.reduction.gadgets.attach import Piece, attach, shared_resolution
+from hubokit.reduction.gadgets.attach import TermPiece, shared_resolution
 from hubokit.reduction.gadgets.base import Domain, StandIn
 from hubokit.reduction.gadgets.enumeration import all_values, enumerated
 from hubokit.reduction.gadgets.spin_product import spin_product
@@ -135,9 +135,9 @@ def test_a_block_is_served_as_its_terms_would_be_one_by_one() -> None:
     members = np.array([[0, 1, 2, 3, 4], [1, 2, 4, 5, 6]])
     sizes = np.array([2, 7])
     unit, gap = Fraction(1, 3), Fraction(1, 2)
-    piece = Piece(part, members, sizes, "x")
+    piece = TermPiece(part, members, sizes, "x")
     resolution = shared_resolution([piece], unit, gap)
-    parts, constant = attach(piece, 7, unit, gap, resolution)
+    parts, constant = piece.attach(7, unit, gap, resolution)
     found: dict[tuple[int, ...], Fraction] = {(): constant * resolution}
     for rows, weights in parts:
         for row, weight in zip(rows.tolist(), weights.tolist(), strict=True):
@@ -153,6 +153,6 @@ def test_a_block_is_served_as_its_terms_would_be_one_by_one() -> None:
 
 def test_weights_beyond_int64_are_served_exactly() -> None:
     part = stand_in("negative-monomial", 3, -1, "one-to-one")
-    piece = Piece(part, np.array([[0, 1, 2]]), np.array([2**61]), "x")
-    parts, _ = attach(piece, 3, Fraction(1), Fraction(1), Fraction(1))
+    piece = TermPiece(part, np.array([[0, 1, 2]]), np.array([2**61]), "x")
+    parts, _ = piece.attach(3, Fraction(1), Fraction(1), Fraction(1))
     assert sorted(int(w) for _, weights in parts for w in weights) == [-(2**61) - 1] * 3 + [2**62 + 3]

@@ -11,8 +11,9 @@ import pytest
 
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.reduction.assembly import fresh_labels
 from hubokit.reduction.gadgets.table import FAMILIES
-from hubokit.reduction.reduce import fresh_labels, reduce
+from hubokit.reduction.reduce import reduce
 from hubokit.reduction.result import Reduction
 
 LIMIT = 17

@@ -14,7 +14,7 @@ from hubokit.reduction.gadgets import (
     spin_product,
     spin_split,
 )
-from hubokit.reduction.gadgets.base import Domain, Family, Keep, StandIn, widened
+from hubokit.reduction.gadgets.base import Family, Keep, StandIn, widened
 
 FAMILIES: tuple[Family, ...] = (
     negative_monomial.FAMILY,
@@ -47,7 +47,7 @@ def family(name: str) -> Family:
     raise InputError(f"no such reduction method: {name!r}; the methods are {names}", place="method")
 
 
-def families_for(domain: Domain, locality: int, sign: int) -> list[Family]:
+def families_for(domain: str, locality: int, sign: int) -> list[Family]:
     """Every family that serves terms of this domain, locality and sign.
 
     Examples

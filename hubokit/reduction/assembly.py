@@ -1,0 +1,176 @@
+"""From a choice of gadgets to a quadratic model: terms sorted into pieces, priced, and put together."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.model.numbers import format_fraction, times
+from hubokit.model.terms import canonical_blocks
+from hubokit.reduction.costs import extremes
+from hubokit.reduction.gadgets.attach import Piece, TermPiece, shared_resolution
+from hubokit.reduction.gadgets.base import Keep, Part
+from hubokit.reduction.gadgets.table import stand_in, wide_stand_in
+
+Choice = Mapping[tuple[int, int], str]
+"""Name of the family that serves each (locality, sign)."""
+
+
+@dataclass(frozen=True)
+class Price:
+    """What a way of reducing would cost, exactly.
+
+    Parameters
+    ----------
+    auxiliaries, couplers : int
+    ratio : Fraction
+        Largest over smallest nonzero absolute coefficient.
+    """
+
+    auxiliaries: int
+    couplers: int
+    ratio: Fraction
+
+    def figure(self, prefer: str) -> tuple[Fraction | int, ...]:
+        """What a preference compares: the preferred figure first, then the others to break ties."""
+        if prefer == "range":
+            return self.ratio, self.auxiliaries, self.couplers
+        if prefer == "couplers":
+            return self.couplers, self.auxiliaries, self.ratio
+        return self.auxiliaries, self.ratio, self.couplers
+
+    def as_json(self) -> dict[str, Any]:
+        """Plain JSON values, for the trail."""
+        return {
+            "auxiliaries": self.auxiliaries,
+            "couplers": self.couplers,
+            "coefficient ratio": format_fraction(self.ratio),
+        }
+
+
+def term_pieces(
+    H: Hamiltonian,
+    choice: Choice,
+    gap: Fraction,
+    keep: Keep,
+    taken: Mapping[int, npt.NDArray[np.bool_]] | None = None,
+) -> list[Piece]:
+    """The terms of three and more members in canonical order, grouped by stand-in.
+
+    Parameters
+    ----------
+    H : Hamiltonian
+    choice : mapping
+        Name of the family for each (locality, sign).
+    gap : Fraction
+        Auxiliary gap asked for; terms too light for the reach of their family get its widened form.
+    keep : str
+    taken : mapping from locality to bool array, optional
+        Terms that something else serves.
+    """
+    pieces: list[Piece] = []
+    for block in H.blocks:
+        free = np.ones(len(block), bool) if taken is None else ~taken.get(block.locality, np.zeros(len(block), bool))
+        for sign in (-1, 1):
+            chosen = (block.weights * sign > 0) & free
+            if block.locality < 3 or not chosen.any():
+                continue
+            name = choice[block.locality, sign]
+            members, sizes = block.members[chosen], np.abs(block.weights[chosen])
+            own = stand_in(name, block.locality, sign, keep)
+            least = Fraction(0) if own.reach is None else gap / (own.reach * H.resolution)
+            # Whole sizes below a rational bound are those below its ceiling, which is an integer comparison.
+            light = np.asarray(sizes < -(-least.numerator // least.denominator), dtype=bool)
+            if not light.all():
+                pieces.append(TermPiece(own, members[~light], sizes[~light], name))
+            if light.any():
+                wide = wide_stand_in(name, block.locality, sign, keep)
+                pieces.append(TermPiece(wide, members[light], sizes[light], f"{name}, widened"))
+    return pieces
+
+
+def short_parts(H: Hamiltonian, factor: int) -> list[Part]:
+    """The fields and couplers of the model, in units of its resolution over `factor`."""
+    return [(b.members.astype(np.int64), times(b.weights, factor)) for b in H.blocks if b.locality < 3]
+
+
+def priced(H: Hamiltonian, pieces: Sequence[Piece], gap: Fraction) -> Price:
+    """The exact price of the assembled model, without writing it down."""
+    resolution = shared_resolution(pieces, H.resolution, gap)
+    sketches = [piece.sketch(H.resolution, gap, resolution) for piece in pieces]
+    parts = short_parts(H, int(H.resolution / resolution))
+    for sketch in sketches:
+        parts += sketch.parts
+    _, blocks = canonical_blocks(parts, H.domain)
+    bounds = [value for sketch in sketches for value in (sketch.smallest, sketch.largest) if value is not None]
+    if any(len(block) for block in blocks):
+        bounds += extremes(block.weights for block in blocks)
+    couplers = sum(sketch.couplers for sketch in sketches) + sum(len(b) for b in blocks if b.locality == 2)
+    ratio = Fraction(max(bounds), min(bounds)) if bounds else Fraction(1)
+    return Price(sum(piece.auxiliaries for piece in pieces), couplers, ratio)
+
+
+def fresh_labels(labels: Sequence[str], count: int) -> tuple[str, ...]:
+    """The first `count` of y0, y1, ... that are not among `labels`.
+
+    Examples
+    --------
+    >>> fresh_labels(["a", "y1"], 3)
+    ('y0', 'y2', 'y3')
+    """
+    taken = {label for label in labels if label[:1] == "y"}
+    found = [label for number in range(count) if (label := f"y{number}") not in taken]
+    number = count
+    while len(found) < count:
+        if (label := f"y{number}") not in taken:
+            found.append(label)
+        number += 1
+    return tuple(found)
+
+
+def assembled(H: Hamiltonian, pieces: Sequence[Piece], gap: Fraction) -> tuple[Hamiltonian, tuple[str, ...]]:
+    """The model with its short terms kept and every piece replaced by its gadgets; and the auxiliaries."""
+    resolution = shared_resolution(pieces, H.resolution, gap)
+    parts = short_parts(H, int(H.resolution / resolution))
+    first, constant = H.size, 0
+    for piece in pieces:
+        more, offset = piece.attach(first, H.resolution, gap, resolution)
+        parts += more
+        constant += offset
+        first += piece.auxiliaries
+    auxiliaries = fresh_labels(H.labels, first - H.size)
+    model = Hamiltonian.from_arrays(
+        [members for members, _ in parts],
+        [weights for _, weights in parts],
+        H.domain,
+        labels=(*H.labels, *auxiliaries),
+        resolution=resolution,
+        constant=H.constant + constant * resolution,
+        convention=H.convention,
+    )
+    return model, auxiliaries
+
+
+def trail_rows(pieces: Sequence[Piece]) -> list[dict[str, Any]]:
+    """Rows for the trail: which method served how many terms of which locality, and the auxiliaries it took."""
+    rows: dict[tuple[int, str], dict[str, Any]] = {}
+    for piece in pieces:
+        for row in piece.rows():
+            key = row["locality"], row["method"]
+            if key in rows:
+                rows[key]["terms"] += row["terms"]
+                rows[key]["auxiliaries"] += row["auxiliaries"]
+            else:
+                rows[key] = row
+    return list(rows.values())
+
+
+def work_of(H: Hamiltonian) -> int:
+    """Number of members over all terms of three and more: what pricing one choice roughly takes in steps."""
+    return sum(len(block) * block.locality for block in H.blocks if block.locality > 2)

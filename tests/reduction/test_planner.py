@@ -1,0 +1,108 @@
+"""The planner takes the cheapest way, prices exactly, and says what it beat."""
+
+from __future__ import annotations
+
+import random
+from itertools import combinations
+
+import numpy as np
+import pytest
+
+from hubokit.errors import InputError
+from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.reduction.gadgets.table import FAMILIES
+from hubokit.reduction.planner import GROUPS, MIX_LIMIT, PAIR_COVER, TERM_BY_TERM, methods, plan_table
+from hubokit.reduction.reduce import PREFERENCES, reduce
+
+
+def random_model(seed: int) -> Hamiltonian:
+    """Ten variables, up to twenty terms of up to seven members."""
+    chance = random.Random(seed)
+    labels = [f"v{i}" for i in range(10)]
+    terms = {}
+    for _ in range(chance.randint(3, 20)):
+        members = chance.sample(labels, chance.choice([1, 2, 3, 3, 3, 4, 4, 5, 7]))
+        terms[tuple(sorted(members))] = chance.choice([-9, -4, -1, 1, 2, 6, 11])
+    return Hamiltonian(terms, chance.choice(["spin", "boolean"]), labels=labels)
+
+
+def pulses(size: int) -> Hamiltonian:
+    """Low-autocorrelation binary sequences."""
+    terms: dict[tuple[str, ...], int] = {}
+    for k in range(1, size):
+        for i, j in combinations(range(size - k), 2):
+            odd = {i} ^ {i + k} ^ {j} ^ {j + k}
+            key = tuple(f"s{v}" for v in sorted(odd))
+            terms[key] = terms.get(key, 0) + 2
+    return Hamiltonian(terms, "spin")
+
+
+STRUCTURED = {
+    "all triples": Hamiltonian(dict.fromkeys(combinations("abcdefg", 3), 1), "boolean"),
+    "plaquettes": Hamiltonian(
+        {(f"{r}{c}", f"{r}{c + 1}", f"{r + 1}{c}", f"{r + 1}{c + 1}"): -1 for r in range(4) for c in range(4)}, "spin"
+    ),
+    "pulses": pulses(8),
+}
+FIGURES = {"auxiliaries": "auxiliaries", "range": "coefficient_ratio", "couplers": "couplers"}
+
+
+@pytest.mark.parametrize("prefer", PREFERENCES)
+@pytest.mark.parametrize("case", [*range(25), *STRUCTURED])
+def test_the_choice_never_costs_more_than_the_best_single_family(case: int | str, prefer: str) -> None:
+    H = random_model(case) if isinstance(case, int) else STRUCTURED[case]
+    chosen = getattr(reduce(H, prefer=prefer).costs, FIGURES[prefer])
+    for name in (*(one.name for one in FAMILIES), TERM_BY_TERM, GROUPS):
+        assert chosen <= getattr(reduce(H, method=name, prefer=prefer).costs, FIGURES[prefer])
+
+
+@pytest.mark.parametrize("prefer", PREFERENCES)
+@pytest.mark.parametrize("keep", ["one-to-one", "energies"])
+@pytest.mark.parametrize("seed", range(25))
+def test_the_price_in_the_trail_is_what_the_model_costs(seed: int, keep: str, prefer: str) -> None:
+    R = reduce(random_model(seed), keep=keep, prefer=prefer)
+    row = plan_table(R.trail)[0]
+    assert row["status"] == "chosen"
+    assert row["auxiliaries"] == R.costs.auxiliaries
+    assert row["couplers"] == R.costs.couplers
+    assert row["coefficient ratio"] == str(R.costs.coefficient_ratio)
+
+
+def test_the_table_names_the_runner_up_and_its_costs() -> None:
+    rows = plan_table(reduce(STRUCTURED["all triples"]).trail)
+    assert [row["status"] for row in rows[:2]] == ["chosen", "runner-up"]
+    assert rows[0]["auxiliaries"] <= rows[1]["auxiliaries"]
+
+
+def test_a_preference_changes_what_is_chosen() -> None:
+    H = Hamiltonian(dict.fromkeys(combinations("abcde", 5), 1), "spin")
+    few, small = reduce(H), reduce(H, prefer="range")
+    assert few.costs.auxiliaries < small.costs.auxiliaries
+    assert few.costs.coefficient_ratio > small.costs.coefficient_ratio
+
+
+def test_positive_cubic_terms_get_flipped_literals_when_couplers_are_dear() -> None:
+    R = reduce(Hamiltonian({tuple("abc"): 1, tuple("def"): 1}, "boolean"), prefer="couplers")
+    assert {row["method"] for row in R.trail.steps[-1].parameters["methods"]} == {"flipped-literals"}
+    assert R.costs.couplers == 8
+
+
+def test_what_a_work_limit_kept_from_being_priced_is_named() -> None:
+    chance = np.random.default_rng(7)
+    parts = [
+        np.sort(chance.permuted(np.tile(np.arange(40), (20000, 1)), axis=1)[:, :k], axis=1) for k in (5, 6, 7, 8)
+    ]
+    weights = [chance.choice([-1, 1], len(part)) for part in parts]
+    H = Hamiltonian.from_arrays(parts, weights, "boolean")
+    rows = plan_table(reduce(H, prefer="range", method=TERM_BY_TERM).trail)
+    note = next(row for row in rows if row["status"] == "not priced")
+    assert note["plan"] == "every mix of families"
+    assert f"{MIX_LIMIT:,}" in note["reason"]
+
+
+def test_every_method_name_is_taken_and_others_are_refused() -> None:
+    H = Hamiltonian({tuple("abc"): 1, tuple("bcd"): -1, tuple("cd"): 2}, "boolean")
+    for name in methods():
+        assert reduce(H, method=name).model.locality <= 2
+    with pytest.raises(InputError, match=PAIR_COVER):
+        reduce(H, method="pairs")
