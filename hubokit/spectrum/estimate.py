@@ -56,8 +56,9 @@ def refuse_long(task: Task, left: int, workers: int, time: float | None) -> None
     if time is None or states < TRIAL_STATES:
         return
     workers = max(1, min(workers, left))
-    seconds = states / FASTEST / workers
+    seconds, about = states / FASTEST / workers, "at least"
     if seconds <= time:
+        about = "about"
         task.trial(0.0)  # compiles, or loads what was compiled
         begun = clock.perf_counter()
         rate = task.trial(TRIAL_SECONDS)
@@ -66,7 +67,7 @@ def refuse_long(task: Task, left: int, workers: int, time: float | None) -> None
     if seconds > time:
         bits = layout.low + layout.walked + layout.fixed
         raise LimitError(
-            f"visiting 2**{bits} states would take about {duration(seconds)} on {workers} "
+            f"visiting 2**{bits} states would take {about} {duration(seconds)} on {workers} "
             f"{'processor' if workers == 1 else 'processors'}, and {duration(time)} is allowed: raise the time "
             "(time=, --time), use elimination if the model is sparse, or look at a neighbourhood of known states"
         )

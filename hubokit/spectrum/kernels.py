@@ -270,9 +270,8 @@ def walk_counts(  # type: ignore[no-untyped-def]
         if cursor[2] >= 0:
             shift = number[0] - lowest
             # two histograms by turns: a count need not wait for the one before it
-            for i in range(0, e.shape[0], 2):
-                counts[0, (shift + e[i]) >> half] += 1
-                counts[1, (shift + e[i + 1]) >> half] += 1
+            for i in range(e.shape[0]):
+                counts[i & 1, (shift + e[i]) >> half] += 1
         cursor[0], cursor[2] = t, -1
         if t + 1 >= end:
             return 0
