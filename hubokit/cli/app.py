@@ -1,7 +1,8 @@
 """The program: one command a file, every error one line on standard error, the exit code decided here.
 
 Exit codes: 0 done and, for a check, every asked claim proved; 1 an asked claim refuted; 2 bad input, usage, or work
-refused before its start; 3 not decided; 70 a defect of hubokit itself; 130 interrupted.
+refused before its start; 3 not decided; 70 a defect of hubokit itself; 130 interrupted;
+141 the reader of the output has gone.
 """
 
 from __future__ import annotations
@@ -14,12 +15,14 @@ from typing import Annotated
 import typer
 
 from hubokit.cli import audit, check, convert, prepare, project, reduce, show, spectrum
+from hubokit.cli.summary import made_by
 from hubokit.cli.text import printable
 from hubokit.errors import HubokitError
 
 BAD_INPUT = 2
 DEFECT = 70
 INTERRUPTED = 130
+PIPE_CLOSED = 141
 
 app = typer.Typer(
     name="hubokit",
@@ -45,9 +48,7 @@ for name, command in (
 
 def _version(asked: bool) -> None:
     if asked:
-        from importlib.metadata import version
-
-        typer.echo(f"hubokit {version('hubokit')}")
+        typer.echo(made_by())
         raise typer.Exit()
 
 
@@ -78,14 +79,17 @@ def run(arguments: Sequence[str]) -> int:
     try:
         code = app(args=list(arguments), prog_name="hubokit", standalone_mode=False)
         sys.stdout.flush()
+        if code == INTERRUPTED:
+            raise KeyboardInterrupt
         return code if isinstance(code, int) else 0
     except HubokitError as error:
         return _complain(str(error))
     except (KeyboardInterrupt, typer.Abort):
         return _complain("interrupted; nothing was left half-written", INTERRUPTED)
-    except BrokenPipeError:
+    except (BrokenPipeError, SystemExit):
+        # The reader of the pipe has gone (typer leaves by SystemExit then); what is unwritten must not complain.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        return 0
+        return PIPE_CLOSED
     except OSError as error:
         parts = (os.fsdecode(error.filename) if error.filename else "", error.strerror or str(error))
         return _complain(": ".join(part for part in parts if part))

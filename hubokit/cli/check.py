@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 from typing import Annotated
 
@@ -14,6 +15,7 @@ from hubokit.cli.states_file import read_states
 from hubokit.exchange.documents import document_to_json, plain_json
 from hubokit.exchange.files import refuse_existing
 from hubokit.exchange.formats import write
+from hubokit.preparation.figures import intent_remarks
 from hubokit.validation.check import check
 
 
@@ -41,7 +43,7 @@ def command(
     """Check a reduced model against its source; exit code 0 proved, 1 refuted, 3 not decided."""
     if out is not None:
         refuse_existing(out, force=force)
-    reduction = load_reduction(reduced, Elsewhere(source, auxiliaries, origin, scale, shift))
+    reduction, document = load_reduction(reduced, Elsewhere(source, auxiliaries, origin, scale, shift))
     centres = None if around is None else read_states(around, reduction.source.labels, reduction.source.domain)
     with bar("checking") as progress:
         verdict = check(
@@ -53,6 +55,9 @@ def command(
             progress=progress,
             time=time,
         )
+    least = verdict.figures.get("source-ground-energy")
+    remarks = intent_remarks(document.intent, reduction.source, None if least is None else least.value)
+    verdict = replace(verdict, notes=(*verdict.notes, *remarks))
     if out is not None:
         write(verdict, out, force=force)
     if as_json:

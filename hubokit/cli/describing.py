@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING
 
 from hubokit.cli.summary import method_rows, terms_by_locality
-from hubokit.cli.text import count, fields, number, table
+from hubokit.cli.text import count, fields, folded, number, printable, table
 from hubokit.validation.screen import describe, state_text
 
 if TYPE_CHECKING:
@@ -20,14 +20,18 @@ if TYPE_CHECKING:
     from hubokit.validation.verdict import Claim, StateList, Verdict
 
 Pairs = list[tuple[str, str]]
-WORDS = {1: "one", 2: "two", 3: "three", 4: "four", 5: "five", 6: "six", 7: "seven", 8: "eight"}
+KINDS = {1: "field", 2: "coupler", 3: "three-body term", 4: "four-body term", 5: "five-body term", 6: "six-body term"}
 SHOWN = 3
+SHOWN_ROWS = 20
 
 
 def model_fields(model: Hamiltonian, auxiliaries: int = 0) -> Pairs:
     """What a model is, as named values."""
     added = f", {count(auxiliaries, 'auxiliary', 'auxiliaries')} among them" if auxiliaries else ""
-    sizes = [f"{amount} of {WORDS.get(size, str(size))}" for size, amount in sorted(terms_by_locality(model).items())]
+    sizes = [
+        count(amount, KINDS.get(size, f"{size}-body term"))
+        for size, amount in sorted(terms_by_locality(model).items())
+    ]
     return [
         ("variables", f"{model.size} {model.domain}{added}"),
         ("locality", str(model.locality)),
@@ -77,20 +81,43 @@ def trail_text(trail: Trail) -> str:
     """The steps from the source to the model at hand, each with its parameters."""
     parts = []
     for step in trail.steps:
-        said = [("scale", number(step.scale)), ("shift", number(step.shift))]
-        said += [(str(name), value_text(value)) for name, value in step.parameters.items()]
-        parts.append("\n".join([f"  {step.name}", fields([(f"  {name}", value) for name, value in said], 24)]))
+        said = {"scale": number(step.scale), "shift": number(step.shift), **step.parameters}
+        parts.append("\n".join([f"  {printable(step.name)}", *tree(said, 4)]))
     return "\n".join(parts)
 
 
-def value_text(value: object) -> str:
-    """A parameter in one line: mappings as ``name: value``, lists with commas."""
+def tree(value: object, indent: int) -> list[str]:
+    """Nested values as indented lines: one a line, rows of a list with a dash.
+
+    Examples
+    --------
+    >>> print("\\n".join(tree({"keep": "energies", "plans": [{"name": "a", "couplers": 3}], "none": []}, 2)))
+      keep: energies
+      plans:
+        - name a, couplers 3
+    """
+    room = " " * indent
     if isinstance(value, Mapping):
-        return "; ".join(f"{name}: {value_text(part)}" for name, part in value.items())
-    if isinstance(value, Sequence) and not isinstance(value, str):
-        shown = ", ".join(value_text(part) for part in value[:12])
-        return shown if len(value) <= 12 else f"{shown} and {len(value) - 12} more"
-    return str(value)
+        lines = []
+        for name, part in value.items():
+            if isinstance(part, (Mapping, list, tuple)):
+                inner = tree(part, indent + 2)
+                lines += [f"{room}{printable(str(name))}:", *inner] if inner else []
+            else:
+                lines += folded(f"{name}: {part}", indent)
+        return lines
+    rows = value if isinstance(value, (list, tuple)) else [value]
+    lines = [line for row in rows[:SHOWN_ROWS] for line in folded(f"- {row_text(row)}", indent)]
+    return lines + ([f"{room}- and {len(rows) - SHOWN_ROWS} more"] if len(rows) > SHOWN_ROWS else [])
+
+
+def row_text(row: object) -> str:
+    """A value in one line: mappings as ``name value``, lists with blanks."""
+    if isinstance(row, Mapping):
+        return ", ".join(f"{name} {row_text(part)}" for name, part in row.items())
+    if isinstance(row, (list, tuple)):
+        return " ".join(row_text(part) for part in row)
+    return str(row)
 
 
 def level_table(levels: Sequence[Level]) -> str:

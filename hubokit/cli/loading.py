@@ -55,8 +55,8 @@ def load_model(path: Path) -> Hamiltonian:
         raise error.located(file=str(path)) from None
 
 
-def load_reduction(path: Path, elsewhere: Elsewhere) -> Reduction:
-    """The reduction that a file and the options describe.
+def load_reduction(path: Path, elsewhere: Elsewhere) -> tuple[Reduction, Document]:
+    """The reduction that a file and the options describe, and the document it came in.
 
     Raises
     ------
@@ -66,7 +66,7 @@ def load_reduction(path: Path, elsewhere: Elsewhere) -> Reduction:
     named = None if elsewhere.source is None else load_model(elsewhere.source)
     document = load_document(path, None if elsewhere.given else named)
     if isinstance(document.thing, Reduction) and not elsewhere.given:
-        return document.thing
+        return document.thing, document
     try:
         source = document.thing.source if named is None and isinstance(document.thing, Reduction) else named
         if source is None:
@@ -75,7 +75,7 @@ def load_reduction(path: Path, elsewhere: Elsewhere) -> Reduction:
         model = document.model
         origin = None if elsewhere.origin is None else read_origin(elsewhere.origin, source, model)
         added = options.names(elsewhere.auxiliaries) or document.auxiliaries or _unreached(source, model, origin)
-        return Reduction(
+        made = Reduction(
             source,
             model,
             added,
@@ -83,6 +83,7 @@ def load_reduction(path: Path, elsewhere: Elsewhere) -> Reduction:
             scale=options.fraction(elsewhere.scale, "--scale"),
             shift=options.fraction(elsewhere.shift, "--shift"),
         )
+        return made, document
     except HubokitError as error:
         raise error.located(file=str(path)) from None
 

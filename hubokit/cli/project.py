@@ -39,7 +39,7 @@ def command(
     """Bring states of a reduced model back to the source, with both energies and the state of the auxiliaries."""
     if out is not None:
         refuse_existing(out, force=force)
-    reduction = load_reduction(reduced, Elsewhere(source, auxiliaries, origin))
+    reduction, _ = load_reduction(reduced, Elsewhere(source, auxiliaries, origin))
     given = read_states(states, reduction.model.labels, reduction.model.domain)
     answers = reduction.project(given)
     before = exact(reduction.source, reduction.source.integer_energies(answers))

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 from typing import Any
 
 from hubokit.cli import describing, options, summary
@@ -11,8 +10,6 @@ from hubokit.cli.text import fields, listing, section
 from hubokit.exchange.documents import Document
 from hubokit.reduction.result import Reduction
 from hubokit.validation.verdict import Verdict
-
-LONGEST = 400
 
 
 def command(model: options.Model, as_json: options.Json = False) -> None:
@@ -33,23 +30,14 @@ def command(model: options.Model, as_json: options.Json = False) -> None:
     about += [("names", listing(hamiltonian.labels)), *describing.coefficient_fields(hamiltonian)]
     print(section(f"MODEL  {model}", fields(about)))
     if document.intent:
-        print(section("INTENT", _remarks(document.intent)))
+        print(section("INTENT", "\n".join(describing.tree(document.intent, 2))))
     if document.notes:
-        print(section("NOTES", _remarks(document.notes)))
+        print(section("NOTES", "\n".join(describing.tree(document.notes, 2))))
     if isinstance(thing, Reduction):
         print(section("SOURCE", fields(describing.model_fields(thing.source))))
         print(section("REDUCTION", describing.reduction_text(thing)))
     elif document.trail:
         print(section("TRAIL", fields([("steps", str(len(document.trail) - 1)), ("source", "not in the file")])))
-
-
-def _remarks(remarks: Any) -> str:
-    """Named remarks, long ones cut."""
-    shown = []
-    for name, value in dict(remarks).items():
-        text = value if isinstance(value, str) else json.dumps(value, ensure_ascii=False)
-        shown.append((str(name), text if len(text) <= LONGEST else text[: LONGEST - 4] + " ..."))
-    return fields(shown)
 
 
 def _parts(document: Document, file: str) -> dict[str, Any]:

@@ -44,7 +44,7 @@ def command(
             parts["levels"] = [summary.level_part(level) for level in lowest]
         summary.emit(summary.document("spectrum", parts))
         return
-    print(section(str(model), fields(describing.model_fields(hamiltonian))))
+    print(section(f"MODEL  {model}", fields(describing.model_fields(hamiltonian))))
     if density:
         print(section("ALL LEVELS", describing.density_table(found)))
         return

@@ -75,6 +75,14 @@ def fields(pairs: Iterable[tuple[str, str]], column: int = 16) -> str:
     return "\n".join(lines)
 
 
+def folded(text: str, indent: int) -> list[str]:
+    """A text as lines of at most 80 characters, indented, the later ones two more."""
+    return textwrap.wrap(
+        printable(text), WIDTH, initial_indent=" " * indent, subsequent_indent=" " * (indent + 2),
+        break_long_words=False, break_on_hyphens=False,
+    )  # fmt: skip
+
+
 def table(header: Sequence[str], rows: Iterable[Sequence[str]], align: str = "") -> str:
     """Columns under a header; the last column is folded so that no line passes 80 characters.
 

@@ -1,0 +1,140 @@
+"""What stands in the folder: the documents, the exports, and the README.txt that explains them."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from pathlib import Path
+from textwrap import fill
+from typing import TYPE_CHECKING
+
+from hubokit.errors import HubokitError
+from hubokit.model.numbers import format_fraction
+
+if TYPE_CHECKING:
+    from hubokit.reduction.result import Reduction
+    from hubokit.validation.verdict import Verdict
+
+DOCUMENTS = {
+    "source.json": "the design as it was read",
+    "reduced.json": "the reduced model, its auxiliaries, and the trail back to the source",
+    "verdict.json": "claim by claim what is proved, with the evidence that an audit re-checks",
+    "README.txt": "what each file is, and how to map answers back",
+}
+
+NOT_EXPORTED = ("json", "cnf")
+"""The documents stand in the folder anyway; in CNF a weight of w would become w equal clauses."""
+
+
+def export(reduction: Reduction, place: Path) -> tuple[dict[str, str], dict[str, str]]:
+    """Write source and reduced model in every format that takes them.
+
+    Returns
+    -------
+    files, left_out : dict of str to str
+        File name to what it is; file name to the reason why it could not be written.
+    """
+    from hubokit.exchange.formats import FORMATS, write
+
+    files: dict[str, str] = {}
+    left_out: dict[str, str] = {}
+    models = {"source": reduction.source, "reduced": reduction.model}
+    for entry in FORMATS.values():
+        if entry.write is None or entry.name in NOT_EXPORTED:
+            continue
+        for stem, model in models.items():
+            if entry.locality is not None and model.locality > entry.locality:
+                continue
+            name = stem + entry.suffixes[0]
+            what = "the design" if stem == "source" else "the reduced model"
+            other = entry.domain not in ("any", model.domain)
+            try:
+                write(model, place / name)
+                files[name] = f"{what} in {entry.name.upper()} format" + (
+                    f", in {entry.domain} variables" if other else ""
+                )
+            except HubokitError as error:
+                left_out[name] = error.message
+    for path in sorted(place.iterdir()):
+        if path.name not in files and path.name not in DOCUMENTS:
+            files[path.name] = "goes with the file of the same beginning"
+    return files, left_out
+
+
+def readme_text(reduction: Reduction, verdict: Verdict, files: Mapping[str, str], left_out: Mapping[str, str]) -> str:
+    """README.txt of the folder: what each file is, what was shown, and the way back for answers.
+
+    Returns
+    -------
+    str
+        Plain ASCII, no line longer than 80 characters.
+    """
+    model, source = reduction.model, reduction.source
+    first, second = ("1", "-1") if model.domain == "spin" else ("0", "1")
+    names = [*source.labels[:2], *reduction.auxiliaries[:1]]
+    parts = [
+        "FILES",
+        *(_folded(f"{name:<20} {what}", 23) for name, what in files.items()),
+        *(_folded(f"(not written: {name}: {reason})", 4) for name, reason in left_out.items()),
+        "",
+        "THE MODELS",
+        _folded(f"source: {source.size} {source.domain} variables, locality {source.locality}, {len(source)} terms"),
+        _folded(
+            f"reduced: {model.size} {model.domain} variables, {len(reduction.auxiliaries)} of them auxiliaries, "
+            f"locality {model.locality}, {len(model)} terms"
+        ),
+        _folded(f"spins and booleans map by s = {'1 - 2x' if model.convention == '1-2x' else '2x - 1'}"),
+        _folded(
+            f"energies: the source has E, and the reduced model, at its best auxiliaries, has {_map_of(verdict)}"
+        ),
+        "",
+        "WHAT WAS SHOWN",
+        *(_folded(f"{name:<20} {claim.status}, {claim.method}", 23) for name, claim in verdict.claims.items()),
+        "",
+        "FROM A SOLVER'S ANSWER BACK TO THE DESIGN",
+        _folded("1. Give the reduced model, in whichever file your solver reads, to the solver."),
+        _folded(
+            "2. Write its answers into a table, STATES.csv: the first line names every variable of reduced.json, "
+            f"auxiliaries included, in any order; then one answer a line with the values {first} and {second}. "
+            "Formats that number their variables name them in their comments.",
+            5,
+        ),
+        _ascii(f"       {','.join(names)},..."),
+        f"       {first},{second},...",
+        _folded("3. Run"),
+        "       hubokit project reduced.json STATES.csv",
+        _folded(
+            "   It prints every answer in the variables of the source, with its energy in both models, and whether "
+            "the auxiliaries are at their best.",
+            5,
+        ),
+        "",
+        "TO CHECK AGAIN",
+        "       hubokit check reduced.json --source source.json",
+        "       hubokit audit verdict.json",
+        _folded(
+            "The first gathers the evidence anew. The second re-checks the evidence in verdict.json by other code."
+        ),
+        "",
+        _folded(
+            "The verdict concerns the mathematical model, not the hardware that runs it and not the plant that it "
+            "describes: the responsible engineer and the rules of the place decide on those.",
+            0,
+            0,
+        ),
+    ]
+    return "\n".join(parts) + "\n"
+
+
+def _map_of(verdict: Verdict) -> str:
+    """How the energies of the reduced model hang on those of the source."""
+    scale = "E" if verdict.scale == 1 else f"{format_fraction(verdict.scale)} * E"
+    return scale if verdict.shift == 0 else f"{scale} + {format_fraction(verdict.shift)}"
+
+
+def _folded(text: str, rest: int = 2, first: int = 2) -> str:
+    """Plain ASCII, folded at 80 characters, the first line and the others indented."""
+    return fill(_ascii(text), 80, initial_indent=" " * first, subsequent_indent=" " * rest, break_on_hyphens=False)
+
+
+def _ascii(text: str) -> str:
+    return text.encode("ascii", "backslashreplace").decode("ascii")
