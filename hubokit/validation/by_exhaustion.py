@@ -28,7 +28,6 @@ def by_exhaustion(case: Case, options: Options, found: Findings) -> None:
     found.evidence.append(
         {
             "kind": "exhaustion",
-            "auxiliaries": list(case.auxiliaries),
             "originals": len(case.originals),
             "account": tables.account,
         }

@@ -47,11 +47,15 @@ def by_elimination(case: Case, options: Options, found: Findings) -> None:
 
 
 def by_enumeration(case: Case, options: Options, found: Findings, refusal: str) -> None:
-    """Ground levels by visiting all states of E and of P (or F) with the engine."""
-    from hubokit.spectrum.exhaustive import ground_states
+    """Ground levels by visiting all states of E and of P (or F), or by whatever is cheaper where all is allowed."""
+    from hubokit.spectrum.search import ground_states
+
+    way = "auto" if options.evidence == "auto" else "exhaustion"
 
     def ground(H: Hamiltonian) -> Level:
-        return ground_states(H, COMPARED, executor=options.executor, progress=options.progress, time=options.time)
+        return ground_states(
+            H, COMPARED, way, executor=options.executor, progress=options.progress, time=options.time
+        )
 
     for name in options.asked:
         if name in ("energies", "one-to-one"):
@@ -74,9 +78,7 @@ def _by_levels(case: Case, options: Options, found: Findings, ground: Ground, me
         for name in options.asked:
             found.leave_open(name, f"{method}: {refusal}")
         return
-    found.evidence.append(
-        {"kind": method, "auxiliaries": list(case.auxiliaries), "account": f"ground levels by {source.method}"}
-    )
+    found.evidence.append({"kind": method, "account": f"ground levels by {source.method}"})
 
 
 class Levels:
@@ -95,6 +97,8 @@ class Levels:
         P, E, figures = self.reduced, self.source, self.found.figures
         figures["projection-degeneracy"] = Figure(Fraction(P.degeneracy))
         figures["projection-gap"] = gap_figure(P.gap)
+        if P.complete:
+            self.found.minimisers = P.states
         self._ground_energy(None)
         if not self.found.settled("ground-states"):
             both = self.ground(polynomial + self.case.energy)
@@ -119,6 +123,7 @@ class Levels:
         bits, counts = np.unique(to_bits(F.states[:, columns], model.domain), axis=0, return_counts=True)
         minimisers = from_bits(bits, model.domain)
         self.found.figures["projection-degeneracy"] = Figure(Fraction(len(minimisers)))
+        self.found.minimisers = minimisers
         known = {row.tobytes() for row in self.case.source_states(minimisers)}
         meet = sum(row.tobytes() in known for row in E.states)
         self._ground_states(minimisers, len(minimisers), meet, None)

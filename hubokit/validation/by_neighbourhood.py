@@ -53,7 +53,7 @@ def by_neighbourhood(case: Case, options: Options, found: Findings) -> None:
         if found.scale_from == "found":
             found.note("scale and shift were found on the visited states alone")
     _judge(case, found, account, (originals, best), (E, P), counts, relation)
-    found.evidence.append({"kind": METHOD, "auxiliaries": list(case.auxiliaries), "account": account})
+    found.evidence.append({"kind": METHOD, "account": account})
 
 
 def _leave(options: Options, found: Findings, reason: str) -> None:

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from typing import Any
-
 import numpy as np
 
 from hubokit.model.hamiltonian import Hamiltonian
@@ -35,30 +33,13 @@ def by_projection(case: Case, options: Options, found: Findings) -> None:
     polynomial = polynomial.with_labels(case.originals)
     relation = polynomial_relation(polynomial, case.energy)
     found.take_scale(judge_scale(case.declared, relation))
-    found.evidence.append(_evidence(case))
+    found.evidence.append({"kind": METHOD, "certificate": Deferred(projection.certificate)})
     differs = polynomial - (found.scale * case.energy + found.shift)
     if differs == 0:
         _equal(case, found, polynomial)
     else:
         _different(case, found, differs, relation)
     _multiplicity(case, found)
-
-
-def _evidence(case: Case) -> dict[str, Any]:
-    origin = case.reduction.origin
-    written = None if origin is None else {label: _image(image) for label, image in origin.items()}
-    return {
-        "kind": METHOD,
-        "auxiliaries": list(case.auxiliaries),
-        "origin": written,
-        "certificate": Deferred(case.projection.certificate),
-    }
-
-
-def _image(image: Any) -> Any:
-    if isinstance(image, tuple):
-        return ["not", image[1]]
-    return image if isinstance(image, str) else {"value": str(image)}
 
 
 def _equal(case: Case, found: Findings, polynomial: Hamiltonian) -> None:

@@ -176,10 +176,22 @@ class Case:
         return Witness(state, {}, self.source.energy(state), None, "", 0)
 
     def projected_witness(self, original_state: States) -> Witness:
-        """A witness with the best auxiliaries that the projection finds for this one state."""
+        """A witness with the best auxiliaries that the projection finds for this one state.
+
+        A model that is not quadratic has no projection: there the auxiliaries' own Hamiltonian is searched.
+        """
+        if self.model.locality > 2:
+            return self._searched_witness(original_state)
         minimum, best, counts = self.projection.minimum(original_state[None, :])
         value = self.model.constant + int(minimum[0]) * self.model.resolution
         return self.witness(original_state, best[0], "projection", int(counts[0]), value)
+
+    def _searched_witness(self, original_state: States) -> Witness:
+        from hubokit.spectrum.search import ground_states
+
+        fixed = {label: int(value) for label, value in zip(self.originals, original_state, strict=True)}
+        level = ground_states(self.model.substituted(fixed).with_labels(self.auxiliaries), limit=1)
+        return self.witness(original_state, level.states[0], level.method, level.degeneracy, level.energy)
 
 
 def rows(labels: Sequence[str], states: States) -> tuple[dict[str, int], ...]:

@@ -74,6 +74,7 @@ def check(
     kinds = kinds_for(evidence)
     options = Options(
         asked=asked_claims(claims, case.keep),
+        evidence=evidence,
         radius=radius,
         around=around,
         below=None if below is None else as_fraction(below, "below"),
@@ -123,9 +124,22 @@ def _verdict(case: Case, options: Options, found: Findings) -> Verdict:
         inversions=found.inversions,
         difference=found.difference,
         notes=tuple(found.notes),
-        evidence=tuple(found.evidence),
+        evidence=(_correspondence(case), *found.evidence),
         version=_version(),
     )
+
+
+def _correspondence(case: Case) -> dict[str, Any]:
+    """Which variables are auxiliaries and what each source variable became: what any second check begins with."""
+    origin = case.reduction.origin
+    written = None if origin is None else {label: _image(image) for label, image in origin.items()}
+    return {"kind": "correspondence", "auxiliaries": list(case.auxiliaries), "origin": written}
+
+
+def _image(image: Any) -> str | list[str] | int:
+    if isinstance(image, str):
+        return image
+    return ["not", image[1]] if isinstance(image, tuple) else int(image)
 
 
 def _version() -> str:

@@ -24,6 +24,8 @@ class Options:
     Parameters
     ----------
     asked : tuple of str
+    evidence : str
+        "auto", or the one kind asked for.
     radius : int or None
         Of the neighbourhood; None = 2.
     around : states or None
@@ -37,6 +39,7 @@ class Options:
     """
 
     asked: tuple[str, ...]
+    evidence: str = "auto"
     radius: int | None = None
     around: Any = None
     below: Fraction | None = None

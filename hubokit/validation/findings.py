@@ -7,6 +7,7 @@ from fractions import Fraction
 from typing import Any, Literal
 
 from hubokit.errors import HubokitError
+from hubokit.validation.case import States
 from hubokit.validation.claims import CLAIMS, IMPLIES, implied_by
 from hubokit.validation.scaling import Judged
 from hubokit.validation.verdict import Claim, Evenness, Figure, Inversions, StateList, Witness
@@ -37,6 +38,8 @@ class Findings:
         self.inversions: Inversions | None = None
         self.difference: tuple[str, ...] = ()
         self.evenness: tuple[Evenness, ...] = ()
+        #: Original states that minimise P, all of them, where they were listed.
+        self.minimisers: States | None = None
         self.notes: list[str] = []
         self.evidence: list[dict[str, Any]] = []
 

@@ -9,15 +9,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hubokit.model.numbers import format_fraction
-from hubokit.validation.case import Case, States, rows
+from hubokit.validation.case import Case, rows
 from hubokit.validation.findings import Findings
 from hubokit.validation.scaling import column_relation
 from hubokit.validation.source_level import GroundLevel, source_ground
 from hubokit.validation.tables import Tables, comparable, state_rows
 from hubokit.validation.verdict import Figure, StateList, Witness
 
-#: States that a verdict lists by name.
-LISTED = 64
+#: States that a verdict lists by name, and minimisers of P that are kept for the figures.
+LISTED, MINIMISERS = 64, 10_000
 
 
 class Judge:
@@ -154,6 +154,8 @@ class Judge:
         figures["projection-gap"] = gap_figure(
             P.constant + int(above.min()) * P.resolution - least if len(above) else None
         )
+        if self.minimises_P.sum() <= MINIMISERS:
+            self.found.minimisers = state_rows(self.case, np.flatnonzero(self.minimises_P))
         gaps = self.tables.auxiliary_gap
         if gaps is not None:
             unit = self.case.model.resolution
@@ -164,10 +166,6 @@ class Judge:
                 positive = chosen[chosen > 0]
                 value = int(positive.min()) * unit if len(positive) else None
                 figures[name] = Figure(value) if value is not None else Figure(None, note=NO_AUXILIARY_GAP)
-
-    def ground_rows(self) -> States:
-        """Original states, int8 (g, n), that minimise P, in lift order."""
-        return state_rows(self.case, np.flatnonzero(self.minimises_P))
 
     def _listed(self, numbers: NDArray[Any], count: int) -> StateList:
         shown = numbers[:LISTED]

@@ -1,0 +1,469 @@
+"""A second, small checker of verdicts: plain integers and fractions, nothing of hubokit but its errors.
+
+`audit` reads three JSON documents (verdict, source, reduced model) and trusts none of them. It recomputes
+both digests, follows the certificate of a projection (audit_certificate.py), visits all states of a small
+model by the definitions, re-evaluates every witness, and then says of each claim that the verdict calls
+proved or refuted whether it agrees. What it cannot re-check it calls so; that counts as neither accepted nor
+rejected.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import re
+import unicodedata
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from itertools import product
+from typing import Any
+
+from hubokit.errors import InputError
+from hubokit.validation.audit_certificate import Rejected, follow, multiplicity_at
+from hubokit.validation.audit_polynomials import Key, Poly, TooLarge, add, add_product, value_at, values_of
+
+#: States, auxiliaries included, that are visited by brute force, and multiplications that this may take.
+MOST_STATES, MOST_WORK = 2**16, 2**25
+
+CLAIMS = ("quadratic", "ground-energy", "ground-states", "even-multiplicity", "energies", "one-to-one")
+
+
+@dataclass(frozen=True)
+class Item:
+    """One thing looked at: `result` is "accepted", "rejected" or "not re-checked"."""
+
+    name: str
+    result: str
+    detail: str
+
+
+@dataclass(frozen=True)
+class AuditReport:
+    """What the audit came to."""
+
+    items: tuple[Item, ...]
+
+    @property
+    def rejected(self) -> bool:
+        """Whether anything was found wrong."""
+        return any(item.result == "rejected" for item in self.items)
+
+    @property
+    def accepted(self) -> bool:
+        """Whether everything the verdict asserts was re-checked and found right."""
+        return all(item.result == "accepted" for item in self.items)
+
+    @property
+    def exit_code(self) -> int:
+        """0 all accepted, 1 something rejected, 3 something not re-checked."""
+        return 1 if self.rejected else 0 if self.accepted else 3
+
+    def __str__(self) -> str:
+        return "\n".join(f"{item.name:<18} {item.result:<15} {item.detail}".rstrip() for item in self.items)
+
+
+@dataclass(frozen=True)
+class Model:
+    """A model document in plain numbers: terms by sorted positions, as integers in units of the resolution."""
+
+    domain: str
+    convention: str
+    labels: tuple[str, ...]
+    resolution: Fraction
+    constant: Fraction
+    terms: Poly
+
+    def energy(self, state: Mapping[str, int]) -> Fraction:
+        """The energy of a state given by names."""
+        return self.constant + self.resolution * value_at(self.terms, [state[label] for label in self.labels])
+
+
+def audit(verdict: Mapping[str, Any], source: Mapping[str, Any], model: Mapping[str, Any]) -> AuditReport:
+    """Check a verdict again.
+
+    Parameters
+    ----------
+    verdict, source, model : mappings
+        JSON documents as read.
+
+    Returns
+    -------
+    AuditReport
+
+    Raises
+    ------
+    InputError
+        A document lacks a field or holds a wrong type.
+    """
+    try:
+        return _Audit(verdict, read_model(source), read_model(model), model.get("trail") or []).report()
+    except (KeyError, IndexError, TypeError, ValueError, AttributeError, ZeroDivisionError, RecursionError) as fault:
+        if isinstance(fault, InputError):
+            raise
+        raise InputError(f"a document is not of the expected form: {type(fault).__name__} {fault}") from None
+
+
+def rational(text: Any) -> Fraction:
+    """A rational string or integer, of bounded length."""
+    if type(text) is int:
+        return Fraction(text)
+    if not isinstance(text, str) or len(text) > 5000 or not re.fullmatch(r"[+-]?\d+(/\d+)?", text):
+        raise InputError(f"not a rational: {str(text)[:40]!r}")
+    return Fraction(text)
+
+
+def read_model(document: Mapping[str, Any]) -> Model:
+    """A model document in plain numbers."""
+    labels = tuple(unicodedata.normalize("NFC", label) for label in document["variables"])
+    if len(set(labels)) < len(labels) or document["domain"] not in ("spin", "boolean"):
+        raise InputError("variables repeat, or the domain is neither spin nor boolean")
+    terms: Poly = {}
+    for block in document["terms"]:
+        for members, weight in zip(block["members"], block["weights"], strict=True):
+            key = tuple(sorted(members))
+            if len(set(key)) < len(key) or not all(type(i) is int and 0 <= i < len(labels) for i in key):
+                raise InputError(f"a term has the members {members}")
+            add(terms, key, int(rational(weight)))
+    constant, unit = rational(document["constant"]), rational(document["resolution"])
+    return Model(document["domain"], document.get("convention", "1-2x"), labels, unit, constant, terms)
+
+
+def digest(model: Model) -> str:
+    """SHA-256 over the canonical JSON of the function: names sorted, coefficients in lowest terms."""
+    order = sorted(range(len(model.labels)), key=lambda position: model.labels[position])
+    rank = {position: place for place, position in enumerate(order)}
+    sizes: dict[int, list[tuple[Key, int]]] = {}
+    for key, weight in model.terms.items():
+        sizes.setdefault(len(key), []).append((tuple(sorted(rank[i] for i in key)), weight))
+    blocks = [
+        {
+            "coefficients": [str(weight * model.resolution) for _, weight in sorted(block)],
+            "locality": size,
+            "members": [list(key) for key, _ in sorted(block)],
+        }
+        for size, block in sorted(sizes.items())
+    ]
+    whole = {
+        "constant": str(model.constant),
+        "domain": model.domain,
+        "terms": blocks,
+        "variables": [model.labels[position] for position in order],
+    }
+    text = json.dumps(whole, separators=(",", ":"), ensure_ascii=False)
+    return "sha256:" + hashlib.sha256(text.encode()).hexdigest()
+
+
+class _Audit:
+    """One verdict against its two models; `known` collects what is established, claim by claim."""
+
+    def __init__(self, verdict: Mapping[str, Any], source: Model, model: Model, trail: Sequence[Any]) -> None:
+        self.verdict, self.source, self.model, self.trail = verdict, source, model, trail
+        self.items: list[Item] = []
+        self.known: dict[str, bool] = {}
+        self.why: dict[str, str] = {}
+        self.limits: list[str] = []
+        self.scale, self.shift = rational(verdict["scale"]), rational(verdict["shift"])
+        first = next((piece for piece in verdict["evidence"] if piece["kind"] == "correspondence"), None)
+        if first is None:
+            raise InputError("the verdict does not say which variables are auxiliaries", "/evidence")
+        self.origin: Mapping[str, Any] = first["origin"] or {}
+        self.place = {label: position for position, label in enumerate(model.labels)}
+        self.auxiliaries = sorted({self.place[label] for label in first["auxiliaries"]})
+        inside = set(self.auxiliaries)
+        self.originals = [position for position in range(len(model.labels)) if position not in inside]
+        self.link = {label: self._linked(label) for label in source.labels}
+        targets = [column for column, _, _ in self.link.values() if column is not None]
+        if set(targets) != set(self.originals):
+            raise InputError("the originals of the model are not those that the source's variables became")
+        self.represents_all = len(targets) == len(set(targets)) == len(source.labels)
+
+    def report(self) -> AuditReport:
+        """Run every check and judge the claims."""
+        self._digests()
+        self.learn("quadratic", all(len(key) <= 2 for key in self.model.terms), "locality read off the terms")
+        self._declared()
+        self._projection()
+        self._exhaustion()
+        for name in CLAIMS:
+            self._judge(name, self.verdict["claims"][name])
+        return AuditReport(tuple(self.items))
+
+    def note(self, name: str, good: bool, detail: str) -> None:
+        """Add an item."""
+        self.items.append(Item(name, "accepted" if good else "rejected", detail))
+
+    def learn(self, name: str, value: bool, why: str) -> None:
+        """Establish a claim, or its negation."""
+        self.known.setdefault(name, value)
+        self.why.setdefault(name, why)
+
+    def _linked(self, label: str) -> tuple[int | None, Fraction, Fraction]:
+        """A source variable as p + q * (model variable): its column (None: fixed), p and q."""
+        image = self.origin.get(label, label)
+        if not isinstance(image, (str, list)):
+            if image not in values_of(self.source.domain):
+                raise InputError(f"{label!r} is fixed at {image!r}", "/evidence")
+            return None, Fraction(image), Fraction(0)
+        p, q = Fraction(0), Fraction(1)
+        if self.source.domain != self.model.domain:
+            sign = -1 if self.model.convention == "1-2x" else 1
+            p, q = (
+                (Fraction(-sign), Fraction(2 * sign))
+                if self.source.domain == "spin"
+                else (
+                    Fraction(1, 2),
+                    Fraction(sign, 2),
+                )
+            )
+        if isinstance(image, list):
+            p, q, image = (-p, -q, image[1]) if self.source.domain == "spin" else (1 - p, -q, image[1])
+        return self.place[image], p, q
+
+    def _digests(self) -> None:
+        for name, model in (("source", self.source), ("model", self.model)):
+            good = digest(model) == self.verdict[f"{name}_digest"]
+            self.note(f"{name} digest", good, "recomputed" if good else "the document is another function")
+
+    def _declared(self) -> None:
+        """Scale and shift against the trail of the reduced document, where it has one."""
+        if self.scale <= 0:
+            self.note("scale", False, "the scale is not positive")
+        steps = list(self.trail[1:])
+        first = self.trail[0] if self.trail else {}
+        scale, shift = rational(first.get("scale", 1)), rational(first.get("shift", 0))
+        if not steps and "scale" not in first and "shift" not in first:
+            return
+        for step in steps:
+            scale, shift = scale * rational(step["scale"]), shift * rational(step["scale"]) + rational(step["shift"])
+        good = (self.scale, self.shift) == (scale, shift) and self.verdict["scale_from"] == "declared"
+        self.note("scale", good, "as the trail declares" if good else f"the trail declares {scale} and {shift}")
+
+    def _energy(self) -> Poly:
+        """E over the originals of the model, as a polynomial in positions of the model."""
+        E: Poly = {}
+        for key, weight in self.source.terms.items():
+            term: Poly = {(): weight * self.source.resolution}
+            for position in key:
+                column, p, q = self.link[self.source.labels[position]]
+                factor: Poly = {(): p} if p else {}
+                if column is not None:
+                    factor[(column,)] = q
+                grown: Poly = {}
+                add_product(grown, term, factor, self.model.domain)
+                term = grown
+            for one, value in term.items():
+                add(E, one, value)
+        add(E, (), self.source.constant)
+        return E
+
+    def _projection(self) -> None:
+        for piece in self.verdict["evidence"]:
+            if piece["kind"] != "projection":
+                continue
+            certificate = piece["certificate"]
+            try:
+                if list(certificate["auxiliaries"]) != self.auxiliaries:
+                    raise Rejected("it speaks of other auxiliaries")
+                proof = follow(certificate, self.model.terms, self.model.domain, len(self.model.labels))
+                stated = certificate["multiplicity"]
+                if stated is not None and (proof.uneven or stated != proof.multiplicity):
+                    raise Rejected(f"the multiplicity is not {stated} everywhere")
+                P: Poly = {key: value * self.model.resolution for key, value in proof.gained.items()}
+                add(P, (), self.model.constant)
+                E = self._energy()
+            except Rejected as fault:
+                self.note("projection", False, str(fault))
+                continue
+            except TooLarge as limit:
+                self.limits.append(f"projection: {limit}")
+                continue
+            self.note("projection", True, f"every step repeated, P has {len(P)} terms")
+            self._compare(P, E)
+            self._multiplicity(proof, "the certificate")
+
+    def _compare(self, P: Poly, E: Poly) -> None:
+        """What P and E as polynomials say of the claims and of the scale."""
+        why = "P and E compared term by term"
+        found = related(P, E)
+        same = {key: value for key, value in scaled(E, self.scale, self.shift).items() if value} == P
+        self._scale(found, constant=not any(E))
+        self.learn("energies", same and self.represents_all, why)
+        if not self.represents_all:
+            return
+        if same:
+            self.learn("ground-energy", True, why)
+        if found is not None:
+            self.learn("ground-states", True, why)
+            if found[0] == self.scale or not any(E):
+                self.learn("ground-energy", same, why)
+
+    def _scale(self, found: tuple[Fraction, Fraction] | None, constant: bool) -> None:
+        """A scale that was not declared is the one that holds everywhere, or 1 and 0."""
+        if self.verdict["scale_from"] == "declared":
+            return
+        wanted = (Fraction(1), Fraction(0)) if found is None else found
+        origin = "default" if found is None else "found"
+        good = (self.scale, self.shift) == wanted and self.verdict["scale_from"] == origin
+        self.note("scale", good, "sought again" if good else f"{wanted[0]} and {wanted[1]} ({origin}) would be right")
+
+    def _multiplicity(self, proof: Any, why: str) -> None:
+        uniform = None if proof.uneven else proof.multiplicity
+        if self.known.get("ground-states") and uniform is not None:
+            self.learn("even-multiplicity", True, why)
+        if not self.known["energies"]:
+            self.learn("one-to-one", False, why)
+        elif uniform is not None:
+            self.learn("one-to-one", uniform == 1, why)
+        else:
+            witness = self.verdict["claims"]["one-to-one"]["witness"]
+            if witness is not None:
+                bits = self._bits(witness["state"])
+                if bits is not None and multiplicity_at(proof, bits) != 1:
+                    self.learn("one-to-one", False, f"{why}, at the witness")
+
+    def _bits(self, state: Mapping[str, int]) -> dict[int, int] | None:
+        """Bits of the originals by position for a source state, None where the model has no such state."""
+        found: dict[int, int] = {}
+        low, high = values_of(self.model.domain)
+        for label in self.source.labels:
+            column, p, q = self.link[label]
+            if state[label] not in values_of(self.source.domain):
+                raise InputError(f"a witness gives {label!r} the value {state[label]!r}")
+            if column is None:
+                if p != state[label]:
+                    return None
+                continue
+            bit = 0 if p + q * low == state[label] else 1
+            if found.setdefault(column, bit) != bit:
+                return None
+        return found
+
+    def _exhaustion(self) -> None:
+        """Every claim by the definitions, where all states are few."""
+        n, size = len(self.source.labels), len(self.model.labels)
+        work = (len(self.model.terms) << size) + (len(self.source.terms) << n) if max(n, size) < 40 else MOST_WORK + 1
+        if 2 ** min(size, 99) > MOST_STATES or 2 ** min(n, 99) > MOST_STATES or work > MOST_WORK:
+            self.limits.append(f"exhaustion: 2^{size} settings of the model, {MOST_STATES} are visited")
+            return
+        E, P, m = {}, {}, {}
+        bits_of = list(product(values_of(self.model.domain), repeat=len(self.auxiliaries)))
+        low_high = values_of(self.model.domain)
+        for state in product(values_of(self.source.domain), repeat=n):
+            at = dict(zip(self.source.labels, state, strict=True))
+            E[state] = self.source.energy(at)
+            bits = self._bits(at)
+            if bits is None:
+                continue
+            full = [0] * size
+            for column, bit in bits.items():
+                full[column] = low_high[bit]
+            energies = []
+            for setting in bits_of:
+                for position, value in zip(self.auxiliaries, setting, strict=True):
+                    full[position] = value
+                energies.append(value_at(self.model.terms, full))
+            least = min(energies)
+            P[state], m[state] = self.model.constant + least * self.model.resolution, energies.count(least)
+        self._define(E, P, m)
+
+    def _define(self, E: dict[Key, Fraction], P: dict[Key, Fraction], m: dict[Key, int]) -> None:
+        """The claims by their definitions; what the certificate gave must agree."""
+        pairs = sorted({(E[x], P[x]) for x in P})
+        found = relation_of(pairs)
+        if not any(item.name == "scale" for item in self.items):
+            self._scale(found, constant=pairs[0][0] == pairs[-1][0])
+        low_E, low_P = min(E.values()), min(P.values())
+        ground = {x for x in E if E[x] == low_E}
+        states = ground == {x for x in P if P[x] == low_P}
+        same = len(P) == len(E) and all(P[x] == self.scale * E[x] + self.shift for x in E)
+        truth = {
+            "ground-energy": low_P == self.scale * low_E + self.shift,
+            "ground-states": states,
+            "even-multiplicity": states and len({m[x] for x in ground}) == 1,
+            "energies": same,
+            "one-to-one": same and set(m.values()) == {1},
+        }
+        for name, value in truth.items():
+            if self.known.get(name, value) != value:
+                self.note(name, False, "the certificate and all states disagree")
+            self.known[name], self.why[name] = value, f"all {len(E)} states visited"
+
+    def _judge(self, name: str, claim: Mapping[str, Any]) -> None:
+        """Accept or reject one claim, its witnesses first."""
+        status = claim["status"]
+        for kind in ("witness", "rival"):
+            fault = self._witness(claim[kind]) if claim[kind] is not None else None
+            if fault:
+                self.note(name, False, f"{kind}: {fault}")
+                return
+        if status in ("open", "tested"):
+            if status == "tested":
+                self.items.append(Item(name, "not re-checked", "tested on some states; the verdict claims no more"))
+            return
+        if status not in ("proved", "refuted"):
+            self.note(name, False, f"no such status: {str(status)[:20]}")
+        elif name not in self.known and status == "refuted" and self._shown(name, claim):
+            self.note(name, True, "refuted: the witness alone shows it")
+        elif name not in self.known:
+            self.items.append(
+                Item(name, "not re-checked", "; ".join(self.limits) or "no evidence that is re-checked")
+            )
+        else:
+            good = self.known[name] == (status == "proved")
+            self.note(name, good, f"{status}: {self.why[name]}" if good else f"not so: {self.why[name]}")
+
+    def _witness(self, witness: Mapping[str, Any]) -> str | None:
+        """What is wrong with a witness: its energies are evaluated again."""
+        state = witness["state"]
+        if self.source.energy(state) != rational(witness["source_energy"]):
+            return "E of the state is another"
+        bits = self._bits(state)
+        if (bits is None) != (witness["model_energy"] is None):
+            return "whether the model has the state is told wrongly"
+        if bits is None:
+            return None
+        values = values_of(self.model.domain)
+        full = {self.model.labels[column]: values[bit] for column, bit in bits.items()}
+        for position in self.auxiliaries:
+            label = self.model.labels[position]
+            if witness["auxiliaries"][label] not in values:
+                return "an auxiliary has no value of the domain"
+            full[label] = witness["auxiliaries"][label]
+        if self.model.energy(full) != rational(witness["model_energy"]):
+            return "F of the state is another"
+        return None
+
+    def _shown(self, name: str, claim: Mapping[str, Any]) -> bool:
+        """Whether a witness refutes without any minimum: F(x, a) < alpha E(x) + beta, or no model state at all."""
+        witness = claim["witness"]
+        if name not in ("energies", "one-to-one") or witness is None:
+            return False
+        if witness["model_energy"] is None:
+            return True
+        bound = self.scale * rational(witness["source_energy"]) + self.shift
+        return rational(witness["model_energy"]) < bound
+
+
+def scaled(E: Poly, scale: Fraction, shift: Fraction) -> Poly:
+    """scale * E + shift."""
+    found: Poly = {key: scale * value for key, value in E.items()}
+    add(found, (), shift)
+    return found
+
+
+def related(P: Poly, E: Poly) -> tuple[Fraction, Fraction] | None:
+    """alpha > 0 and beta of P = alpha E + beta as polynomials (alpha = 1 where E is constant), or None."""
+    terms = sorted(key for key in E if key)
+    scale = Fraction(P.get(terms[0], 0)) / E[terms[0]] if terms else Fraction(1)
+    shift = P.get((), 0) - scale * E.get((), 0)
+    return (scale, Fraction(shift)) if scale > 0 and scaled(E, scale, shift) == P else None
+
+
+def relation_of(pairs: Sequence[tuple[Fraction, Fraction]]) -> tuple[Fraction, Fraction] | None:
+    """The same from sorted pairs (E, P) of states."""
+    (first, level), (last, top) = pairs[0], pairs[-1]
+    scale = (top - level) / (last - first) if last != first else Fraction(1)
+    shift = level - scale * first
+    good = scale > 0 and all(value == scale * energy + shift for energy, value in pairs)
+    return (scale, shift) if good else None
