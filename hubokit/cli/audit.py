@@ -2,12 +2,26 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from pathlib import Path
-from typing import Annotated
+from typing import Annotated, Any
 
 import typer
 
-from hubokit.cli import options
+from hubokit.cli import options, summary
+from hubokit.cli.loading import load_model
+from hubokit.cli.text import section, table
+from hubokit.errors import HubokitError, InputError
+from hubokit.exchange.documents import document_to_json, plain_json
+from hubokit.exchange.files import read_text
+from hubokit.exchange.json_text import parsed
+from hubokit.validation.audit import audit
+
+OUTCOMES = {
+    0: "accepted: everything that the verdict asserts was re-checked",
+    1: "rejected: the verdict asserts what does not hold, or is about other models",
+    3: "not decided: some of it was not re-checked",
+}
 
 
 def command(
@@ -16,4 +30,56 @@ def command(
     model: Annotated[Path | None, typer.Option("--model", metavar="REDUCED", help="The reduced model.")] = None,
     as_json: options.Json = False,
 ) -> None:
-    """Check a verdict again; the files that it names are looked for beside it."""
+    """Check a verdict again by separate code; exit code 0 accepted, 1 rejected, 3 not all re-checked.
+
+    Models that are not named are looked for beside the verdict, under the names that it gives.
+    """
+    judged = _object(verdict)
+    reduced = _document(model or _beside(verdict, judged, "model", "--model"))
+    source_file = source or _beside(verdict, judged, "source", "--source")
+    try:
+        report = audit(judged, _document(source_file), reduced)
+    except HubokitError as error:
+        raise error.located(file=str(verdict)) from None
+    if as_json:
+        parts = {
+            "figures": {item.name: item.result for item in report.items},
+            "notes": [f"{item.name}: {item.detail}" for item in report.items if item.detail],
+        }
+        summary.emit(summary.document("audit", parts))
+    else:
+        rows = [[item.name, item.result, item.detail] for item in report.items]
+        print(
+            section(
+                f"AUDIT  {verdict}", table(["what", "result", "detail"], rows), f"\n  {OUTCOMES[report.exit_code]}"
+            )
+        )
+    raise typer.Exit(report.exit_code)
+
+
+def _object(path: Path) -> dict[str, Any]:
+    """The JSON object of a file, as it stands."""
+    try:
+        content = parsed(read_text(path))
+    except HubokitError as error:
+        raise error.located(file=str(path)) from None
+    if not isinstance(content, dict):
+        raise InputError("not a document; a JSON object is needed", file=str(path))
+    return content
+
+
+def _document(path: Path) -> Mapping[str, Any]:
+    """A model as a JSON document: JSON files as they stand, others translated."""
+    if path.name.endswith((".json", ".json.gz")):
+        return _object(path)
+    found: Mapping[str, Any] = plain_json(document_to_json(load_model(path)))
+    return found
+
+
+def _beside(verdict: Path, judged: Mapping[str, Any], role: str, option: str) -> Path:
+    """The file that a verdict names for a role, in its own folder."""
+    files = judged.get("files")
+    name = files.get(role) if isinstance(files, dict) else None
+    if not isinstance(name, str) or Path(name).name != name:
+        raise InputError(f"the verdict does not name the file; {option} names it", file=str(verdict))
+    return verdict.parent / name
