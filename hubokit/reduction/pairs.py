@@ -8,10 +8,10 @@ An auxiliary stands for something that two existing variables u and v (its *oper
 - a *product variable* p (spins only) is s_u s_v itself, made quadratic by the pair variable of the same operands,
   its *companion*. It is what pairs of pairs of spins are made of; terms of up to four spins need none.
 
-A term is rewritten as the product of two *factors*. For booleans a factor is a variable. For spins the factor of a pair
-variable is the affine form above, and that of any other variable the variable, so that a product of four spins
-becomes the product of two affine forms. A cubic term holds one chosen pair, a quartic splits into two; longer terms are
-first shortened by putting one variable for two.
+A term is rewritten as the product of two *factors*. For booleans a factor is a variable. For spins the factor of a
+pair variable is the affine form above, and that of any other variable the variable, so that a product of four spins
+becomes the product of two affine forms. A cubic term holds one chosen pair, a quartic splits into two; longer terms
+are first shortened by putting one variable for two.
 
 References
 ----------

@@ -4,18 +4,20 @@ A pair variable y of u and v (booleans) gets
 
     B u v - (A + B) (u + v) y + (2A + B) y,
 
-which is 0 where y = u v, costs A where y = 1 and one of u, v is 0, costs 2A + B where both are 0, and costs B
-where y = 0 and u = v = 1. With A = B it is the penalty of Rosenberg 1975. Let C be what the rest of the model adds to
-the cost of y = 1, an affine form of the other variables. For every setting of those, y = u v is better by at least g when
+which is 0 where y = u v, costs A where y = 1 and one of u, v is 0, costs 2A + B where both are 0, and costs B where
+y = 0 and u = v = 1. With A = B it is the penalty of Rosenberg 1975. Let C be what the rest of the model adds to the
+cost of y = 1, an affine form of the other variables. For every setting of those, y = u v is better by at least g
+when
 
     A + C >= g where one of u, v is 1,    2A + B + C >= g where neither is,    B - C >= g where both are.
 
-C is bounded by the sum of the positive and of the negative parts of its coefficients, with u and v held where the condition
-holds them, so each pair has its own A and B and no global constant appears. Then whatever the other auxiliaries do, y
-is best at its right value and only there (for g > 0); setting them right in the order of definition gains at least g each
-time, so P = E, every state has one best setting, and the auxiliary gap is at least g.
+C is bounded by the sum of the positive and of the negative parts of its coefficients, with u and v held where the
+condition holds them, so each pair has its own A and B and no global constant appears. Then whatever the other
+auxiliaries do, y is best at its right value and only there (for g > 0); setting them right in the order of
+definition gains at least g each time, so P = E, every state has one best setting, and the auxiliary gap is at least
+g.
 
-A product variable p = s_u s_v of spins gets ``A/2 (1 - p (1 + s_u + s_v - 2y))`` with its companion y: A where p is wrong.
+A product variable p = s_u s_v of spins gets ``A/2 (1 - p (1 + s_u + s_v - 2y))`` with its companion y: A where wrong.
 
 Everything here is computed in booleans x = (1 - s) / 2, where spin models are no special case.
 

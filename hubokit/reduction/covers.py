@@ -1,0 +1,344 @@
+"""Pair covers: the fewest pairs whose substitution makes every term quadratic, with penalties for this model.
+
+Three ways of treating terms of four and more are tried, and the one with the fewest auxiliaries is kept:
+
+- *splits*: terms of five and more are shortened to four by joint variables, then all cubics and quartics are
+  covered together, a quartic by both pairs of a split;
+- *nests* (booleans): quartics too are shortened, by the most-common-pair rule, then the cubics are covered;
+- *rule* (booleans): the most-common-pair rule to the end.
+
+References
+----------
+Anthony, Boros, Crama, Gruber 2017, "Quadratic reformulations of nonlinear binary optimization problems".
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from fractions import Fraction
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hubokit.errors import InputError
+from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.model.numbers import common_resolution, format_fraction, times
+from hubokit.model.terms import Part, canonical_blocks
+from hubokit.reduction.cover_joins import most_common_pairs
+from hubokit.reduction.cover_problem import cover_problem
+from hubokit.reduction.cover_search import find_cover
+from hubokit.reduction.pairs import PairVariables, factors_of, rewritten, shortened
+from hubokit.reduction.penalties import SPIN_DIVISOR, BooleanForm, Strengths, interval_strengths, penalty_parts
+
+JOIN_WORK = 50_000
+"""Terms of four and more up to which the most-common-pair rule is run to the end, for `work` = 1."""
+
+
+@dataclass(frozen=True)
+class ChosenPairs:
+    """Pairs that cover some terms, and how they were found.
+
+    Parameters
+    ----------
+    pairs : PairVariables
+    how : str
+        In words.
+    greedy : int
+        Auxiliaries that the most-common-pair rule takes.
+    proven_least : bool
+        No other pairs of the same way (splits or nests) are fewer.
+    skipped : tuple of str
+        Ways that were not tried because of the work limit.
+    """
+
+    pairs: PairVariables
+    how: str
+    greedy: int
+    proven_least: bool
+    skipped: tuple[str, ...] = ()
+
+
+def choose_pairs(
+    blocks: Mapping[int, NDArray[Any]], size: int, domain: str, seed: int = 0, work: int = 1
+) -> ChosenPairs:
+    """As few pairs as the search finds for terms of three and more members.
+
+    Parameters
+    ----------
+    blocks : mapping of locality k to integer array (m, k)
+    size : int
+        Number of original variables.
+    domain : "spin" or "boolean"
+    seed : int
+    work : int
+        Multiplies the limits of the searches, which count steps.
+
+    Examples
+    --------
+    >>> chosen = choose_pairs({4: np.array([[0, 1, 2, 3], [0, 1, 2, 4], [0, 1, 2, 5]])}, 6, "boolean")
+    >>> chosen.pairs.operands.tolist(), chosen.greedy
+    ([[0, 1], [2, 6]], 2)
+    """
+    blocks = {locality: members for locality, members in sorted(blocks.items()) if len(members)}
+    long = sum(len(members) for locality, members in blocks.items() if locality >= 4)
+    tried = [_shorten_and_cover(blocks, size, domain, 4, seed, work)]
+    skipped: tuple[str, ...] = ()
+    if domain == "boolean" and long:
+        if long <= JOIN_WORK * work:
+            tried.append(_shorten_and_cover(blocks, size, domain, 3, seed, work))
+            rule = most_common_pairs(blocks.values(), size, domain, 2)
+            tried.append(ChosenPairs(rule, "most common pair", rule.count, False))
+        else:
+            skipped = (f"nested pairs: {long} terms of four and more, limit {JOIN_WORK * work}",)
+    best = min(tried, key=lambda one: one.pairs.count)
+    greedy = min(one.greedy for one in tried)
+    return ChosenPairs(best.pairs, best.how, greedy, best.proven_least, skipped)
+
+
+def _shorten_and_cover(
+    blocks: Mapping[int, NDArray[Any]], size: int, domain: str, most: int, seed: int, work: int
+) -> ChosenPairs:
+    """Terms shortened to at most `most` members by joint variables, then covered by pairs."""
+    short: list[NDArray[Any]] = [members for locality, members in blocks.items() if locality <= most]
+    long = [members for locality, members in blocks.items() if locality > most]
+    joins = most_common_pairs(blocks.values(), size, domain, most) if long else PairVariables.of(size, [])
+    short += [shortened(members, joins, domain, most) for members in long]
+    by_columns = [
+        np.concatenate([members for members in short if members.shape[1] == columns])
+        for columns in (3, 4)
+        if any(members.shape[1] == columns for members in short)
+    ]
+    problem = cover_problem(by_columns, size + joins.count, joins.operands[~joins.is_product])
+    cover = find_cover(problem, seed, work)
+    fresh = problem.operands[cover.chosen & ~problem.given]
+    pairs = PairVariables(
+        size,
+        np.concatenate([joins.operands, fresh]).astype(np.int32),
+        np.concatenate([joins.companions, np.full(len(fresh), -1)]).astype(np.int32),
+    )
+    least = joins.count == 0 and problem.count(cover.chosen) == cover.least
+    how = cover.how if not joins.count else f"{joins.count} joint variables by the most common pair, then {cover.how}"
+    return ChosenPairs(pairs, how, joins.count + cover.greedy, least)
+
+
+@dataclass(frozen=True)
+class PairCoverPlan:
+    """A pair substitution ready to be priced and built.
+
+    Parameters
+    ----------
+    source : Hamiltonian
+    covered : mapping of locality to bool array (m,)
+        The terms that the pairs make quadratic, one mask for each block of locality three and more.
+    chosen : ChosenPairs
+    factors : mapping of locality to int64 array (number covered, 2)
+        The two factors of every covered term.
+    strengths : Strengths
+        In units of `resolution`.
+    resolution : Fraction
+        Unit of the strengths, energy units.
+    gap : Fraction
+        The auxiliary gap that the penalties keep.
+    tightening : mapping
+        What the penalties were scaled to and how that is proved, for the trail; empty for interval bounds.
+    """
+
+    source: Hamiltonian
+    covered: Mapping[int, NDArray[np.bool_]]
+    chosen: ChosenPairs
+    factors: Mapping[int, NDArray[np.int64]]
+    strengths: Strengths
+    resolution: Fraction
+    gap: Fraction
+    tightening: Mapping[str, Any] = field(default_factory=dict)
+
+    @property
+    def pairs(self) -> PairVariables:
+        """The auxiliaries."""
+        return self.chosen.pairs
+
+    @property
+    def auxiliaries(self) -> int:
+        """Number of auxiliaries."""
+        return self.pairs.count
+
+    @property
+    def how(self) -> str:
+        """How the pairs were found."""
+        return self.chosen.how
+
+    @property
+    def is_whole(self) -> bool:
+        """Whether every term of three and more members is covered."""
+        return all(bool(mask.all()) for mask in self.covered.values())
+
+    @property
+    def unit(self) -> Fraction:
+        """What the weights of `parts` are multiples of, energy units."""
+        return self.resolution / (SPIN_DIVISOR if self.source.domain == "spin" else 1)
+
+    @cached_property
+    def parts(self) -> tuple[Part, ...]:
+        """Covered terms and penalties, merged, in units of `unit`; the first has no members: the constant."""
+        H = self.source
+        divisor = SPIN_DIVISOR if H.domain == "spin" else 1
+        rows = [
+            (members, times(weights, divisor))
+            for members, weights in _rewritten_terms(H, self.covered, self.factors, self.pairs, self.resolution)
+        ]
+        rows += penalty_parts(self.pairs, self.strengths, H.domain)
+        constant, blocks = canonical_blocks(rows, H.domain)
+        empty: Part = (np.zeros((1, 0), np.int64), np.array([constant], dtype=object))
+        return (empty, *((block.members, block.weights) for block in blocks))
+
+    def price(self) -> dict[str, int | Fraction]:
+        """Figures to compare with: auxiliaries, couplers, largest and smallest coefficient in energy units.
+
+        Terms that are not covered, of three and more members, are left out.
+        """
+        blocks = self._all_blocks()
+        sizes = [np.abs(block.weights) for block in blocks]
+        return {
+            "auxiliaries": self.auxiliaries,
+            "couplers": sum(len(block) for block in blocks if block.locality == 2),
+            "largest": max((int(size.max()) for size in sizes), default=0) * self.unit,
+            "smallest": min((int(size.min()) for size in sizes), default=0) * self.unit,
+        }
+
+    def build(self, names: tuple[str, ...]) -> Hamiltonian:
+        """The reduced model, auxiliaries named in the order of definition.
+
+        Raises
+        ------
+        InputError
+            The plan leaves terms uncovered, or the number of names is not that of the auxiliaries.
+        """
+        if not self.is_whole:
+            raise InputError("the plan covers only some terms; add the rest to its parts", "pairs")
+        if len(names) != self.auxiliaries:
+            raise InputError(f"{len(names)} names for {self.auxiliaries} auxiliaries", "names")
+        H = self.source
+        every = [*self.parts, *self._short_parts()]
+        return Hamiltonian.from_arrays(
+            [members for members, _ in every],
+            [weights for _, weights in every],
+            H.domain,
+            labels=(*H.labels, *names),
+            resolution=self.unit,
+            constant=H.constant,
+            convention=H.convention,
+        )
+
+    def record(self, names: tuple[str, ...]) -> dict[str, Any]:
+        """JSON values for the trail: what each auxiliary stands for, so that lifting needs no search."""
+        labels = [*self.source.labels, *names]
+        defined = [
+            {"auxiliary": name, "of": [labels[u], labels[v]], "is": "product" if product else "pair"}
+            for name, (u, v), product in zip(
+                names, self.pairs.operands.tolist(), self.pairs.is_product.tolist(), strict=True
+            )
+        ]
+        return {
+            "pairs": defined,
+            "found by": self.how,
+            "most common pair rule": self.chosen.greedy,
+            "proven least": self.chosen.proven_least,
+            "not tried": list(self.chosen.skipped),
+            "auxiliary gap": format_fraction(self.gap),
+            "penalties": dict(self.tightening) or {"scale": "1", "proved by": "interval bounds"},
+        }
+
+    def _short_parts(self) -> list[Part]:
+        factor = int(self.source.resolution / self.unit)
+        return [(block.members, times(block.weights, factor)) for block in self.source.blocks if block.locality <= 2]
+
+    def _all_blocks(self) -> list[Any]:
+        return [b for b in canonical_blocks([*self.parts, *self._short_parts()], self.source.domain)[1] if len(b)]
+
+
+def pair_cover_reduction(
+    H: Hamiltonian,
+    *,
+    keep: str = "one-to-one",
+    auxiliary_gap: Fraction | None = None,
+    seed: int = 0,
+    work: int = 1,
+    only: Mapping[int, NDArray[np.bool_]] | None = None,
+) -> PairCoverPlan:
+    """Choose pairs for the terms of three and more members, and penalties that interval bounds prove.
+
+    The penalties are strict whatever `keep` says, because a strict margin is what makes the pairs provable at any
+    size: where no gap is asked for, the source's resolution is kept.
+
+    Parameters
+    ----------
+    H : Hamiltonian
+    keep : {"one-to-one", "energies", "ground-states"}
+        All three are kept by the same model.
+    auxiliary_gap : Fraction, optional
+        Least gap asked for, in energy units.
+    seed : int
+    work : int
+        Multiplies the limits of the searches.
+    only : mapping of locality to bool array (m,), optional
+        The terms to cover, one mask for each block; a locality left out is covered whole.
+
+    Returns
+    -------
+    PairCoverPlan
+
+    Examples
+    --------
+    >>> H = Hamiltonian({("a", "b", "c"): 2, ("a", "b", "d"): -1}, "spin")
+    >>> plan = pair_cover_reduction(H)
+    >>> plan.auxiliaries, plan.build(("y0",)).locality
+    (1, 2)
+    """
+    del keep
+    covered = {}
+    for block in H.blocks:
+        if block.locality >= 3:
+            mask = np.ones(len(block), bool)
+            covered[block.locality] = mask if only is None else np.asarray(only.get(block.locality, mask), bool)
+    members = {b.locality: b.members[covered[b.locality]] for b in H.blocks if b.locality >= 3}
+    chosen = choose_pairs(members, H.size, H.domain, seed, work)
+    factors = {
+        locality: factors_of(rows, chosen.pairs, H.domain) if len(rows) else np.zeros((0, 2), np.int64)
+        for locality, rows in members.items()
+    }
+    gap = auxiliary_gap if auxiliary_gap else H.resolution
+    resolution = common_resolution([H.resolution, gap])
+    form = covered_form(H, covered, factors, chosen.pairs, resolution)
+    strengths = interval_strengths(form, chosen.pairs, int(gap / resolution))
+    return PairCoverPlan(H, covered, chosen, factors, strengths, resolution, gap)
+
+
+def covered_form(
+    H: Hamiltonian,
+    covered: Mapping[int, NDArray[np.bool_]],
+    factors: Mapping[int, NDArray[np.int64]],
+    pairs: PairVariables,
+    resolution: Fraction,
+) -> BooleanForm:
+    """The covered terms rewritten, without penalties, over booleans in units of `resolution`."""
+    parts = _rewritten_terms(H, covered, factors, pairs, resolution)
+    return BooleanForm.of(parts, H.domain, pairs.size + pairs.count)
+
+
+def _rewritten_terms(
+    H: Hamiltonian,
+    covered: Mapping[int, NDArray[np.bool_]],
+    factors: Mapping[int, NDArray[np.int64]],
+    pairs: PairVariables,
+    resolution: Fraction,
+) -> list[Part]:
+    factor = int(H.resolution / resolution)
+    parts: list[Part] = []
+    for block in H.blocks:
+        if block.locality >= 3:
+            weights = times(block.weights[covered[block.locality]], factor)
+            parts += rewritten(weights, factors[block.locality], pairs, H.domain)
+    return parts
