@@ -16,7 +16,7 @@ from hubokit.model.terms import canonical_blocks
 from hubokit.reduction.costs import extremes
 from hubokit.reduction.gadgets.attach import Piece, TermPiece, shared_resolution
 from hubokit.reduction.gadgets.base import Keep, Part
-from hubokit.reduction.gadgets.table import stand_in, wide_stand_in
+from hubokit.reduction.gadgets.table import mirror_stand_in, stand_in, wide_stand_in
 
 Choice = Mapping[tuple[int, int], str]
 """Name of the family that serves each (locality, sign)."""
@@ -87,9 +87,13 @@ def term_pieces(
             least = Fraction(0) if own.reach is None else gap / (own.reach * H.resolution)
             # Whole sizes below a rational bound are those below its ceiling, which is an integer comparison.
             light = np.asarray(sizes < -(-least.numerator // least.denominator), dtype=bool)
-            if not light.all():
+            mirror = mirror_stand_in(name, block.locality, sign, keep)
+            if mirror is not None:
+                pieces.append(TermPiece(own, members[::2], sizes[::2], name))
+                pieces.append(TermPiece(mirror, members[1::2], sizes[1::2], name))
+            elif not light.all():
                 pieces.append(TermPiece(own, members[~light], sizes[~light], name))
-            if light.any():
+            if mirror is None and light.any():
                 wide = wide_stand_in(name, block.locality, sign, keep)
                 pieces.append(TermPiece(wide, members[light], sizes[light], f"{name}, widened"))
     return pieces

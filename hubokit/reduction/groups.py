@@ -212,11 +212,11 @@ def gathered(H: Hamiltonian) -> Grouping | str:
     if H.size**3 >= 2**62 or H.size**2 * max(len(quartic), 1) >= 2**62:
         return f"{H.size} variables are too many for the index of cubic terms"
     table = _Triples(cubic.members.astype(np.int64), H.size)
-    count = _candidate_count(table.members)
-    if count > CANDIDATE_LIMIT:
-        return f"{count:,} sets of four variables to look at; at most {CANDIDATE_LIMIT:,} are"
+    runs = _Runs(table.members, H.size)
+    if runs.count > CANDIDATE_LIMIT:
+        return f"{runs.count:,} sets of four variables to look at; at most {CANDIDATE_LIMIT:,} are"
     fours = quartic.members.astype(np.int64)
-    chosen, inside = _chosen_groups(table, fours, _candidates(table.members))
+    chosen, inside = _chosen_groups(table, fours, runs.candidates())
     if not len(chosen):
         return "no two terms lie on the same four variables"
     kind = object if object in (cubic.weights.dtype, quartic.weights.dtype) else np.int64
@@ -254,37 +254,39 @@ class _Triples:
         return np.where(self.keys[place] == keys, place, -1)
 
 
-def _pair_runs(
-    members: npt.NDArray[np.int64],
-) -> tuple[npt.NDArray[np.int64], npt.NDArray[np.int64], npt.NDArray[np.int64]]:
-    """Pairs inside cubic terms with the member left over, sorted by pair; and the length of each run of one pair."""
-    rows = np.concatenate([members[:, [0, 1, 2]], members[:, [0, 2, 1]], members[:, [1, 2, 0]]])
-    rows = rows[np.lexsort(rows.T[::-1])]
-    fresh = np.ones(len(rows), bool)
-    fresh[1:] = (rows[1:, :2] != rows[:-1, :2]).any(axis=1)
-    starts = np.flatnonzero(fresh)
-    return rows, starts, np.diff(np.append(starts, len(rows)))
+class _Runs:
+    """Pairs inside cubic terms beside the member left over, sorted, as runs of one pair.
 
+    One int64 key holds a pair and its third member, so that a plain sort does the work.
+    """
 
-def _candidate_count(members: npt.NDArray[np.int64]) -> int:
-    if not len(members):
-        return 0
-    _, _, lengths = _pair_runs(members)
-    return int((lengths * (lengths - 1) // 2).sum())
+    def __init__(self, members: npt.NDArray[np.int64], size: int) -> None:
+        self.size = size
+        splits = ((0, 1, 2), (0, 2, 1), (1, 2, 0))
+        keys = [(members[:, a] * size + members[:, b]) * size + members[:, c] for a, b, c in splits]
+        self.keys = np.sort(np.concatenate(keys))
+        pairs = self.keys // max(size, 1)
+        fresh = np.ones(len(pairs), bool)
+        fresh[1:] = pairs[1:] != pairs[:-1]
+        self.starts = np.flatnonzero(fresh)
+        self.lengths = np.diff(np.append(self.starts, len(pairs)))
 
+    @property
+    def count(self) -> int:
+        """Number of pairs of cubic terms that share a pair of variables."""
+        return int((self.lengths * (self.lengths - 1) // 2).sum())
 
-def _candidates(members: npt.NDArray[np.int64]) -> npt.NDArray[np.int64]:
-    """Every set of four variables that holds two cubic terms, rows increasing, distinct and sorted."""
-    if not len(members):
-        return np.zeros((0, 4), np.int64)
-    rows, starts, lengths = _pair_runs(members)
-    found = [np.zeros((0, 4), np.int64)]
-    for length in np.unique(lengths[lengths > 1]).tolist():
-        at = starts[lengths == length]
-        first, second = (np.array(side, np.int64) for side in zip(*combinations(range(length), 2), strict=True))
-        left, right = (at[:, None] + first).ravel(), (at[:, None] + second).ravel()
-        found.append(np.concatenate([rows[left], rows[right, 2:]], axis=1))
-    return np.unique(np.sort(np.concatenate(found), axis=1), axis=0)
+    def candidates(self) -> npt.NDArray[np.int64]:
+        """Every set of four variables that holds two cubic terms, rows increasing, distinct and sorted."""
+        found = [np.zeros((0, 4), np.int64)]
+        for length in np.unique(self.lengths[self.lengths > 1]).tolist():
+            at = self.starts[self.lengths == length]
+            first, second = (np.array(side, np.int64) for side in zip(*combinations(range(length), 2), strict=True))
+            left = self.keys[(at[:, None] + first).ravel()]
+            right = self.keys[(at[:, None] + second).ravel()] % self.size
+            pair = left // self.size
+            found.append(np.stack([pair // self.size, pair % self.size, left % self.size, right], axis=1))
+        return np.unique(np.sort(np.concatenate(found), axis=1), axis=0)
 
 
 def _chosen_groups(

@@ -15,10 +15,10 @@ everywhere.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from itertools import product
-from math import prod
+from math import ceil, lcm, prod
 from typing import Any
 
 from hubokit.model.hamiltonian import Hamiltonian
@@ -139,7 +139,7 @@ def planned(question: Question, method: str = "auto") -> Planned:
         name = method if method not in (GROUPS, PAIR_COVER) else ""
         if name:
             family(name)
-        plans = [_term_plan(question, single_choice(question, name), name or TERM_BY_TERM)]
+        plans = [_best_gap(question, single_choice(question, name), name or TERM_BY_TERM)]
     ranked = sorted(plans, key=lambda plan: plan.price.figure(question.prefer))
     return Planned(ranked[0], ranked[1:], others)
 
@@ -207,12 +207,31 @@ def term_plans(question: Question, notes: list[dict[str, str]]) -> list[Plan]:
     for name, choice in term_choices(question, notes):
         key = tuple(sorted(choice.items()))
         if key not in prices:
-            prices[key] = _term_plan(question, choice, name)
+            prices[key] = _best_gap(question, choice, name)
         plan = Plan(name, prices[key].price, prices[key].build)
         if name not in best or plan.price.figure(question.prefer) < best[name].price.figure(question.prefer):
             best[name] = plan
     # The mix stands first: where it is no better than a single family, the two are the same model.
     return sorted(best.values(), key=lambda plan: plan.name != TERM_BY_TERM)
+
+
+def _best_gap(question: Question, choice: Choice, name: str) -> Plan:
+    """The plan for the gap asked for; where range is preferred, or for a wider gap that needs no finer resolution.
+
+    A gap that is no multiple of the denominators of its gadgets makes the resolution finer, and with it the smallest
+    coefficient; a slightly wider gap costs less there.
+    """
+    plan = _term_plan(question, choice, name)
+    if question.prefer != "range" or not question.gap:
+        return plan
+    shapes = [stand_in(family_name, *key, question.keep) for key, family_name in choice.items()]
+    denominator = lcm(*(value.denominator for shape in shapes for value in shape.by_gap.values()))
+    step = question.H.resolution * denominator
+    wider = step * ceil(question.gap / step)
+    if wider == question.gap:
+        return plan
+    other = _term_plan(replace(question, gap=wider), choice, name)
+    return min(plan, other, key=lambda one: one.price.figure(question.prefer))
 
 
 def _term_plan(question: Question, choice: Choice, name: str) -> Plan:

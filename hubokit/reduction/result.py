@@ -71,13 +71,18 @@ class Reduction:
 
     def __post_init__(self) -> None:
         added = set(self.auxiliaries)
-        if len(added) < len(self.auxiliaries):
+        count = len(self.auxiliaries)
+        in_order = tuple(self.model.labels[self.model.size - count :]) == tuple(self.auxiliaries)
+        if len(added) < count:
             twice = next(label for label in self.auxiliaries if list(self.auxiliaries).count(label) > 1)
             raise InputError(f"{twice!a} is named twice", "auxiliaries")
-        for label in self.auxiliaries:
-            if label not in self.model.positions:
-                raise InputError(f"{label!a} is no variable of the reduced model", "auxiliaries")
-        object.__setattr__(self, "auxiliaries", tuple(v for v in self.model.labels if v in added))
+        if not in_order:
+            for label in self.auxiliaries:
+                if label not in self.model.positions:
+                    raise InputError(f"{label!a} is no variable of the reduced model", "auxiliaries")
+            object.__setattr__(self, "auxiliaries", tuple(v for v in self.model.labels if v in added))
+        else:
+            object.__setattr__(self, "auxiliaries", tuple(self.auxiliaries))
         for name in ("scale", "shift"):
             value = getattr(self, name)
             if value is not None:
@@ -88,6 +93,8 @@ class Reduction:
 
     def _check_origin(self, added: set[str]) -> None:
         given = self.origin or {}
+        if not given and set(self.source.labels) == set(self.originals):
+            return
         for label in given:
             if label not in self.source.positions:
                 raise InputError(f"{label!a} is no variable of the source", "origin")

@@ -12,7 +12,7 @@ from hubokit.reduction.gadgets.attach import TermPiece, shared_resolution
 from hubokit.reduction.gadgets.base import Domain, StandIn
 from hubokit.reduction.gadgets.enumeration import all_values, enumerated
 from hubokit.reduction.gadgets.spin_product import spin_product
-from hubokit.reduction.gadgets.table import FAMILIES, families_for, family, stand_in, wide_stand_in
+from hubokit.reduction.gadgets.table import FAMILIES, families_for, family, mirror_stand_in, stand_in, wide_stand_in
 
 LARGEST = {
     "negative-monomial": 12,
@@ -20,6 +20,7 @@ LARGEST = {
     "positive-monomial": 9,
     "flipped-literals": 8,
     "spin-product": 16,
+    "spin-product-balanced": 9,
     "spin-split": 8,
 }
 CASES = [
@@ -69,6 +70,19 @@ def test_terms_lighter_than_the_gap_are_widened_and_reach_it(name: str, locality
     assert set(seen.multiplicities) == {1}
     assert seen.gap is not None
     assert seen.gap >= Fraction(5, 2)
+
+
+@pytest.mark.parametrize("locality", [3, 5, 7, 9])
+@pytest.mark.parametrize("sign", [-1, 1])
+def test_a_mirrored_product_of_spins_is_the_same_term_with_opposite_fields(locality: int, sign: int) -> None:
+    own = stand_in("spin-product-balanced", locality, sign, "one-to-one")
+    mirror = mirror_stand_in("spin-product-balanced", locality, sign, "one-to-one")
+    assert mirror is not None
+    seen = enumerated(mirror, 2, 1, "spin")
+    assert seen.minima == [2 * sign * value for value in products(locality, "spin")]
+    assert set(seen.multiplicities) == {1}
+    fields = [part.coefficients(Fraction(2), Fraction(1))[(0,)] for part in (own, mirror)]
+    assert fields[0] == -fields[1] != 0
 
 
 def test_without_a_gap_the_published_forms_have_the_published_ties() -> None:

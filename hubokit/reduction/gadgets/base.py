@@ -95,6 +95,9 @@ class Family:
         ``sign`` is +1 or -1, the sign of the weight.
     source : str
         Authors and year.
+    alternate : bool
+        Whether every second term gets the mirrored stand-in (all variables and auxiliaries flipped, the other sign),
+        so that the fields of neighbouring terms cancel. Spins and odd localities only.
     """
 
     name: str
@@ -102,6 +105,7 @@ class Family:
     applies: Callable[[int, int], bool]
     stand_in: Callable[[int, int, Keep], StandIn]
     source: str
+    alternate: bool = False
 
 
 class Polynomial(dict[tuple[int, ...], Fraction]):
@@ -167,6 +171,13 @@ def joined(parts: Iterable[tuple[StandIn, Mapping[int, int]]], originals: int, *
         first += part.auxiliaries
         tie_free = tie_free and part.tie_free
     return StandIn(originals, first - originals, by_weight.trimmed(), by_gap.trimmed(), tie_free, reach)
+
+
+def mirrored(part: StandIn) -> StandIn:
+    """The stand-in for the other sign of an odd product of spins: every spin and auxiliary flipped."""
+    by_weight = {item: value * (-1) ** len(item) for item, value in part.by_weight.items()}
+    by_gap = {item: value * (-1) ** len(item) for item, value in part.by_gap.items()}
+    return StandIn(part.originals, part.auxiliaries, by_weight, by_gap, part.tie_free, part.reach)
 
 
 def reweighted(part: StandIn, size: int | Fraction, gap: int | Fraction) -> StandIn:

@@ -67,13 +67,15 @@ def enumerated_products(found: Products, originals: int, auxiliaries: int, domai
     unit = lcm(*(value.denominator for value in found.values()))
     whole = {item: int(value * unit) for item, value in found.items()}
     kind: Any = np.int64 if sum(map(abs, whole.values())) < 2**61 else object
-    states = all_values(originals + auxiliaries, domain)
-    energies = np.zeros(len(states), kind)
+    count = originals + auxiliaries
+    states = all_values(count, domain).astype(kind)
+    fields, couplers = np.zeros(count, kind), np.zeros((count, count), kind)
     for item, value in whole.items():
-        product = np.ones(len(states), np.int64)
-        for i in item:
-            product = product * states[:, i]
-        energies = energies + value * product.astype(kind)
+        if len(item) == 1:
+            fields[item] = value
+        elif len(item) == 2:
+            couplers[item] = value
+    energies = states @ fields + ((states @ couplers) * states).sum(axis=1) + whole.get((), 0)
     energies = energies.reshape(2**originals, -1)
     least = energies.min(axis=1)
     excess = energies - least[:, None]

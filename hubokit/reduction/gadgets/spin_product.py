@@ -74,3 +74,13 @@ FAMILY = Family(
     spin_product,
     "derived here; Dattani 2019 lists the forms of three and four spins",
 )
+
+BALANCED = Family(
+    "spin-product-balanced",
+    "spin",
+    lambda locality, sign: locality >= 3 and locality % 2 == 1,
+    spin_product,
+    "derived here",
+    alternate=True,
+)
+"""The same with C = 1 and C = -1 in turn, so that the fields which odd products need cancel between terms."""

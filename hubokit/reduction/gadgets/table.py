@@ -14,7 +14,7 @@ from hubokit.reduction.gadgets import (
     spin_product,
     spin_split,
 )
-from hubokit.reduction.gadgets.base import Family, Keep, StandIn, widened
+from hubokit.reduction.gadgets.base import Family, Keep, StandIn, mirrored, widened
 
 FAMILIES: tuple[Family, ...] = (
     negative_monomial.FAMILY,
@@ -22,6 +22,7 @@ FAMILIES: tuple[Family, ...] = (
     positive_monomial.FAMILY,
     flipped_literals.FAMILY,
     spin_product.FAMILY,
+    spin_product.BALANCED,
     spin_split.FAMILY,
 )
 """In the order in which ties between equally good families are broken."""
@@ -62,6 +63,20 @@ def families_for(domain: str, locality: int, sign: int) -> list[Family]:
 def stand_in(name: str, locality: int, sign: int, keep: Keep) -> StandIn:
     """The stand-in of a family, made once."""
     return family(name).stand_in(locality, sign, keep)
+
+
+@cache
+def mirror_stand_in(name: str, locality: int, sign: int, keep: Keep) -> StandIn | None:
+    """The stand-in for every second term, where the family alternates.
+
+    Examples
+    --------
+    >>> mirror_stand_in("spin-product", 3, 1, "energies") is None
+    True
+    """
+    if not family(name).alternate:
+        return None
+    return mirrored(stand_in(name, locality, -sign, keep))
 
 
 @cache
