@@ -9,7 +9,7 @@ import typer
 
 from hubokit.cli import describing, options, summary
 from hubokit.cli.progress import bar
-from hubokit.cli.text import count, fields, number, section, size_of, table
+from hubokit.cli.text import count, fields, number, section, table
 from hubokit.preparation import Prepared, prepare
 
 
@@ -53,14 +53,14 @@ def command(
 def screen(made: Prepared, file: str) -> str:
     """The whole result on one screen: source, reduction, verdict, files."""
     source = [*describing.model_fields(made.reduction.source), *ground_fields(made)]
-    rows = [[name, size_of(path.stat().st_size), made.files[name]] for name, path in made.paths.items()]
+    rows = [[name, what] for name, what in made.files.items()]
     out = [("left out", f"{name}: {reason}") for name, reason in made.left_out.items()]
     return "\n".join(
         [
             section(f"SOURCE  {file}", fields(source)),
             section("REDUCTION", describing.reduction_text(made.reduction)),
             section("VERDICT", describing.claim_table(made.verdict), *_findings(made)),
-            section(f"FILES  {made.folder}", table(["file", "size", "what it is"], rows, align="lr"), fields(out)),
+            section(f"FILES  {made.folder}", table(["file", "what it is"], rows), fields(out)),
         ]
     )
 
