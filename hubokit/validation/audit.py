@@ -9,10 +9,6 @@ rejected.
 
 from __future__ import annotations
 
-import hashlib
-import json
-import re
-import unicodedata
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
@@ -20,8 +16,10 @@ from itertools import product
 from typing import Any
 
 from hubokit.errors import InputError
-from hubokit.validation.audit_certificate import Rejected, follow, multiplicity_at
+from hubokit.validation.audit_certificate import follow, multiplicity_at
+from hubokit.validation.audit_models import Model, digest, rational, read_model, related, relation_of, scaled
 from hubokit.validation.audit_polynomials import Key, Poly, TooLarge, add, add_product, value_at, values_of
+from hubokit.validation.audit_proof import Rejected
 
 #: States, auxiliaries included, that are visited by brute force, and multiplications that this may take.
 MOST_STATES, MOST_WORK = 2**16, 2**25
@@ -63,22 +61,6 @@ class AuditReport:
         return "\n".join(f"{item.name:<18} {item.result:<15} {item.detail}".rstrip() for item in self.items)
 
 
-@dataclass(frozen=True)
-class Model:
-    """A model document in plain numbers: terms by sorted positions, as integers in units of the resolution."""
-
-    domain: str
-    convention: str
-    labels: tuple[str, ...]
-    resolution: Fraction
-    constant: Fraction
-    terms: Poly
-
-    def energy(self, state: Mapping[str, int]) -> Fraction:
-        """The energy of a state given by names."""
-        return self.constant + self.resolution * value_at(self.terms, [state[label] for label in self.labels])
-
-
 def audit(verdict: Mapping[str, Any], source: Mapping[str, Any], model: Mapping[str, Any]) -> AuditReport:
     """Check a verdict again.
 
@@ -102,56 +84,6 @@ def audit(verdict: Mapping[str, Any], source: Mapping[str, Any], model: Mapping[
         if isinstance(fault, InputError):
             raise
         raise InputError(f"a document is not of the expected form: {type(fault).__name__} {fault}") from None
-
-
-def rational(text: Any) -> Fraction:
-    """A rational string or integer, of bounded length."""
-    if type(text) is int:
-        return Fraction(text)
-    if not isinstance(text, str) or len(text) > 5000 or not re.fullmatch(r"[+-]?\d+(/\d+)?", text):
-        raise InputError(f"not a rational: {str(text)[:40]!r}")
-    return Fraction(text)
-
-
-def read_model(document: Mapping[str, Any]) -> Model:
-    """A model document in plain numbers."""
-    labels = tuple(unicodedata.normalize("NFC", label) for label in document["variables"])
-    if len(set(labels)) < len(labels) or document["domain"] not in ("spin", "boolean"):
-        raise InputError("variables repeat, or the domain is neither spin nor boolean")
-    terms: Poly = {}
-    for block in document["terms"]:
-        for members, weight in zip(block["members"], block["weights"], strict=True):
-            key = tuple(sorted(members))
-            if len(set(key)) < len(key) or not all(type(i) is int and 0 <= i < len(labels) for i in key):
-                raise InputError(f"a term has the members {members}")
-            add(terms, key, int(rational(weight)))
-    constant, unit = rational(document["constant"]), rational(document["resolution"])
-    return Model(document["domain"], document.get("convention", "1-2x"), labels, unit, constant, terms)
-
-
-def digest(model: Model) -> str:
-    """SHA-256 over the canonical JSON of the function: names sorted, coefficients in lowest terms."""
-    order = sorted(range(len(model.labels)), key=lambda position: model.labels[position])
-    rank = {position: place for place, position in enumerate(order)}
-    sizes: dict[int, list[tuple[Key, int]]] = {}
-    for key, weight in model.terms.items():
-        sizes.setdefault(len(key), []).append((tuple(sorted(rank[i] for i in key)), weight))
-    blocks = [
-        {
-            "coefficients": [str(weight * model.resolution) for _, weight in sorted(block)],
-            "locality": size,
-            "members": [list(key) for key, _ in sorted(block)],
-        }
-        for size, block in sorted(sizes.items())
-    ]
-    whole = {
-        "constant": str(model.constant),
-        "domain": model.domain,
-        "terms": blocks,
-        "variables": [model.labels[position] for position in order],
-    }
-    text = json.dumps(whole, separators=(",", ":"), ensure_ascii=False)
-    return "sha256:" + hashlib.sha256(text.encode()).hexdigest()
 
 
 class _Audit:
@@ -325,7 +257,7 @@ class _Audit:
     def _bits(self, state: Mapping[str, int]) -> dict[int, int] | None:
         """Bits of the originals by position for a source state, None where the model has no such state."""
         found: dict[int, int] = {}
-        low, high = values_of(self.model.domain)
+        low = values_of(self.model.domain)[0]
         for label in self.source.labels:
             column, p, q = self.link[label]
             if state[label] not in values_of(self.source.domain):
@@ -443,27 +375,3 @@ class _Audit:
             return True
         bound = self.scale * rational(witness["source_energy"]) + self.shift
         return rational(witness["model_energy"]) < bound
-
-
-def scaled(E: Poly, scale: Fraction, shift: Fraction) -> Poly:
-    """scale * E + shift."""
-    found: Poly = {key: scale * value for key, value in E.items()}
-    add(found, (), shift)
-    return found
-
-
-def related(P: Poly, E: Poly) -> tuple[Fraction, Fraction] | None:
-    """alpha > 0 and beta of P = alpha E + beta as polynomials (alpha = 1 where E is constant), or None."""
-    terms = sorted(key for key in E if key)
-    scale = Fraction(P.get(terms[0], 0)) / E[terms[0]] if terms else Fraction(1)
-    shift = P.get((), 0) - scale * E.get((), 0)
-    return (scale, Fraction(shift)) if scale > 0 and scaled(E, scale, shift) == P else None
-
-
-def relation_of(pairs: Sequence[tuple[Fraction, Fraction]]) -> tuple[Fraction, Fraction] | None:
-    """The same from sorted pairs (E, P) of states."""
-    (first, level), (last, top) = pairs[0], pairs[-1]
-    scale = (top - level) / (last - first) if last != first else Fraction(1)
-    shift = level - scale * first
-    good = scale > 0 and all(value == scale * energy + shift for energy, value in pairs)
-    return (scale, shift) if good else None

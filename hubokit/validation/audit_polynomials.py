@@ -1,4 +1,4 @@
-"""Polynomials for the audit: dictionaries from sorted tuples of positions to integers or fractions. Nothing clever."""
+"""Polynomials for the audit: dictionaries from sorted tuples of positions to integers or fractions."""
 
 from __future__ import annotations
 

@@ -26,7 +26,7 @@ from math import lcm
 
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.trail import Step, Trail
-from hubokit.reduction.gadgets.table import FAMILIES
+from hubokit.reduction.planner import methods
 from hubokit.reduction.reduce import reduce
 from hubokit.reduction.result import Reduction
 from hubokit.validation.check import check
@@ -77,7 +77,7 @@ def table(H: Hamiltonian, labels: tuple[str, ...]) -> tuple[list[int], int]:
 
 
 def model_state(reduction: Reduction, state: dict[str, int]) -> dict[str, int] | None:
-    """Values of the model's originals for a source state, None where two demands conflict or a fixed value differs."""
+    """Values of the model's originals for a source state, None where the model has no such state."""
     source, model = reduction.source, reduction.model
     found: dict[str, int] = {}
     for label, value in state.items():
@@ -198,7 +198,7 @@ def random_reduction(rng: random.Random) -> Reduction:
     """One of our own reductions, every family in turn, small enough for brute force."""
     while True:
         source = random_source(rng)
-        method = rng.choice(("auto", *METHODS))
+        method = rng.choice(METHODS)
         made = reduce(
             source,
             method=method,
@@ -210,7 +210,7 @@ def random_reduction(rng: random.Random) -> Reduction:
             return made
 
 
-METHODS = tuple(family.name for family in FAMILIES)
+METHODS = tuple(methods())
 
 
 def respelled(reduction: Reduction, rng: random.Random) -> Reduction:
