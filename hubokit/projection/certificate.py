@@ -32,7 +32,8 @@ counting
     The same with ``classes`` (columns), ``signs`` (of the columns) and ``coupling`` by class; ``minimum`` is flat in C order over the numbers of
     sign-adjusted set bits in each class.
 states
-    ``auxiliaries``, ``touched``, ``minimum``, ``multiplicity``: a whole cluster minimised state by state.
+    ``auxiliaries``, ``touched`` (originals), ``minimum``, ``multiplicity``: the terms that hold the auxiliaries minimised state by state, with the
+    known auxiliaries at their values.
 
 P is what F' holds without undecided auxiliaries, plus factor times the polynomials of the tables, with the known auxiliaries put in, last first.
 """
@@ -40,19 +41,21 @@ P is what F' holds without undecided auxiliaries, plus factor times the polynomi
 from __future__ import annotations
 
 from collections import Counter
-from typing import TYPE_CHECKING, Any
+from fractions import Fraction
+from typing import Any
 
 import numpy as np
 
+from hubokit.model.numbers import format_fraction
 from hubokit.projection.clusters import Batch, shapes
 from hubokit.projection.counting import classes_of, count
+from hubokit.projection.findings import Findings, Listed, RuleStep, SharedStep, Step
 from hubokit.projection.guards import Rules
 from hubokit.projection.result import GapBound
 from hubokit.projection.settle import Settled, tables_of
+from hubokit.projection.shared_bounds import PARTS
 from hubokit.projection.structure import Integers
 
-if TYPE_CHECKING:
-    from hubokit.projection.findings import Findings, RuleStep
 
 LIMIT = 200_000
 """Integers that a certificate may hold."""
@@ -87,24 +90,29 @@ def certificate(findings: Findings, multiplicity: int | None, gap: GapBound | No
             counts[_name(step)] += _auxiliaries(step)
         del document["auxiliaries"]
         return document | {"omitted": "size", "counts": dict(sorted(counts.items()))}
-    written = [_settled(step, domain) if isinstance(step, Settled) else _rules(step) for step in findings.steps]
-    return document | {"steps": written}
+    return document | {"steps": [_written(step, domain) for step in findings.steps]}
 
 
-def _name(step: Settled | RuleStep) -> str:
+def _name(step: Step) -> str:
     if isinstance(step, Settled):
         return "counting" if step.method == "counting" else "tables"
-    return "guards"
+    if isinstance(step, Listed):
+        return "states"
+    return "shared" if isinstance(step, SharedStep) else "guards"
 
 
-def _auxiliaries(step: Settled | RuleStep) -> int:
+def _auxiliaries(step: Step) -> int:
     if isinstance(step, Settled):
-        return step.batch.auxiliaries.size
+        return int(step.batch.auxiliaries.size)
+    if isinstance(step, Listed):
+        return len(step.auxiliaries)
     return sum(len(rules) for rules in step.rules)
 
 
-def _entries(step: Settled | RuleStep, domain: str) -> int:
+def _entries(step: Step, domain: str) -> int:
     """How many integers a step will write down; no table is made for this."""
+    if isinstance(step, Listed):
+        return len(step.auxiliaries) + len(step.touched) + 2 * len(step.minimum)
     if isinstance(step, Settled):
         distinct, a, d = len(step.distinct), step.batch.a, step.batch.d
         if step.method == "counting":
@@ -112,17 +120,35 @@ def _entries(step: Settled | RuleStep, domain: str) -> int:
         else:
             cells = distinct << d
         return len(step.batch) * (a + d + 2) + distinct * (a + a * d + a * a) + cells
-    return sum(len(rules) * (rules.g + 3 + (1 << rules.g)) for rules in step.rules)
+    shares = 5 * len(step.shares) if isinstance(step, SharedStep) else 0
+    return shares + sum(len(rules) * (rules.g + 3 + (1 << rules.g)) for rules in step.rules)
 
 
-def _rules(step: RuleStep) -> dict[str, Any]:
-    rows = [(y, rules, index) for rules in step.rules for index, y in enumerate(rules.auxiliaries.tolist())]
+def _written(step: Step, domain: str) -> dict[str, Any]:
+    if isinstance(step, Settled):
+        return _settled(step, domain)
+    if isinstance(step, Listed):
+        return {
+            "step": "states",
+            "auxiliaries": step.auxiliaries.tolist(),
+            "touched": step.touched.tolist(),
+            "minimum": [int(energy) for energy in step.minimum],
+            "multiplicity": _one_or_all(step.multiplicity),
+        }
+    rows = _rules(step.rules)
+    margins = rows.pop("margins")
+    if isinstance(step, RuleStep):
+        return {"step": "guards", "eliminate": step.at_once, **rows, "margins": margins}
+    shares = [[i, k, r, s, format_fraction(Fraction(part, PARTS))] for i, k, r, s, part in step.shares]
+    return {"step": "shared", **rows, "shares": shares or "equal", "slacks": margins}
+
+
+def _rules(all_rules: list[Rules]) -> dict[str, Any]:
+    rows = [(y, rules, index) for rules in all_rules for index, y in enumerate(rules.auxiliaries.tolist())]
     return {
-        "step": "guards",
-        "eliminate": step.at_once,
         "auxiliaries": [y for y, _, _ in rows],
         "guards": [rules.guards[index].tolist() for _, rules, index in rows],
-        "functions": [text for rules in step.rules for text in function_texts(rules)],
+        "functions": [text for rules in all_rules for text in function_texts(rules)],
         "margins": [int(rules.margin[index]) for _, rules, index in rows],
     }
 

@@ -132,10 +132,10 @@ def components(structure: Structure, chosen: Positions) -> Components:
     if both.any():
         first, second = index[ends[both]].T
         graph = coo_array((np.ones(len(first), np.int8), (first, second)), shape=(len(chosen), len(chosen)))
-        count, cluster = connected_components(graph, directed=False)
-        cluster = cluster.astype(np.int64)
+        count, labels = connected_components(graph, directed=False)
+        cluster = labels.astype(np.int64)
     else:
-        count, cluster = len(chosen), np.arange(len(chosen))
+        count, cluster = len(chosen), np.arange(len(chosen), dtype=np.int64)
     order = np.lexsort((chosen, cluster))
     link = inside.any(axis=1) & ~both
     side = inside[link, 0]

@@ -2,20 +2,22 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, field
 
 import numpy as np
+from numpy.typing import NDArray
 
 from hubokit.projection.chains import Chain
 from hubokit.projection.guards import Rules
 from hubokit.projection.polynomial import Gathered
 from hubokit.projection.settle import Settled
-from hubokit.projection.structure import Structure
+from hubokit.projection.structure import Integers, Positions, Structure
 
 
 @dataclass(frozen=True)
 class RuleStep:
-    """Rules in the order of the proof.
+    """Auxiliaries decided by interval bounds.
 
     Parameters
     ----------
@@ -28,7 +30,41 @@ class RuleStep:
     rules: list[Rules]
 
 
-Step = Settled | RuleStep
+@dataclass(frozen=True)
+class SharedStep:
+    """Auxiliaries decided together by shared bounds.
+
+    Parameters
+    ----------
+    rules : list of Rules, one for each auxiliary
+    shares : list of (i, k, right bit of i, right bit of k, numerator)
+        Shares that differ from one half, as numerators over `hubokit.projection.shared_bounds.PARTS`.
+    """
+
+    rules: list[Rules]
+    shares: list[tuple[int, int, int, int, int]]
+
+
+@dataclass(frozen=True)
+class Listed:
+    """A cluster minimised state by state.
+
+    Parameters
+    ----------
+    auxiliaries, touched : int64 arrays
+        Its auxiliaries, and the originals on which its minimum depends (directly or through decided auxiliaries).
+    minimum : integer array, shape (2**d,)
+        Least energy of the terms that hold the auxiliaries, in lift order of the touched originals.
+    multiplicity : object array, shape (2**d,)
+    """
+
+    auxiliaries: Positions
+    touched: Positions
+    minimum: Integers
+    multiplicity: Integers
+
+
+Step = Settled | RuleStep | SharedStep | Listed
 
 
 @dataclass
@@ -40,27 +76,51 @@ class Findings:
     structure : Structure
     gathered : Gathered
         Terms of P so far, over originals and decided auxiliaries.
-    settled : list of (Settled, bool)
-        Batches settled by tables or counting; whether they touch originals only.
     rounds : list of rounds of Rules
         In an order in which every guard is known before it is asked for.
     undecided : list of str
-    steps : list of Settled or RuleStep
+    steps : list of steps
         In the order of the proof.
     """
 
     structure: Structure
     gathered: Gathered
-    settled: list[tuple[Settled, bool]] = field(default_factory=list)
     rounds: list[list[Rules]] = field(default_factory=list)
     undecided: list[str] = field(default_factory=list)
     steps: list[Step] = field(default_factory=list)
 
-    def settle(self, settled: Settled) -> None:
-        """Take in a batch settled by tables or counting, whose polynomials are gathered already."""
-        consistent = not self.structure.is_auxiliary[settled.batch.touched].any()
-        self.settled.append((settled, bool(consistent)))
-        self.steps.append(settled)
+    def known(self) -> NDArray[np.bool_]:
+        """Originals and auxiliaries decided by rules, shape (n,)."""
+        known = ~self.structure.is_auxiliary
+        for rules in self.rounds:
+            for one in rules:
+                known[one.auxiliaries] = True
+        return known
+
+    def settled(self) -> Iterator[tuple[Settled, bool]]:
+        """Batches settled by tables or counting, and whether they touch originals only."""
+        for step in self.steps:
+            if isinstance(step, Settled):
+                yield step, not bool(self.structure.is_auxiliary[step.batch.touched].any())
+
+    def listed(self) -> Iterator[Listed]:
+        """Clusters minimised state by state."""
+        return (step for step in self.steps if isinstance(step, Listed))
+
+    def settle(self, step: Settled | Listed) -> None:
+        """Take in clusters whose polynomials are gathered already."""
+        self.steps.append(step)
+
+    def decide(self, step: RuleStep | SharedStep, rules: list[Rules]) -> None:
+        """Take in auxiliaries decided by their guards; the terms that this completes go into P as they stand."""
+        before = self.known()
+        self.rounds.append(rules)
+        self.steps.append(step)
+        after = self.known()
+        fresh = np.flatnonzero(after & ~before)
+        ends, weights = self.structure.ends, self.structure.weights
+        kept = after[ends].all(axis=1) & ~before[ends].all(axis=1)
+        self.gathered.add([(fresh[:, None], self.structure.field[fresh]), (ends[kept], weights[kept])])
 
     def follow(self, chain: Chain) -> None:
         """Take in auxiliaries eliminated in turn, with what their terms became."""

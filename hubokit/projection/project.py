@@ -1,8 +1,7 @@
-"""Projection of a quadratic model: P(x) = min over the auxiliaries of F(x, a), as an explicit polynomial where it can be proved.
+"""Projection of a quadratic model: P(x) = min over the auxiliaries of F(x, a), as a polynomial where it can be proved.
 
-The auxiliaries split into clusters. In this order: small clusters by tables; auxiliaries with a few guards by interval bounds;
-what is left of the other clusters by counting or by larger tables, with the decided auxiliaries among the touched variables and
-put in afterwards. What none of these settles is named in `Projection.undecided`, and P is then not claimed.
+The auxiliaries split into clusters, which `hubokit.projection.stages` settles one way or another. What nothing settles is
+named in `Projection.undecided`, and P is then not claimed; the minimum at given states is exact all the same.
 """
 
 from __future__ import annotations
@@ -19,30 +18,16 @@ from numpy.typing import NDArray
 
 from hubokit.errors import LimitError
 from hubokit.model.hamiltonian import Hamiltonian
-from hubokit.model.states import States, from_bits
-from hubokit.projection.chains import eliminate
-from hubokit.projection.clusters import Components, batches, components
-from hubokit.projection.findings import Findings, RuleStep
-from hubokit.projection.guards import decide
+from hubokit.model.states import States, from_bits, unpack
+from hubokit.projection.findings import Findings, Listed, RuleStep
 from hubokit.projection.minimum import Minimiser
 from hubokit.projection.polynomial import Gathered
 from hubokit.projection.result import ClusterSummary, GapBound, least
-from hubokit.projection.settle import TABLE_WORK, Settled, by_counting, by_tables
-from hubokit.projection.structure import Positions, Structure, structure_of
+from hubokit.projection.settle import Settled
+from hubokit.projection.stages import settle
+from hubokit.projection.structure import Structure, structure_of
 from hubokit.projection.substitution import substituted
 from hubokit.projection.tables import NONE
-
-SMALL = 12
-"""Auxiliaries plus touched variables up to which a cluster is tabulated without looking for guards."""
-
-CHEAP = 2**22
-"""Energies that the tables of a batch may take before chains are tried."""
-
-DENSE = 2**24
-"""Largest number of couplings of one cluster that are written out as a dense array."""
-
-SMALL_WORK = 2**28
-"""Energies that these tables may take together."""
 
 
 @dataclass(frozen=True)
@@ -133,12 +118,18 @@ class Projection:
     def multiplicity_witness(self) -> States | None:
         """A state of the originals (1, originals) with more than one best auxiliary setting, where tables show one."""
         structure = self.findings.structure
-        for settled, consistent in self.findings.settled:
+        for settled, consistent in self.findings.settled():
             shape = settled.shape
             uneven = np.flatnonzero(settled.most[shape] > 1)
             if len(uneven) and consistent:
                 bits = np.zeros((1, len(structure.is_auxiliary)), np.int8)
                 bits[0, settled.batch.touched[uneven[0]]] = settled.witness[shape[uneven[0]]]
+                return from_bits(bits[:, structure.originals], self.model.domain)
+        for listed in self.findings.listed():
+            ties = np.flatnonzero(listed.multiplicity > 1)
+            if len(ties):
+                bits = np.zeros((1, len(structure.is_auxiliary)), np.int8)
+                bits[0, listed.touched] = unpack(ties[:1], len(listed.touched))[0]
                 return from_bits(bits[:, structure.originals], self.model.domain)
         return None
 
@@ -177,117 +168,7 @@ def project(model: Hamiltonian, auxiliaries: Sequence[str], *, table_bits: int =
     >>> P.polynomial.terms(), P.uniform_multiplicity, str(P.gap_everywhere)
     ([(('x', 'y', 'z'), Fraction(-1, 1))], 1, '1')
     """
-    structure = structure_of(model, auxiliaries)
-    findings = Findings(structure, Gathered(model.domain))
-    findings.gathered.add([part for part in structure.direct if len(part[1])])
-    found = components(structure, structure.auxiliaries)
-    rest = _tabulate_small(findings, found, table_bits)
-    if rest.any():
-        waiting = found.members[rest[found.cluster]]
-        findings.rounds = decide(structure, waiting)
-        findings.steps.extend(RuleStep(False, rules) for rules in findings.rounds)
-        _add_decided_terms(findings)
-        _settle_rest(findings, _undecided(findings, waiting), table_bits)
-    return _projection(findings)
-
-
-def _tabulate_small(findings: Findings, found: Components, table_bits: int) -> NDArray[np.bool_]:
-    """Tables for small clusters; returns which clusters are left."""
-    size = found.a + found.d
-    work = np.bincount(size, minlength=SMALL + 1)[: SMALL + 1].astype(object)
-    total, limit = 0, -1
-    for bits, number in enumerate(work):
-        total += int(number) << bits
-        if total > SMALL_WORK:
-            break
-        limit = bits
-    chosen = (size <= limit) & (found.d <= table_bits)
-    for batch in batches(findings.structure, found, chosen):
-        settled = by_tables(batch, findings.structure.domain, findings.gathered, table_bits, TABLE_WORK)
-        if settled is None:
-            chosen[found.cluster[np.isin(found.members, batch.auxiliaries)]] = False
-        else:
-            findings.settle(settled)
-    return ~chosen
-
-
-def _undecided(findings: Findings, waiting: Positions) -> Positions:
-    left = np.zeros(len(findings.structure.is_auxiliary), bool)
-    left[waiting] = True
-    for rules in findings.rounds:
-        for one in rules:
-            left[one.auxiliaries] = False
-    return np.flatnonzero(left)
-
-
-def _add_decided_terms(findings: Findings) -> None:
-    """Terms whose auxiliaries are all decided go into P as they stand, to be put in later."""
-    structure = findings.structure
-    decided = np.zeros(len(structure.is_auxiliary), bool)
-    for rules in findings.rounds:
-        for one in rules:
-            decided[one.auxiliaries] = True
-    plain = decided | ~structure.is_auxiliary
-    kept = plain[structure.ends].all(axis=1)
-    fresh = np.flatnonzero(decided)
-    findings.gathered.add([(fresh[:, None], structure.field[fresh]), (structure.ends[kept], structure.weights[kept])])
-
-
-def _settle_rest(findings: Findings, waiting: Positions, table_bits: int) -> None:
-    """What plain guards leave: counting and cheap tables, then chains, then larger tables, then single states."""
-    if not len(waiting):
-        return
-    found = components(findings.structure, waiting)
-    left = _by_shape(findings, found, np.ones(len(found), bool), table_bits, CHEAP)
-    left = _by_chains(findings, found, left)
-    left = _by_shape(findings, found, left, table_bits, TABLE_WORK)
-    kinds = Counter(zip(found.a[left].tolist(), found.d[left].tolist(), strict=True))
-    for (a, d), number in sorted(kinds.items()):
-        findings.undecided.append(
-            f"{number} cluster{'s' if number > 1 else ''} of {a} coupled auxiliaries touching {d} variables: no few "
-            f"guards decide them, and tables over {d} variables with {a} auxiliaries are too large"
-        )
-
-
-def _by_shape(
-    findings: Findings, found: Components, chosen: NDArray[np.bool_], table_bits: int, work: int
-) -> NDArray[np.bool_]:
-    """Counting or tables for the chosen clusters; returns which of them are left."""
-    structure = findings.structure
-    cluster_of = np.full(len(structure.is_auxiliary), -1)
-    cluster_of[found.members] = found.cluster
-    left = chosen.copy()
-    dense = chosen & (found.a * (found.a + found.d) <= DENSE)
-    for batch in batches(structure, found, dense):
-        settled = by_counting(batch, structure.domain, findings.gathered) or by_tables(
-            batch, structure.domain, findings.gathered, table_bits, work
-        )
-        if settled is not None:
-            findings.settle(settled)
-            left[cluster_of[batch.auxiliaries[:, 0]]] = False
-    return left
-
-
-def _by_chains(findings: Findings, found: Components, chosen: NDArray[np.bool_]) -> NDArray[np.bool_]:
-    """Auxiliaries eliminated in turn, for clusters that come out decided whole; returns which of the chosen are left."""
-    structure = findings.structure
-    known = ~structure.is_auxiliary
-    for rules in findings.rounds:
-        for one in rules:
-            known[one.auxiliaries] = True
-    cluster_of = np.full(len(structure.is_auxiliary), -1)
-    cluster_of[found.members] = found.cluster
-    left = chosen.copy()
-    trying = chosen
-    # A second pass without the clusters that stayed open: the terms of one cluster never meet those of another.
-    while trying.any():
-        chain = eliminate(structure, found.members[trying[found.cluster]], known)
-        if not len(chain.left):
-            findings.follow(chain)
-            return left & ~trying
-        trying = trying.copy()
-        trying[cluster_of[chain.left]] = False
-    return left
+    return _projection(settle(structure_of(model, auxiliaries), table_bits))
 
 
 def _projection(findings: Findings) -> Projection:
@@ -300,12 +181,14 @@ def _projection(findings: Findings) -> Projection:
             polynomial = _over_originals(structure, gathered)
         except LimitError as refused:
             findings.undecided.append(f"P as a polynomial: {refused.message}")
-    bounds = [_gap(settled, model, consistent) for settled, consistent in findings.settled]
+    bounds = [_gap(settled, model, consistent) for settled, consistent in findings.settled()]
     for rules in findings.rounds:
         for one in rules:
             margin = one.margin.min()
             attained = bool(one.attained[one.margin == margin].any())
             bounds.append(GapBound(int(margin) * model.resolution, attained))
+    # Nothing but wholeness is known of the gap of a cluster that was searched state by state.
+    bounds.extend(GapBound(model.resolution, False) for _ in findings.listed())
     clusters_known = polynomial is not None or not any("cluster" in one for one in findings.undecided)
     return Projection(
         model,
@@ -327,12 +210,16 @@ def _gap(settled: Settled, model: Hamiltonian, consistent: bool) -> GapBound:
 
 def _uniform(findings: Findings) -> int | None:
     total = 1
-    for settled, _ in findings.settled:
+    for settled, _ in findings.settled():
         least_of, most_of = settled.least[settled.shape], settled.most[settled.shape]
         if (least_of != most_of).any():
             return None
         for value, number in zip(*np.unique(least_of, return_counts=True), strict=True):
             total *= int(value) ** int(number)
+    for listed in findings.listed():
+        if len(set(listed.multiplicity.tolist())) > 1:
+            return None
+        total *= int(listed.multiplicity[0])
     return total
 
 
@@ -354,9 +241,13 @@ def _over_originals(structure: Structure, gathered: Gathered) -> Hamiltonian:
 
 def _summaries(findings: Findings) -> tuple[ClusterSummary, ...]:
     counted: Counter[tuple[str, int, int]] = Counter()
-    for settled, _ in findings.settled:
+    for settled, _ in findings.settled():
         counted[settled.method, settled.batch.a, settled.batch.d] += len(settled.batch)
-    for rules in findings.rounds:
-        for one in rules:
-            counted["guards", 1, one.g] += len(one)
+    for step in findings.steps:
+        if isinstance(step, Listed):
+            counted["single states", len(step.auxiliaries), len(step.touched)] += 1
+        elif not isinstance(step, Settled):
+            method = "guards" if isinstance(step, RuleStep) else "shared bounds"
+            for one in step.rules:
+                counted[method, 1, one.g] += len(one)
     return tuple(ClusterSummary(method, number, a, d) for (method, a, d), number in sorted(counted.items()))

@@ -7,7 +7,7 @@ import pytest
 
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
-from hubokit.projection import project as module
+from hubokit.projection import stages as module
 from hubokit.projection.project import project
 
 SIZES = [(0, 1), (1, 1), (3, 1), (4, 2), (5, 3), (4, 5), (2, 4), (6, 2)]
