@@ -11,7 +11,7 @@ exactly. No float takes part.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, ClassVar
 
 import numpy as np
 import numpy.typing as npt
@@ -47,6 +47,7 @@ class Candidates:
     layout: Layout
     most: int
     window: int
+    untried: ClassVar[int] = 2**22
 
     def run(self, slab: int, hint: int | None, stop: Stop | None) -> Result:
         """The candidates of one slab, up to the rounded energy `hint`."""

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import ClassVar
 
 import numpy as np
 import numpy.typing as npt
@@ -30,6 +31,7 @@ class EnergyCounts:
     lowest: int
     step: int
     bins: int
+    untried: ClassVar[int] = 2**22
 
     def run(self, slab: int, hint: int | None, stop: Stop | None) -> Result:
         """The counts of one slab."""
@@ -73,6 +75,7 @@ class DistinctEnergies:
 
     polynomial: Polynomial
     layout: Layout
+    untried: ClassVar[int] = 2**22
 
     def run(self, slab: int, hint: int | None, stop: Stop | None) -> Result:
         """The energies of one slab."""
@@ -145,6 +148,7 @@ class LocalMinima:
     polynomial: Polynomial
     held: tuple[int, ...]
     layout: Layout
+    untried: ClassVar[int] = 2**22
 
     def run(self, slab: int, hint: int | None, stop: Stop | None) -> Result:
         """The number in one slab."""

@@ -12,9 +12,6 @@ from hubokit.spectrum.walk import Task
 FASTEST = 1e11
 """States a second that no worker exceeds: what is too long at this rate is refused without a trial."""
 
-TRIAL_STATES = 2**22
-"""Enumerations of fewer states need no trial."""
-
 TRIAL_SECONDS = 0.03
 
 
@@ -53,7 +50,7 @@ def refuse_long(task: Task, left: int, workers: int, time: float | None) -> None
     """
     layout = task.layout
     states = left << (layout.low + layout.walked)
-    if time is None or states < TRIAL_STATES:
+    if time is None or states <= task.untried:
         return
     workers = max(1, min(workers, left))
     seconds, about = states / FASTEST / workers, "at least"

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, ClassVar
 
 import numpy as np
 import numpy.typing as npt
@@ -36,6 +36,7 @@ class LowestLevels:
     layout: Layout
     most: int
     limit: int
+    untried: ClassVar[int] = 2**22
 
     def run(self, slab: int, hint: int | None, stop: Stop | None) -> Result:
         """The lowest levels of one slab; energies of `hint` and above are passed over."""

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable
-from typing import Any, Protocol
+from typing import Any, ClassVar, Protocol
 
 import numpy as np
 import numpy.typing as npt
@@ -42,6 +42,9 @@ class StoppedError(Exception):
 
 class Task(Protocol):
     """What the slabs of one run do."""
+
+    untried: ClassVar[int]
+    """So many states take no time worth an estimate."""
 
     @property
     def layout(self) -> Layout:
