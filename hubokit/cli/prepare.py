@@ -11,6 +11,7 @@ from hubokit.cli import describing, options, summary
 from hubokit.cli.progress import bar
 from hubokit.cli.text import count, fields, number, section, table
 from hubokit.preparation import Prepared, prepare
+from hubokit.preparation.contents import grouped
 
 
 def command(
@@ -53,7 +54,7 @@ def command(
 def screen(made: Prepared, file: str) -> str:
     """The whole result on one screen: source, reduction, verdict, files."""
     source = [*describing.model_fields(made.reduction.source), *ground_fields(made)]
-    rows = [[name, what] for name, what in made.files.items()]
+    rows = [list(row) for row in grouped(made.files)]
     out = [("left out", f"{name}: {reason}") for name, reason in made.left_out.items()]
     return "\n".join(
         [

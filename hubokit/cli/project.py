@@ -18,6 +18,7 @@ from hubokit.errors import LimitError
 from hubokit.exchange.files import refuse_existing, write_text
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import format_fraction
+from hubokit.model.states import change_domain
 from hubokit.reduction.result import Reduction
 
 SHOWN = 20
@@ -29,6 +30,10 @@ def command(
     source: options.Source = None,
     auxiliaries: options.Auxiliaries = None,
     origin: options.OriginOption = None,
+    domain: Annotated[
+        options.Domain | None,
+        typer.Option("--domain", help="Domain of the values in the table; by default that of the reduced model."),
+    ] = None,
     out: Annotated[
         Path | None,
         typer.Option("--output", "-o", metavar="OUT.csv", help="Table of the source states and energies."),
@@ -40,10 +45,13 @@ def command(
     if out is not None:
         refuse_existing(out, force=force)
     reduction, _ = load_reduction(reduced, Elsewhere(source, auxiliaries, origin))
-    given = read_states(states, reduction.model.labels, reduction.model.domain)
+    model = reduction.model
+    written = model.domain if domain is None else domain.value
+    read = read_states(states, model.labels, written)
+    given = change_domain(read, written, model.domain, model.convention)
     answers = reduction.project(given)
     before = exact(reduction.source, reduction.source.integer_energies(answers))
-    after = exact(reduction.model, reduction.model.integer_energies(given))
+    after = exact(model, model.integer_energies(given))
     best = best_energies(reduction, given)
     if out is not None:
         write_text(out, answer_table(reduction.source.labels, answers, before, after, best), force=force)

@@ -29,7 +29,8 @@ def read_states(path: Path, labels: Sequence[str], domain: str) -> NDArray[np.in
     path : Path
         The file: comma-separated, UTF-8, the names of all variables in the first line in any order.
     labels : sequence of str
-        The variables wanted.
+        The variables wanted. Columns ``x1`` to ``xn``, as the formats call them that number their variables, stand
+        for the first to the last of them, where no variable has such a name.
     domain : str
         ``"spin"`` for values +1 and -1, ``"boolean"`` for 0 and 1.
 
@@ -49,7 +50,7 @@ def read_states(path: Path, labels: Sequence[str], domain: str) -> NDArray[np.in
     text = read_text(path, limit=LARGEST)
     rows = csv.reader(io.StringIO(text, newline=""))
     try:
-        header = [name.strip() for name in next(rows, [])]
+        header = _named([name.strip() for name in next(rows, [])], labels)
         places = _places(header, labels, file)
         states = [
             _state(row, header, places, VALUES[domain], domain, rows.line_num, file)
@@ -59,6 +60,14 @@ def read_states(path: Path, labels: Sequence[str], domain: str) -> NDArray[np.in
     except csv.Error as error:
         raise InputError(f"{error}; write plain comma-separated values", f"line {rows.line_num}", file) from None
     return np.array(states, dtype=np.int8).reshape(len(states), len(labels))
+
+
+def _named(header: list[str], labels: Sequence[str]) -> list[str]:
+    """The header with numbered columns under the names of the variables."""
+    numbered = {f"x{i + 1}": label for i, label in enumerate(labels)}
+    if not header or not numbered.keys() >= set(header) or not numbered.keys().isdisjoint(labels):
+        return header
+    return [numbered[name] for name in header]
 
 
 def _places(header: Sequence[str], labels: Sequence[str], file: str) -> list[int]:

@@ -24,6 +24,13 @@ DOCUMENTS = {
 NOT_EXPORTED = ("json", "cnf")
 """The documents stand in the folder anyway; in CNF a weight of w would become w equal clauses."""
 
+EXPORT_LIMIT = 500_000
+"""Terms above which a model is not written in other formats unasked."""
+
+BOOLEAN_ANSWERS = "       hubokit project reduced.json STATES.csv --domain boolean"
+
+BESIDE = "names of the variables, for the formats that number them"
+
 
 def export(reduction: Reduction, place: Path) -> tuple[dict[str, str], dict[str, str]]:
     """Write source and reduced model in every format that takes them.
@@ -45,19 +52,34 @@ def export(reduction: Reduction, place: Path) -> tuple[dict[str, str], dict[str,
             if entry.locality is not None and model.locality > entry.locality:
                 continue
             name = stem + entry.suffixes[0]
-            what = "the design" if stem == "source" else "the reduced model"
-            other = entry.domain not in ("any", model.domain)
+            if len(model) > EXPORT_LIMIT:
+                left_out[name] = f"more than {EXPORT_LIMIT} terms; hubokit convert writes it"
+                continue
+            other = "" if entry.domain in ("any", model.domain) else f" (in {entry.domain} variables)"
             try:
-                write(model, place / name)
-                files[name] = f"{what} in {entry.name.upper()} format" + (
-                    f", in {entry.domain} variables" if other else ""
-                )
+                # The folder is new; only a file of names that two formats share can be there already.
+                write(model, place / name, force=True)
+                files[name] = f"{entry.name}: {entry.carries.removeprefix('any model as ')}{other}"
             except HubokitError as error:
                 left_out[name] = error.message
     for path in sorted(place.iterdir()):
         if path.name not in files and path.name not in DOCUMENTS:
-            files[path.name] = "goes with the file of the same beginning"
+            files[path.name] = BESIDE
     return files, left_out
+
+
+def grouped(files: Mapping[str, str]) -> list[tuple[str, str]]:
+    """Files that are the same kind of thing in one row.
+
+    Examples
+    --------
+    >>> grouped({"source.opb": "opb", "reduced.opb": "opb", "README.txt": "this"})
+    [('source.opb, reduced.opb', 'opb'), ('README.txt', 'this')]
+    """
+    rows: dict[str, list[str]] = {}
+    for name, what in files.items():
+        rows.setdefault(what, []).append(name)
+    return [(", ".join(names), what) for what, names in rows.items()]
 
 
 def readme_text(reduction: Reduction, verdict: Verdict, files: Mapping[str, str], left_out: Mapping[str, str]) -> str:
@@ -73,7 +95,7 @@ def readme_text(reduction: Reduction, verdict: Verdict, files: Mapping[str, str]
     names = [*source.labels[:2], *reduction.auxiliaries[:1]]
     parts = [
         "FILES",
-        *(_folded(f"{name:<20} {what}", 23) for name, what in files.items()),
+        *(_folded(f"{names:<40} {what}", 43) for names, what in grouped(files)),
         *(_folded(f"(not written: {name}: {reason})", 4) for name, reason in left_out.items()),
         "",
         "THE MODELS",
@@ -95,13 +117,18 @@ def readme_text(reduction: Reduction, verdict: Verdict, files: Mapping[str, str]
         _folded(
             "2. Write its answers into a table, STATES.csv: the first line names every variable of reduced.json, "
             f"auxiliaries included, in any order; then one answer a line with the values {first} and {second}. "
-            "Formats that number their variables name them in their comments.",
+            "Columns x1, x2, ... of a format that numbers the variables will do as well.",
             5,
         ),
         _ascii(f"       {','.join(names)},..."),
         f"       {first},{second},...",
         _folded("3. Run"),
         "       hubokit project reduced.json STATES.csv",
+        *(
+            [_folded("     or, where the answers of a file in boolean variables are 0 and 1,", 5, 0), BOOLEAN_ANSWERS]
+            if model.domain == "spin"
+            else []
+        ),
         _folded(
             "   It prints every answer in the variables of the source, with its energy in both models, and whether "
             "the auxiliaries are at their best.",

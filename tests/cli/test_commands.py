@@ -232,6 +232,21 @@ def test_answers_come_back_through_flipped_variables(hubokit: Any, fixtures: Pat
         assert answer["source energy"] == str(source.energy(state))
 
 
+def test_answers_in_numbered_booleans_come_back_to_named_spins(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:
+    reduced = tmp_path / "reduced.json"
+    assert hubokit("reduce", fixtures / "elsewhere-source.json", "-o", reduced).code == 0
+    reduction = hk.read(reduced)
+    lowest = hk.ground_states(reduction.model).states
+    states = tmp_path / "states.csv"
+    rows = [",".join(f"x{i + 1}" for i in range(reduction.model.size))]
+    rows += [",".join(str((1 - value) // 2) for value in state) for state in lowest.tolist()]
+    states.write_text("\n".join(rows) + "\n", encoding="utf-8")
+    assert hubokit("project", reduced, states).code == 2
+    document = of_schema("summary", hubokit("project", reduced, states, "--domain", "boolean", "--json").out)
+    found = [list(answer["state"].values()) for answer in document["answers"]]
+    assert found == reduction.project(lowest).tolist()
+
+
 def test_prepare_prints_the_whole_result_on_one_screen(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:
     done = hubokit("prepare", fixtures / "low-autocorrelation-12.json", "-o", tmp_path / "out")
     assert done.code == 0
