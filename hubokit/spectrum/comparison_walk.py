@@ -212,7 +212,8 @@ class _Factor:
             factors = 1 - 2 * (np.bitwise_count(above & high).astype(np.int64) & 1)
         else:
             factors = (above & ~np.int64(high)) == 0
-        return np.multiply(weights, factors)
+        products: Numbers = weights * factors
+        return products
 
     def _values(self, masks: Numbers, weights: Numbers) -> Numbers:
         table = np.zeros(1 << self.bits, np.int64)
