@@ -71,7 +71,7 @@ def load_cnf(path: str | os.PathLike[str]) -> Reading:
         starts, ends = split_clauses(found)
         if len(ends) != clauses:
             raise InputError(f"the p line says {clauses} clauses, the file holds {len(ends)}", "line 1")
-        if not header.names:
+        if not header.touched:
             read_sidecar(path, header)
         labels = header.labels(count, default_name)
         literals = as_literals(found.numbers, count)

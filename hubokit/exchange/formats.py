@@ -9,10 +9,15 @@ from typing import TYPE_CHECKING
 
 from hubokit.errors import HubokitError, InputError
 from hubokit.exchange import documents
+from hubokit.exchange.arrays import load_arrays, write_arrays
 from hubokit.exchange.cnf import load_cnf, write_cnf
 from hubokit.exchange.documents import Document, as_document, write_document
+from hubokit.exchange.linear_programs import load_program, write_program
+from hubokit.exchange.matrix_market import load_matrix_market, write_matrix_market
 from hubokit.exchange.opb import load_opb, write_opb
+from hubokit.exchange.pauli import load_pauli, write_pauli
 from hubokit.exchange.reading import Reading
+from hubokit.exchange.table import load_table, write_table
 from hubokit.exchange.wcnf import load_wcnf, write_wcnf
 from hubokit.model.hamiltonian import Hamiltonian
 
@@ -63,6 +68,19 @@ FORMATS: dict[str, Format] = {
         Format("opb", (".opb",), load_opb, write_opb, "any model as an integer objective with products", "boolean"),
         Format("wcnf", (".wcnf",), load_wcnf, write_wcnf, "any model as weighted clauses", "boolean"),
         Format("cnf", (".cnf", ".dimacs"), load_cnf, write_cnf, "a model of small weights as clauses", "boolean"),
+        Format("mps", (".mps",), load_program, write_program, "a linear integer program", "boolean", packed=False),
+        Format("lp", (".lp",), load_program, write_program, "a linear integer program", "boolean", packed=False),
+        Format(
+            "matrix-market",
+            (".mtx",),
+            load_matrix_market,
+            write_matrix_market,
+            "a quadratic model as a matrix, spin fields in a file of their own",
+            locality=2,
+        ),
+        Format("npz", (".npz",), load_arrays, write_arrays, "any model as numpy arrays", packed=False),
+        Format("csv", (".csv",), load_table, write_table, "any model as a table of terms"),
+        Format("pauli", (".pauli",), load_pauli, write_pauli, "any model as Pauli-Z strings", "spin"),
     )
 }
 """Every format by its name."""

@@ -14,7 +14,7 @@ from __future__ import annotations
 
 import json
 import os
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
 from pathlib import Path
@@ -47,6 +47,8 @@ class Header:
         Number of the variable in the file, from 1, to its name.
     variables : int, optional
         How many there are.
+    touched : bool
+        Whether the file itself said anything; then a sidecar is not looked for.
     """
 
     domain: str | None = None
@@ -55,6 +57,7 @@ class Header:
     constant: Fraction = Fraction(0)
     names: dict[int, str] = field(default_factory=dict)
     variables: int | None = None
+    touched: bool = False
 
     def take(self, text: str, line: int) -> None:
         """Read one comment line; what is not ours is passed over.
@@ -66,6 +69,7 @@ class Header:
         """
         if not text.startswith("hubokit "):
             return
+        self.touched = True
         place = f"line {line}"
         _, key, *rest = text.split(None, 2)
         number: int | None = None
@@ -200,15 +204,15 @@ def sidecar_path(path: str | os.PathLike[str]) -> Path:
     return target.with_name(Path(stem).stem + ".names.json")
 
 
-def sidecar_text(names: Sequence[str], **facts: str) -> str:
-    """The text of a sidecar: the facts, one a line, and the names, one a line."""
+def sidecar_text(names: Sequence[str], facts: Mapping[str, str]) -> str:
+    """The text of a sidecar: the facts (``file``, the name of the file it belongs to, among them) and the names."""
     lines = [f" {json.dumps(key)}: {json.dumps(value)}" for key, value in facts.items()]
     listed = ",\n  ".join(json.dumps(name, ensure_ascii=False) for name in names)
     return "{" + ",\n".join([*lines, f' "names": [\n  {listed}]'])[1:] + "}\n"
 
 
 def read_sidecar(path: str | os.PathLike[str], header: Header) -> bool:
-    """Take the facts of the sidecar of `path` into the header, where there is one.
+    """Take the facts of the sidecar of `path` into the header, where there is one for this file.
 
     Raises
     ------
@@ -222,6 +226,8 @@ def read_sidecar(path: str | os.PathLike[str], header: Header) -> bool:
         facts = parsed(read_text(side))
         if not isinstance(facts, dict):
             raise InputError("a sidecar is a JSON object")
+        if facts.pop("file", Path(path).name) != Path(path).name:
+            return False
         names = facts.pop("names", [])
         if not isinstance(names, list):
             raise InputError("a list of names is needed", "/names")

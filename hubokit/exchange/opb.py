@@ -54,7 +54,7 @@ def load_opb(path: str | os.PathLike[str]) -> Reading:
         found = opb_words(path, header.take)
         objective, constraints = _statements(found)
         largest = int(np.abs(found.values[found.kinds > NUMBER + 1]).max(initial=0)) if len(found.values) else 0
-        if not header.names:
+        if not header.touched:
             read_sidecar(path, header)
         header.check(largest, len(constraints))
         labels = header.labels(max(header.count(largest), header.said.get("variable", 0)), default_name)

@@ -62,7 +62,7 @@ def load_wcnf(path: str | os.PathLike[str]) -> Reading:
         literals = found.numbers.copy()
         literals[starts] = 0
         literals = as_literals(literals[literals != 0], count)
-        if not header.names:
+        if not header.touched:
             read_sidecar(path, header)
         count = header.count(int(np.abs(literals).max(initial=0))) if count is None else count
         penalty = 1 + sum(weights[~hard].tolist())
