@@ -20,8 +20,8 @@ from hubokit.errors import HubokitError, InputError, LimitError
 from hubokit.model.hamiltonian import Hamiltonian, booleans, spins
 
 if TYPE_CHECKING:
-    from hubokit.exchange.documents import Document, read_document
-    from hubokit.exchange.formats import read, write
+    from hubokit.exchange.documents import Document
+    from hubokit.exchange.formats import read, read_document, write
     from hubokit.preparation import prepare
     from hubokit.reduction.reduce import reduce
     from hubokit.reduction.result import Reduction
@@ -46,7 +46,7 @@ _HOMES = {
     "neighbourhood": "hubokit.spectrum.neighbourhood",
     "prepare": "hubokit.preparation",
     "read": "hubokit.exchange.formats",
-    "read_document": "hubokit.exchange.documents",
+    "read_document": "hubokit.exchange.formats",
     "reduce": "hubokit.reduction.reduce",
     "write": "hubokit.exchange.formats",
 }
