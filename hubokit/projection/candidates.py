@@ -12,6 +12,7 @@ import numpy as np
 
 from hubokit.model.states import from_bits, to_bits
 from hubokit.projection.guards import Rules
+from hubokit.projection.search import local_minima
 from hubokit.projection.shared_bounds import Candidate, FlipProblem
 from hubokit.projection.structure import Integers, Positions, Structure
 
@@ -37,7 +38,8 @@ def known_samples(structure: Structure, rounds: Sequence[Sequence[Rules]], colum
 
 def fitted(problem: FlipProblem, known_bits: Integers) -> Candidate:
     """A candidate from local minima at the sampled states."""
-    bits = descend(problem, known_bits)
+    fields = problem.start + known_bits.astype(problem.linear.dtype) @ problem.linear.T
+    bits = local_minima(fields, problem.pair)[0].astype(np.int64)
     guards, functions = [], []
     for i in range(len(problem.auxiliaries)):
         weight = np.abs(problem.linear[i])
@@ -53,25 +55,6 @@ def fitted(problem: FlipProblem, known_bits: Integers) -> Candidate:
         guards.append(chosen[0])
         functions.append(chosen[1])
     return Candidate(tuple(guards), tuple(functions))
-
-
-def descend(problem: FlipProblem, known_bits: Integers) -> Integers:
-    """Local minima under single flips, shape (m, u): from the fields with every other auxiliary half set."""
-    fields = problem.start + known_bits.astype(problem.linear.dtype) @ problem.linear.T
-    bits = (2 * fields + problem.pair.sum(axis=1) < 0).astype(np.int64)
-    rows = np.arange(len(bits))
-    fields = fields + bits @ problem.pair
-    for _ in range(8 * len(problem.auxiliaries) + 8):
-        change = (1 - 2 * bits) * fields
-        flip = change.argmin(axis=1)
-        falls = change[rows, flip] < 0
-        if not falls.any():
-            break
-        at, which = rows[falls], flip[falls]
-        step = 1 - 2 * bits[at, which]
-        bits[at, which] += step
-        fields[at] += step[:, None] * problem.pair[which]
-    return bits
 
 
 def _majority(guard_bits: Integers, wanted: Integers) -> tuple[Integers, int]:

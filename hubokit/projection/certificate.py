@@ -56,7 +56,6 @@ from hubokit.projection.settle import Settled, tables_of
 from hubokit.projection.shared_bounds import PARTS
 from hubokit.projection.structure import Integers
 
-
 LIMIT = 200_000
 """Integers that a certificate may hold."""
 

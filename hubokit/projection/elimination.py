@@ -44,12 +44,15 @@ class Best:
         Least strictly positive excess; -1 where there is none.
     bits : int8 array, shape (m, a)
         The first of the best settings in lift order.
+    is_gap_exact : bool
+        Whether `gap` is the true one; otherwise a lower bound.
     """
 
     energy: Integers
     multiplicity: Integers
     gap: Integers
     bits: NDArray[np.int8]
+    is_gap_exact: bool = True
 
 
 @dataclass

@@ -15,13 +15,17 @@ from numpy.typing import NDArray
 from hubokit.errors import LimitError
 from hubokit.model.states import States, from_bits, to_bits
 from hubokit.projection.clusters import Batch, Components, batches, components
-from hubokit.projection.elimination import WIDTH_LIMIT, elimination_order, minimise
+from hubokit.projection.elimination import WIDTH_LIMIT, Best, elimination_order, minimise
 from hubokit.projection.guards import Rules
+from hubokit.projection.search import search
 from hubokit.projection.structure import Integers, Positions, Structure
 from hubokit.projection.tables import NONE, fold, least_positive, settings
 
 ENUMERATED = 6
 """Clusters of up to this many auxiliaries are enumerated."""
+
+ELIMINATED = 10
+"""Width up to which a larger cluster is eliminated without trying a search."""
 
 CELLS = 2**23
 """States times variables held at once."""
@@ -89,25 +93,14 @@ class Minimiser:
         chosen = np.flatnonzero(found.a > ENUMERATED)
         return tuple(_inner(self.structure, found.auxiliaries_of(int(one))) for one in chosen)
 
-    @cached_property
-    def width(self) -> int:
-        """Width of the widest elimination."""
-        return max((elimination_order(between)[1] for _, between in self.large), default=0)
-
     def minima(self, originals: States) -> Minima:
         """Best auxiliaries for each row of originals (values of the domain, columns in model order).
 
         Raises
         ------
         LimitError
-            A cluster of auxiliaries is too wide for elimination.
+            A cluster of auxiliaries is too wide for elimination and needs too many branches in a search.
         """
-        if self.width > WIDTH_LIMIT:
-            raise LimitError(
-                f"the minimum over the auxiliaries needs tables over {self.width} of them for every state; "
-                f"at most {WIDTH_LIMIT} are allowed. Check by the neighbourhood of stated states, or ask for a "
-                "reduction with stronger penalties"
-            )
         n = len(self.structure.is_auxiliary)
         step = max(1, CELLS // max(1, n))
         parts = [self._minima(originals[start : start + step]) for start in range(0, len(originals), step)]
@@ -148,12 +141,27 @@ class Minimiser:
         bound = 4 * structure.model.weight_bound
         for auxiliaries, between in self.large:
             f = fields[:, column[auxiliaries]]
-            f, q = in_bits(f, between, domain)
-            best = minimise(f, q, bound)
+            best = _wide(*in_bits(f, between, domain), bound)
             states[:, auxiliaries] = from_bits(best.bits, domain)
             multiplicity = multiplicity * best.multiplicity.astype(object)
             gap = _nearer(gap, best.gap)
+            exact &= best.is_gap_exact
         return Minima(states, multiplicity, gap, exact)
+
+
+def _wide(fields: Integers, between: Integers, bound: int) -> Best:
+    """One cluster of many auxiliaries: eliminated where narrow, else searched, else eliminated all the same."""
+    _, width = elimination_order(between)
+    if width <= ELIMINATED or len(between) <= WIDTH_LIMIT // 2:
+        return minimise(fields, between, bound)
+    try:
+        found = search(fields, between + between.T)
+    except LimitError:
+        if width > WIDTH_LIMIT:
+            raise
+        return minimise(fields, between, bound)
+    # The search tells nothing of what lies above, but F - P is a whole multiple of the resolution.
+    return Best(found.energy, found.multiplicity, np.ones(len(fields), fields.dtype), found.bits, False)
 
 
 def in_bits(fields: Integers, between: Integers, domain: str) -> tuple[Integers, Integers]:

@@ -82,7 +82,7 @@ def search(fields: Integers, pair: Integers, limit: int = BRANCHES) -> Found:
     opened = 0
     for start in range(0, count, ROWS):
         part = slice(start, min(start + ROWS, count))
-        bits, change, energy = _local_minima(fields[part], pair)
+        bits, change, energy = local_minima(fields[part], pair)
         best[part] = energy
         states = np.arange(part.start, part.stop)
         stack = [_Branches(states, energy, change, np.ones(bits.shape, bool), bits)]
@@ -108,7 +108,7 @@ def search(fields: Integers, pair: Integers, limit: int = BRANCHES) -> Found:
     return Found(best, number, first)
 
 
-def _local_minima(fields: Integers, pair: Integers) -> tuple[NDArray[np.int8], Integers, Integers]:
+def local_minima(fields: Integers, pair: Integers) -> tuple[NDArray[np.int8], Integers, Integers]:
     """Bits, cost of each flip and energy at local minima under single flips."""
     bits = (2 * fields + pair.sum(axis=1) < 0).astype(np.int64)
     local = fields + bits @ pair
@@ -146,11 +146,11 @@ def _close(branches: _Branches, pair: Integers) -> None:
     """Settle flips that are in no minimiser or in all, until none is left; in place."""
     while True:
         gains, losses = _joint_costs(branches, pair)
-        never = branches.is_open & (branches.change > gains)
+        never: NDArray[np.bool_] = branches.is_open & (branches.change > gains)
         # Where every open flip costs more than its half of the joint gains, no set of them can pay.
-        hopeless = ((2 * branches.change > gains) | ~branches.is_open).all(axis=1)
-        never |= branches.is_open & hopeless[:, None]
-        always = branches.is_open & ~never & (branches.change < -losses)
+        hopeless = np.all((2 * branches.change > gains) | ~branches.is_open, axis=1)
+        never |= branches.is_open & np.reshape(hopeless, (-1, 1))
+        always = np.asarray(branches.is_open & ~never & (branches.change < -losses))
         if not (never.any() or always.any()):
             return
         branches.is_open &= ~never
@@ -195,8 +195,8 @@ def _keep(leaves: _Branches, best: Integers, number: Integers, first: NDArray[np
     least = leaves.energy[start]
     lengths = np.diff(np.append(start, len(leaves)))
     equal = np.add.reduceat((leaves.energy == np.repeat(least, lengths)).astype(np.int64), start)
-    lower: NDArray[np.bool_] = (least < best[own]) | (number[own] == 0)
-    same = ~lower & (least == best[own])
+    lower = np.asarray((least < best[own]) | (number[own] == 0))
+    same = np.asarray(~lower & (least == best[own]))
     bits = leaves.bits[start]
     best[own[lower]], number[own[lower]] = least[lower], equal[lower].astype(object)
     first[own[lower]] = bits[lower]

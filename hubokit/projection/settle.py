@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from hubokit.model.states import unpack
 from hubokit.projection.clusters import Batch, shapes
-from hubokit.projection.counting import count, symmetric_polynomial
+from hubokit.projection.counting import classes_of, count, symmetric_polynomial
 from hubokit.projection.elimination import elimination_order, minimise
 from hubokit.projection.minimum import in_bits
 from hubokit.projection.polynomial import Gathered
@@ -109,9 +109,11 @@ def affordable(distinct: Batch, work: int) -> bool:
 
 
 def by_counting(batch: Batch, domain: str, gathered: Gathered) -> Settled | None:
-    """Count instead of tabulating, shape by shape; None where some shape has too many classes or terms."""
+    """Count instead of tabulating, shape by shape; None where it does not pay, or some shape has too many terms."""
     distinct, factors, shape = shapes(batch)
     found = []
+    if any(classes_of(one, domain).cells == 1 << batch.d for one in distinct.coupling):
+        return None
     for index in range(len(distinct)):
         counted = count(distinct.taken(np.array([index])), domain)
         if counted is None:

@@ -23,6 +23,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,6 +33,9 @@ from hubokit.projection.structure import Integers, Positions, Structure
 
 PARTS = 64
 """Shares are multiples of 1/64."""
+
+PROGRAM_MOST = 200
+"""Auxiliaries of one cluster for which unequal shares are looked for."""
 
 
 @dataclass(frozen=True)
@@ -149,12 +153,9 @@ def _slack_functions(
 def better_shares(problem: FlipProblem, candidate: Candidate, rounds: int = 12) -> tuple[Integers, Slacks]:
     """Shares that raise the least slack, by a linear program over the worst states met so far.
 
-    Each round solves for the shares that maximise the least slack over those states, rounds them to multiples of
-    1 / `PARTS`, and finds the new worst states. The best shares seen are returned, with their exact slacks.
+    Each round finds the worst states, solves for the shares that maximise the least slack over all of them, and rounds these to
+    multiples of 1 / `PARTS`. The best shares seen are returned, with their exact slacks.
     """
-    from scipy.optimize import linprog
-    from scipy.sparse import csr_array
-
     cases = _cases(problem)
     number = {case: index for index, case in enumerate(cases)}
     shares = equal_shares(problem)
@@ -163,36 +164,46 @@ def better_shares(problem: FlipProblem, candidate: Candidate, rounds: int = 12) 
     rows: list[tuple[dict[int, int], int]] = []
     seen: set[tuple[int, tuple[int, ...]]] = set()
     for _ in range(rounds):
-        if best_slacks.least > 0 or not cases:
-            break
         fresh = [one for one in _worst_states(problem, candidate, current) if one not in seen]
-        if not fresh:
+        if best_slacks.least > 0 or not cases or not fresh:
             break
         seen.update(fresh)
         rows.extend(_constraint(problem, candidate, number, i, bits) for i, bits in fresh)
-        data, columns, starts, right_sides = [], [], [0], []
-        for costs, constant in rows:
-            data.extend([float(c) for c in costs.values()] + [1.0])
-            columns.extend([*costs, len(cases)])
-            starts.append(len(data))
-            right_sides.append(float(constant))
-        matrix = csr_array((data, columns, starts), shape=(len(rows), len(cases) + 1))
-        goal = np.zeros(len(cases) + 1)
-        goal[-1] = -1
-        solved = linprog(
-            goal, A_ub=matrix, b_ub=right_sides, bounds=[(0, 1)] * len(cases) + [(None, None)], method="highs"
-        )
-        if solved.x is None or solved.x[-1] <= 0:
+        values = _programmed(rows, len(cases))
+        if values is None:
             break
         shares = equal_shares(problem)
-        for (i, k, r, s), value in zip(cases, solved.x, strict=False):
-            part = int(round(value * PARTS))
+        for (i, k, r, s), value in zip(cases, values, strict=True):
+            part = round(value * PARTS)
             shares[i, k, r, s] = part
             shares[k, i, s, r] = PARTS - part
         current = slacks(problem, candidate, shares)
         if current.least > best_slacks.least:
             best, best_slacks = shares, current
     return best, best_slacks
+
+
+def _programmed(rows: list[tuple[dict[int, int], int]], count: int) -> list[float] | None:
+    """Shares in [0, 1] that maximise t with ``costs @ shares + t <= constant`` in every row; None where t cannot be positive."""
+    from scipy.optimize import linprog
+    from scipy.sparse import csr_array
+
+    data: list[float] = []
+    columns: list[int] = []
+    starts = [0]
+    for costs, _ in rows:
+        data.extend([float(c) for c in costs.values()] + [1.0])
+        columns.extend([*costs, count])
+        starts.append(len(data))
+    matrix: Any = csr_array((data, columns, starts), shape=(len(rows), count + 1))
+    goal = np.zeros(count + 1)
+    goal[-1] = -1
+    limits: Any = np.array([[0.0, 1.0]] * count + [[-np.inf, np.inf]])
+    sides = np.array([float(constant) for _, constant in rows])
+    solved = linprog(goal, A_ub=matrix, b_ub=sides, bounds=limits, method="highs")
+    if solved.x is None or solved.x[-1] <= 0:
+        return None
+    return [min(1.0, max(0.0, float(value))) for value in solved.x[:-1]]
 
 
 def _cases(problem: FlipProblem) -> list[tuple[int, int, int, int]]:

@@ -5,7 +5,7 @@
 3. Counting, and cheap tables, with the decided auxiliaries among the touched variables.
 4. Auxiliaries eliminated in turn (chains).
 5. Auxiliaries decided together by shared bounds.
-6. Larger tables; then single states, where few originals are behind a cluster of many auxiliaries.
+6. Single states, where few originals are behind a cluster of many auxiliaries; then larger tables.
 """
 
 from __future__ import annotations
@@ -25,7 +25,15 @@ from hubokit.projection.guards import Rules, decide
 from hubokit.projection.polynomial import Gathered
 from hubokit.projection.search import search
 from hubokit.projection.settle import TABLE_WORK, by_counting, by_tables
-from hubokit.projection.shared_bounds import PARTS, Candidate, FlipProblem, better_shares, flip_problem, slacks
+from hubokit.projection.shared_bounds import (
+    PARTS,
+    PROGRAM_MOST,
+    Candidate,
+    FlipProblem,
+    better_shares,
+    flip_problem,
+    slacks,
+)
 from hubokit.projection.structure import Integers, Positions, Structure
 from hubokit.projection.tables import coefficients, written
 
@@ -35,7 +43,7 @@ SMALL = 12
 SMALL_WORK = 2**28
 """Energies that these tables may take together."""
 
-CHEAP = 2**22
+CHEAP = 2**24
 """Energies that the tables of a batch may take before chains are tried."""
 
 DENSE = 2**24
@@ -43,9 +51,6 @@ DENSE = 2**24
 
 SHARED_MOST = 3000
 """Auxiliaries of one cluster for which shared bounds are tried."""
-
-PROGRAM_MOST = 200
-"""Auxiliaries of one cluster for which unequal shares are looked for."""
 
 LISTED_BITS = 16
 """Originals behind a cluster that is minimised state by state."""
@@ -70,9 +75,9 @@ def settle(structure: Structure, table_bits: int) -> Findings:
     left = _by_chains(findings, found, left)
     for cluster in np.flatnonzero(left):
         left[cluster] = not _by_shared_bounds(findings, found.auxiliaries_of(int(cluster)))
-    left = _by_shape(findings, found, left, table_bits, TABLE_WORK)
     for cluster in np.flatnonzero(left):
         left[cluster] = not _by_states(findings, found.auxiliaries_of(int(cluster)), table_bits)
+    left = _by_shape(findings, found, left, table_bits, TABLE_WORK)
     _name_undecided(findings, found, left)
     return findings
 
@@ -141,7 +146,7 @@ def _by_shared_bounds(findings: Findings, auxiliaries: Positions) -> bool:
     candidate = fitted(problem, known_samples(findings.structure, findings.rounds, problem.known))
     found = slacks(problem, candidate)
     shares: Integers | None = None
-    if found.least <= 0 and len(auxiliaries) <= PROGRAM_MOST:
+    if found.least <= 0 and len(auxiliaries) <= PROGRAM_MOST and problem.start.dtype != object:
         shares, found = better_shares(problem, candidate)
     if found.least <= 0:
         return False

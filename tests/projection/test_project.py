@@ -81,6 +81,17 @@ def test_a_projection_that_may_not_tabulate_is_still_true_wherever_it_claims_any
 
 
 @pytest.mark.parametrize("domain", ["spin", "boolean"])
+def test_products_of_products_are_projected_exactly_or_left_open(monkeypatch, enumerated, make_chain, domain):
+    monkeypatch.setattr(module, "SMALL", -1)
+    eliminated = 0
+    for seed in range(100):
+        model, auxiliaries = make_chain(seed, domain)
+        P = assert_projection_is_true(model, auxiliaries, enumerated, table_bits=0 if seed % 2 else 20)
+        eliminated += any(getattr(step, "at_once", False) for step in P.findings.steps)
+    assert eliminated >= 5
+
+
+@pytest.mark.parametrize("domain", ["spin", "boolean"])
 def test_weights_beyond_int64_give_the_same_answers(monkeypatch, enumerated, make_model, domain):
     for small in (12, -1):
         monkeypatch.setattr(module, "SMALL", small)
