@@ -15,6 +15,7 @@ from hubokit.errors import HubokitError, InputError
 from hubokit.exchange.documents import document_to_json, plain_json
 from hubokit.exchange.files import read_text
 from hubokit.exchange.json_text import parsed
+from hubokit.exchange.verdict_document import unpacked
 from hubokit.validation.audit import audit
 
 OUTCOMES = {
@@ -34,7 +35,7 @@ def command(
 
     Models that are not named are looked for beside the verdict, under the names that it gives.
     """
-    judged = _object(verdict)
+    judged = unpacked(_object(verdict))
     reduced = _document(model or _beside(verdict, judged, "model", "--model"))
     source_file = source or _beside(verdict, judged, "source", "--source")
     try:

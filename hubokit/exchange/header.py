@@ -49,6 +49,8 @@ class Header:
         How many there are.
     touched : bool
         Whether the file itself said anything; then a sidecar is not looked for.
+    digest : str, optional
+        Function digest of the model, where a sidecar says it.
     """
 
     domain: str | None = None
@@ -58,6 +60,7 @@ class Header:
     names: dict[int, str] = field(default_factory=dict)
     variables: int | None = None
     touched: bool = False
+    digest: str | None = None
 
     def take(self, text: str, line: int) -> None:
         """Read one comment line; what is not ours is passed over.
@@ -105,6 +108,8 @@ class Header:
             setattr(self, key, as_fraction(value, place))
             if self.scale <= 0:
                 raise InputError(f"the scale is {quoted(value)}; it must be positive", place)
+        elif key == "digest":
+            self.digest = str(value)
         elif key == "variables":
             if type(value) is not int or value < 0:
                 raise InputError(f"the number of variables is a whole number, not {quoted(value)}", place)
@@ -146,10 +151,19 @@ class Header:
 
         Raises
         ------
+        InputError
+            The sidecar belongs to another model.
         LimitError
             The change of domain expands too far.
         """
-        return model if self.domain is None else model.in_domain(self.domain, self.convention)
+        if self.domain is not None:
+            model = model.in_domain(self.domain, self.convention)
+        if self.digest not in (None, model.digest):
+            raise InputError(
+                "the file and its sidecar .names.json do not belong together: the digest is another; "
+                "take the digest out of the sidecar to accept the change"
+            )
+        return model
 
 
 def refuse_many(count: int, place: str | None = None) -> None:
@@ -205,14 +219,14 @@ def sidecar_path(path: str | os.PathLike[str]) -> Path:
 
 
 def sidecar_text(names: Sequence[str], facts: Mapping[str, str]) -> str:
-    """The text of a sidecar: the facts (``file``, the name of the file it belongs to, among them) and the names."""
+    """The text of a sidecar: the facts, one a line, and the names, one a line."""
     lines = [f" {json.dumps(key)}: {json.dumps(value)}" for key, value in facts.items()]
     listed = ",\n  ".join(json.dumps(name, ensure_ascii=False) for name in names)
     return "{" + ",\n".join([*lines, f' "names": [\n  {listed}]'])[1:] + "}\n"
 
 
 def read_sidecar(path: str | os.PathLike[str], header: Header) -> bool:
-    """Take the facts of the sidecar of `path` into the header, where there is one for this file.
+    """Take the facts of the sidecar of `path` into the header, where there is one.
 
     Raises
     ------
@@ -226,8 +240,6 @@ def read_sidecar(path: str | os.PathLike[str], header: Header) -> bool:
         facts = parsed(read_text(side))
         if not isinstance(facts, dict):
             raise InputError("a sidecar is a JSON object")
-        if facts.pop("file", Path(path).name) != Path(path).name:
-            return False
         names = facts.pop("names", [])
         if not isinstance(names, list):
             raise InputError("a list of names is needed", "/names")

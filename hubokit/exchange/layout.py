@@ -57,23 +57,28 @@ def _field(key: str, value: Any, fields: Mapping[str, Any], indent: str) -> Iter
         yield _broken(value, fields["members"], indent)
     elif isinstance(value, (list, tuple)) and value and all(isinstance(item, str) for item in value):
         yield _wrapped(value, indent)
-    elif isinstance(value, (list, tuple)) and any(isinstance(item, Mapping) for item in value):
+    elif isinstance(value, (list, tuple)) and value and all(isinstance(item, Mapping) for item in value):
         yield b"["
         for place, item in enumerate(value):
             yield ((",\n" if place else "\n") + indent + " ").encode()
-            if isinstance(item, Mapping):
-                yield from _object(item, indent + "  ")
-            else:
-                yield _plain(item)
+            yield from _item(item, indent + "  ")
         yield b"]"
-    elif isinstance(value, Mapping) and len(plain := _plain(value)) > WIDTH:
-        yield from _object(value, indent + " ") if _holds_arrays_or_objects(value) else iter([plain])
+    else:
+        yield from _item(value, indent + " ")
+
+
+def _item(value: Any, indent: str) -> Iterator[bytes]:
+    """A value on one line, or an object with a line for each field where it is long or holds arrays of terms."""
+    if isinstance(value, Mapping) and _is_long(value):
+        yield from _object(value, indent)
     else:
         yield _plain(value)
 
 
-def _holds_arrays_or_objects(value: Mapping[str, Any]) -> bool:
-    return any(isinstance(item, (Mapping, list, tuple, np.ndarray)) for item in value.values())
+def _is_long(value: Mapping[str, Any]) -> bool:
+    if isinstance(value.get("members"), np.ndarray) or "terms" in value:
+        return True
+    return len(_plain(value)) > WIDTH and not all(isinstance(item, int) for item in value.values())
 
 
 def _plain(value: Any) -> bytes:

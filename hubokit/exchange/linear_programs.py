@@ -7,14 +7,13 @@ NAME.names.json. Floats carry weights up to 2**53 exactly; larger ones are refus
 from __future__ import annotations
 
 import os
-from pathlib import Path
 
 import numpy as np
 
 from hubokit.errors import HubokitError, InputError
 from hubokit.exchange.cnf import default_name
 from hubokit.exchange.constraints import Constraint, penalty
-from hubokit.exchange.files import refuse_existing, safe_path, write_text
+from hubokit.exchange.files import read_text, refuse_existing, safe_path, write_text
 from hubokit.exchange.header import Header, read_sidecar, refuse_many, sidecar_path, sidecar_text
 from hubokit.exchange.highs_files import highs_read, highs_write
 from hubokit.exchange.literals import literal_model
@@ -44,17 +43,21 @@ def write_program(model: Hamiltonian, path: str | os.PathLike[str], *, force: bo
         raise InputError("a model without variables is no program", file=os.fspath(path))
     boolean = model.in_domain("boolean")
     program = linearised(boolean)
-    refuse_existing(side, force=force)
-    with safe_path(path, force=force) as temporary:
-        highs_write(program, temporary)
     facts = {
-        "file": Path(path).name,
+        "digest": model.digest,
         "domain": model.domain,
         "convention": model.convention,
         "scale": format_fraction(boolean.resolution),
         "constant": format_fraction(boolean.constant),
     }
-    write_text(side, sidecar_text(model.labels, facts), force=force)
+    text = sidecar_text(model.labels, facts)
+    held = side.is_file() and read_text(side) == text  # the .mps and the .lp of one model share it
+    if not held:
+        refuse_existing(side, force=force)
+    with safe_path(path, force=force) as temporary:
+        highs_write(program, temporary)
+    if not held:
+        write_text(side, text, force=force)
 
 
 def read_program(path: str | os.PathLike[str]) -> Hamiltonian:
