@@ -89,16 +89,21 @@ def test_intent_and_notes_of_the_design_travel_into_the_folder(twelve: Prepared)
         assert after.notes == before.notes
 
 
-@pytest.mark.parametrize("name", ["low-autocorrelation-12.json", "greenhouse.json", "satisfiable-20.cnf"])
+def test_scip_finds_the_published_optimum_in_both_files_of_the_twelve_spins(twelve: Prepared) -> None:
+    assert optimum_by_scip(twelve.folder / "source.opb")[0] == 10
+    assert optimum_by_scip(twelve.folder / "reduced.opb")[0] == 10
+
+
+@pytest.mark.parametrize("name", ["greenhouse.json", "satisfiable-20.cnf"])
 def test_another_program_finds_the_same_optimum_in_both_exports(tmp_path: Path, name: str) -> None:
-    made = prepare(FIXTURES / name, tmp_path / "out")
+    made = prepare(FIXTURES / name, tmp_path / "out", exports=["opb"])
     level = hk.ground_states(made.reduction.source, 1)
     assert optimum_by_scip(made.folder / "source.opb")[0] == level.energy
     assert optimum_by_scip(made.folder / "reduced.opb")[0] == level.energy
 
 
 def test_the_answer_of_another_program_to_the_reduced_file_is_a_ground_state_of_the_design(tmp_path: Path) -> None:
-    made = prepare(FIXTURES / "greenhouse.json", tmp_path / "out")
+    made = prepare(FIXTURES / "greenhouse.json", tmp_path / "out", exports=["opb"])
     energy, state = optimum_by_scip(made.folder / "reduced.opb")
     # A variable that the objective does not hold is free, and left out by the program.
     answer = {**dict.fromkeys(made.reduction.model.labels, 0), **state}
@@ -119,13 +124,13 @@ def test_the_answer_of_another_program_to_the_reduced_file_is_a_ground_state_of_
     ],
 )
 def test_every_fixture_is_proved_and_its_ground_energy_named(tmp_path: Path, name: str, ground_energy: int) -> None:
-    made = prepare(FIXTURES / name, tmp_path / "out")
+    made = prepare(FIXTURES / name, tmp_path / "out", exports=["opb"])
     assert made.verdict.holds("one-to-one")
     assert made.figures.ground_energy == ground_energy
 
 
 def test_a_formula_that_no_setting_satisfies_has_a_ground_energy_above_zero(tmp_path: Path) -> None:
-    made = prepare(FIXTURES / "unsatisfiable-20.cnf", tmp_path / "out")
+    made = prepare(FIXTURES / "unsatisfiable-20.cnf", tmp_path / "out", exports=["opb"])
     assert made.verdict.holds("one-to-one")
     assert made.figures.ground_energy is not None
     assert made.figures.ground_energy > 0
@@ -134,7 +139,9 @@ def test_a_formula_that_no_setting_satisfies_has_a_ground_energy_above_zero(tmp_
 @pytest.mark.parametrize("keep", ["ground-states", "energies", "one-to-one"])
 @pytest.mark.parametrize("domain", ["spin", "boolean"])
 def test_what_was_asked_to_be_kept_is_what_is_checked(tmp_path: Path, keep: str, domain: str) -> None:
-    made = prepare(FIXTURES / "low-autocorrelation-08.json", tmp_path / "out", keep=keep, domain=domain)
+    made = prepare(
+        FIXTURES / "low-autocorrelation-08.json", tmp_path / "out", exports=["opb"], keep=keep, domain=domain
+    )
     assert made.verdict.asked == ("quadratic", keep)
     assert made.verdict.holds(keep)
     assert made.reduction.model.domain == domain
@@ -142,20 +149,20 @@ def test_what_was_asked_to_be_kept_is_what_is_checked(tmp_path: Path, keep: str,
 
 def test_a_hamiltonian_is_prepared_as_well_as_a_file(tmp_path: Path) -> None:
     a, b, c = hk.spins("a b c")
-    made = prepare(3 * a * b * c - b + 2, tmp_path / "out")
+    made = prepare(3 * a * b * c - b + 2, tmp_path / "out", exports=["opb"])
     assert made.verdict.holds("one-to-one")
     assert made.figures.ground_energy == -2
     assert hk.read(made.folder / "source.json") == 3 * a * b * c - b + 2
 
 
 def test_a_model_that_is_quadratic_already_needs_no_auxiliaries(tmp_path: Path) -> None:
-    made = prepare(hk.Hamiltonian({("a", "b"): 1, ("a",): "1/3"}, domain="spin"), tmp_path / "out")
+    made = prepare(hk.Hamiltonian({("a", "b"): 1, ("a",): "1/3"}, domain="spin"), tmp_path / "out", exports=["opb"])
     assert made.reduction.auxiliaries == ()
     assert made.verdict.holds("one-to-one")
 
 
 def test_a_constant_design_has_one_level_and_says_so(tmp_path: Path) -> None:
-    made = prepare(hk.Hamiltonian({(): "5/2"}, domain="boolean", labels=["a"]), tmp_path / "out")
+    made = prepare(hk.Hamiltonian({(): "5/2"}, domain="boolean", labels=["a"]), tmp_path / "out", exports=["opb"])
     assert (made.figures.ground_energy, made.figures.degeneracy, made.figures.gap) == (Fraction(5, 2), 2, None)
 
 
@@ -172,14 +179,14 @@ def test_a_run_that_breaks_off_leaves_nothing_behind(tmp_path: Path, monkeypatch
 
     monkeypatch.setattr("hubokit.preparation.job.readme_text", interrupted)
     with pytest.raises(KeyboardInterrupt):
-        prepare(FIXTURES / "greenhouse.json", tmp_path / "out")
+        prepare(FIXTURES / "greenhouse.json", tmp_path / "out", exports=["opb"])
     assert list(tmp_path.iterdir()) == []
 
 
 def test_a_forced_run_that_breaks_off_keeps_the_earlier_folder(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    made = prepare(FIXTURES / "greenhouse.json", tmp_path / "out")
+    made = prepare(FIXTURES / "greenhouse.json", tmp_path / "out", exports=["opb"])
     before = {name: path.read_bytes() for name, path in made.paths.items()}
 
     def interrupted(*_: object) -> str:
@@ -187,16 +194,22 @@ def test_a_forced_run_that_breaks_off_keeps_the_earlier_folder(
 
     monkeypatch.setattr("hubokit.preparation.job.readme_text", interrupted)
     with pytest.raises(KeyboardInterrupt):
-        prepare(FIXTURES / "low-autocorrelation-08.json", tmp_path / "out", force=True)
+        prepare(FIXTURES / "low-autocorrelation-08.json", tmp_path / "out", exports=["opb"], force=True)
     assert [path.name for path in tmp_path.iterdir()] == ["out"]
     assert {name: path.read_bytes() for name, path in made.paths.items()} == before
 
 
+def test_an_export_that_there_is_not_is_named_with_those_there_are(tmp_path: Path) -> None:
+    with pytest.raises(InputError, match="opb"):
+        prepare(FIXTURES / "greenhouse.json", tmp_path / "out", exports=["docx"])
+    assert list(tmp_path.iterdir()) == []
+
+
 def test_force_replaces_the_folder_of_an_earlier_run_whole(tmp_path: Path) -> None:
-    prepare(FIXTURES / "low-autocorrelation-08.json", tmp_path / "out")
+    prepare(FIXTURES / "low-autocorrelation-08.json", tmp_path / "out", exports=["opb"])
     with pytest.raises(InputError, match="exists"):
-        prepare(FIXTURES / "greenhouse.json", tmp_path / "out")
-    made = prepare(FIXTURES / "greenhouse.json", tmp_path / "out", force=True)
+        prepare(FIXTURES / "greenhouse.json", tmp_path / "out", exports=["opb"])
+    made = prepare(FIXTURES / "greenhouse.json", tmp_path / "out", exports=["opb"], force=True)
     assert hk.read(tmp_path / "out" / "source.json").labels[0] == "north-1"
     assert {path.name for path in tmp_path.iterdir()} == {"out"}
     assert json.loads((made.folder / "source.json").read_text(encoding="utf-8"))["domain"] == "boolean"
@@ -209,7 +222,7 @@ def test_a_place_where_no_folder_can_be_made_is_refused(tmp_path: Path, folder: 
     (tmp_path / "file").write_text("mine", encoding="utf-8")
     (tmp_path / "link").symlink_to(tmp_path)
     with pytest.raises(HubokitError, match=reason):
-        prepare(FIXTURES / "greenhouse.json", tmp_path / folder, force=True)
+        prepare(FIXTURES / "greenhouse.json", tmp_path / folder, exports=["opb"], force=True)
 
 
 def test_the_greenhouse_settings_of_the_fixture_are_ground_states() -> None:

@@ -25,6 +25,10 @@ def command(
     evidence: options.EvidenceOption = options.Evidence.auto,
     time: options.Time = 600.0,
     seed: options.Seed = 0,
+    export: Annotated[
+        list[str] | None,
+        typer.Option("--export", metavar="NAME", help="Format to write; several times for several; by default all."),
+    ] = None,
     force: options.Force = False,
     as_json: options.Json = False,
 ) -> None:
@@ -41,6 +45,7 @@ def command(
             evidence=evidence.value,
             time=time,
             seed=seed,
+            exports=options.names(export),
             force=force,
             progress=progress,
         )

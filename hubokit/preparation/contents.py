@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from pathlib import Path
 from textwrap import fill
 from typing import TYPE_CHECKING
 
-from hubokit.errors import HubokitError
+from hubokit.errors import HubokitError, InputError
 from hubokit.model.numbers import format_fraction
 
 if TYPE_CHECKING:
@@ -32,8 +32,28 @@ BOOLEAN_ANSWERS = "       hubokit project reduced.json STATES.csv --domain boole
 BESIDE = "names of the variables, for the formats that number them"
 
 
-def export(reduction: Reduction, place: Path) -> tuple[dict[str, str], dict[str, str]]:
-    """Write source and reduced model in every format that takes them.
+def export_names(asked: Iterable[str] | None) -> tuple[str, ...]:
+    """Names of the formats to write; every one that the folder offers where none is asked for.
+
+    Raises
+    ------
+    InputError
+        No such format, or one that is only read.
+    """
+    from hubokit.exchange.formats import FORMATS
+
+    offered = tuple(name for name, entry in FORMATS.items() if entry.write is not None and name not in NOT_EXPORTED)
+    if asked is None:
+        return offered
+    names = tuple(asked)
+    for name in names:
+        if name not in offered:
+            raise InputError(f"no such export: {name!a}; there are {', '.join(offered)}", "exports")
+    return names
+
+
+def export(reduction: Reduction, place: Path, formats: Iterable[str]) -> tuple[dict[str, str], dict[str, str]]:
+    """Write source and reduced model in every one of the formats that takes them.
 
     Returns
     -------
@@ -45,9 +65,7 @@ def export(reduction: Reduction, place: Path) -> tuple[dict[str, str], dict[str,
     files: dict[str, str] = {}
     left_out: dict[str, str] = {}
     models = {"source": reduction.source, "reduced": reduction.model}
-    for entry in FORMATS.values():
-        if entry.write is None or entry.name in NOT_EXPORTED:
-            continue
+    for entry in (FORMATS[name] for name in formats):
         for stem, model in models.items():
             if entry.locality is not None and model.locality > entry.locality:
                 continue

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import Number
-from hubokit.preparation.contents import DOCUMENTS, export, readme_text
+from hubokit.preparation.contents import DOCUMENTS, export, export_names, readme_text
 from hubokit.preparation.figures import SourceFigures, intent_remarks, source_figures
 from hubokit.preparation.folder import folder_made_beside, refuse_folder
 
@@ -69,6 +69,7 @@ def prepare(
     evidence: str = "auto",
     time: float = 600.0,
     seed: int = 0,
+    exports: Iterable[str] | None = None,
     force: bool = False,
     progress: Callable[[int, int], None] | None = None,
 ) -> Prepared:
@@ -84,6 +85,8 @@ def prepare(
         As for `hubokit.reduce`.
     evidence, time, progress
         As for `hubokit.check`.
+    exports : iterable of str, optional
+        Names of the formats to write beside the documents; by default every one that takes the models.
     force : bool
         Replace a folder that an earlier run made.
 
@@ -113,6 +116,7 @@ def prepare(
 
     target = Path(folder)
     refuse_folder(target, force=force)
+    formats = export_names(exports)
     document = _document_of(thing)
     source = document.model
     reduction = reduce(
@@ -130,8 +134,8 @@ def prepare(
         write_document(replace(document, digests={}), place / "source.json")
         write_document(reduced, place / "reduced.json", source_file="source.json")
         write_document(judged, place / "verdict.json")
-        exports, left_out = export(reduction, place)
-        files = {**DOCUMENTS, **exports}
+        exported, left_out = export(reduction, place, formats)
+        files = {**DOCUMENTS, **exported}
         text = readme_text(reduction, verdict, files, left_out)
         (place / "README.txt").write_text(text, encoding="utf-8")
     return Prepared(target, files, left_out, figures, reduction, verdict)
