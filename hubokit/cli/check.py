@@ -12,11 +12,13 @@ from hubokit.cli import describing, options, summary
 from hubokit.cli.loading import Elsewhere, load_reduction
 from hubokit.cli.progress import bar
 from hubokit.cli.states_file import read_states
+from hubokit.errors import LimitError
 from hubokit.exchange.documents import document_to_json, plain_json
 from hubokit.exchange.files import refuse_existing
 from hubokit.exchange.formats import write
 from hubokit.preparation.figures import intent_remarks
 from hubokit.validation.check import check
+from hubokit.validation.verdict import Verdict
 
 
 def command(
@@ -55,6 +57,7 @@ def command(
             progress=progress,
             time=time,
         )
+    _refuse_undone(verdict, evidence, reduced)
     least = verdict.figures.get("source-ground-energy")
     remarks = intent_remarks(document.intent, reduction.source, None if least is None else least.value)
     verdict = replace(verdict, notes=(*verdict.notes, *remarks))
@@ -65,3 +68,12 @@ def command(
     else:
         print(describing.verdict_text(verdict))
     raise typer.Exit(verdict.exit_code)
+
+
+def _refuse_undone(verdict: Verdict, evidence: options.Evidence, file: Path) -> None:
+    """Raise where a walk that was asked for by name was refused for its size, so that nothing was settled."""
+    if evidence not in (options.Evidence.exhaustion, options.Evidence.elimination):
+        return
+    asked = [verdict.claims[name] for name in verdict.asked if name != "quadratic"]
+    if asked and all(claim.status == "open" for claim in asked):
+        raise LimitError(f"{asked[0].detail}; --evidence projection or auto may decide it", "--evidence", str(file))
