@@ -1,9 +1,9 @@
 """Certificate steps that decide auxiliaries by rules: guards with interval bounds, and shared bounds.
 
-An auxiliary y is decided by its guards when the *field* F(y at bit 1) - F(y at bit 0) has one strict sign for every
-setting of the guards, whatever all other variables are: then y is that bit in every minimiser. Several y are decided
-together when from their right values no set of flips pays: each flip costs more than its share of what pairs of
-flips can gain.
+An auxiliary y is decided by its guards when the *field* F(y at bit 1) - F(y at bit 0) has one strict sign
+for every setting of the guards, whatever all other variables are: then y is that bit in every minimiser.
+Several y are decided together when from their right values no set of flips pays: each flip costs more than
+its share of what pairs of flips can gain.
 """
 
 from __future__ import annotations

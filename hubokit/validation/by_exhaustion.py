@@ -15,7 +15,7 @@ from hubokit.validation.tables import Tables, tables_by_blocks, tables_from_mode
 def by_exhaustion(case: Case, options: Options, found: Findings) -> None:
     """Settle every claim from tables over all states, or from a streamed comparison where these are too large."""
     try:
-        tables = small_tables(case, found)
+        tables = small_tables(case, found, options.time)
     except LimitError as refusal:
         from hubokit.validation.by_levels import by_enumeration
 
@@ -36,7 +36,7 @@ def by_exhaustion(case: Case, options: Options, found: Findings) -> None:
         found.inversions = inversions_below(judge, options.below)
 
 
-def small_tables(case: Case, found: Findings) -> Tables:
+def small_tables(case: Case, found: Findings, seconds: float) -> Tables:
     """Tables over all states: from P where projection gave it, else from the model itself, else state by state.
 
     Raises
@@ -50,4 +50,4 @@ def small_tables(case: Case, found: Findings) -> Tables:
     try:
         return tables_from_model(case)
     except LimitError:
-        return tables_by_blocks(case)
+        return tables_by_blocks(case, seconds)

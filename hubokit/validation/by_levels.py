@@ -32,6 +32,8 @@ from hubokit.validation.verdict import Figure, StateList, Witness
 
 Ground = Callable[[Hamiltonian], Level]
 
+#: Variables beyond which only sparse models have their ground level sought, and the terms of those at most.
+ENUMERABLE, SPARSE_TERMS = 62, 20_000
 #: Ground states that are listed to compare two levels state by state.
 COMPARED = 100_000
 
@@ -66,7 +68,10 @@ def by_enumeration(case: Case, options: Options, found: Findings, refusal: str) 
 def _by_levels(case: Case, options: Options, found: Findings, ground: Ground, method: str) -> None:
     polynomial = case.projection.polynomial if found.used("projection") else None
     try:
-        source = ground(case.source)
+        for H in (case.source, case.model if polynomial is None else polynomial):
+            if H.size > ENUMERABLE and len(H) > SPARSE_TERMS:
+                raise LimitError(f"{H.size:,} variables and {len(H):,} terms are beyond enumeration and elimination")
+        source = found.source_level = ground(case.source)
         if polynomial is None:
             probe(case, found, method, case.original_states(source.states[:64]))
             levels = Levels(case, found, ground, method, source, ground(case.model))

@@ -21,14 +21,16 @@ from hubokit.validation.findings import Findings
 from hubokit.validation.probing import columns_at
 from hubokit.validation.scaling import Column, Relation, column_relation, judge_scale
 from hubokit.validation.tables import comparable_columns
+from hubokit.validation.verdict import Witness
 
 METHOD = "neighbourhood"
 #: Radius where none is given, and states visited at most.
 RADIUS, VISITED = 2, 200_000
 #: Entries (states times variables) held at most.
-ENTRIES = 2**27
-#: Random starts of the descent that finds centres, and centres taken from it.
-STARTS, CENTRES = 64, 4
+ENTRIES = 2**28
+#: Random starts of the descent that finds centres, centres taken from it, and terms evaluated on the way at
+#: most.
+STARTS, CENTRES, DESCENT = 64, 4, 2**30
 
 
 def by_neighbourhood(case: Case, options: Options, found: Findings) -> None:
@@ -37,7 +39,7 @@ def by_neighbourhood(case: Case, options: Options, found: Findings) -> None:
         _leave(options, found, "the model is not quadratic")
         return
     try:
-        states, account = visited(case, options)
+        states, account = visited(case, options, found)
         originals, known = case.original_states(states)
         originals = originals[known]
         if not len(originals):
@@ -53,6 +55,7 @@ def by_neighbourhood(case: Case, options: Options, found: Findings) -> None:
         if found.scale_from == "found":
             found.note("scale and shift were found on the visited states alone")
     _judge(case, found, account, (originals, best), (E, P), counts, relation)
+    _against_ground_states(case, found, account, (originals, best), P, counts)
     found.evidence.append({"kind": METHOD, "account": account})
 
 
@@ -61,7 +64,7 @@ def _leave(options: Options, found: Findings, reason: str) -> None:
         found.leave_open(name, f"{METHOD}: {reason}")
 
 
-def visited(case: Case, options: Options) -> tuple[States, str]:
+def visited(case: Case, options: Options, found: Findings) -> tuple[States, str]:
     """Distinct source states within the radius of the centres, and a phrase that counts them.
 
     Raises
@@ -71,17 +74,26 @@ def visited(case: Case, options: Options) -> tuple[States, str]:
     LimitError
         More states than may be held, with their number.
     """
-    radius = RADIUS if options.radius is None else options.radius
+    n = case.source.size
+    centres = None if options.around is None else case.source.states(options.around)
+    many = CENTRES if centres is None else len(centres)
+    most = min(VISITED, ENTRIES // max(1, n, case.model.size))
+
+    def number(radius: int) -> int:
+        return sum(comb(n, flips) for flips in range(min(radius, n) + 1)) * many
+
+    radius = options.radius
+    if radius is None:
+        radius = next((r for r in range(RADIUS, 0, -1) if number(r) <= most), 0)
     if radius < 0:
         raise InputError(f"the radius is {radius}; it must be at least 0", place="radius")
-    n = case.source.size
-    centres = descended(case) if options.around is None else case.source.states(options.around)
-    number = sum(comb(n, flips) for flips in range(min(radius, n) + 1)) * len(centres)
-    if number > VISITED or number * max(n, len(case.model.labels)) > ENTRIES * 8:
+    if number(radius) > most:
         raise LimitError(
-            f"{number:,} states lie within radius {radius} of {len(centres)} centres; "
-            f"at most {VISITED:,} are visited: take a smaller radius or fewer centres"
+            f"{number(radius):,} states lie within radius {radius} of {many} centres; "
+            f"at most {most:,} of this model are visited: take a smaller radius or fewer centres"
         )
+    if centres is None:
+        centres = descended(case, found)
     bits = to_bits(centres, case.source.domain)
     flips = [
         np.array(chosen, np.int64) for size in range(min(radius, n) + 1) for chosen in combinations(range(n), size)
@@ -96,15 +108,22 @@ def visited(case: Case, options: Options) -> tuple[States, str]:
     return from_bits(states, case.source.domain), account
 
 
-def descended(case: Case) -> States:
-    """Centres: the lowest distinct states that single-flip descent reaches from seeded random starts."""
+def descended(case: Case, found: Findings) -> States:
+    """Centres: ground states of E where they are known, else the lowest distinct states that descent reaches.
+
+    The descent flips one variable at a time from seeded random starts.
+    """
+    if found.source_level is not None:
+        known: States = found.source_level.states[:CENTRES]
+        return known
     E = case.source
     rng = np.random.default_rng(0)
-    starts = max(1, min(STARTS, 2**22 // max(E.size, 1)))
+    starts = STARTS if len(E) * E.size * STARTS * 3 <= DESCENT else CENTRES
+    flips = min(E.size, DESCENT // (3 * starts * max(len(E), 1)))
     bits = rng.integers(0, 2, (starts, E.size), np.uint8)
     energy = E.integer_energies(from_bits(bits, E.domain))
     for _ in range(3):
-        for column in rng.permutation(E.size)[: 2**22 // max(E.size, 1)]:
+        for column in rng.permutation(E.size)[:flips]:
             bits[:, column] ^= 1
             turned = E.integer_energies(from_bits(bits, E.domain))
             worse = turned >= energy
@@ -144,6 +163,42 @@ def _judge(
     elif not len(off):
         found.test("one-to-one", METHOD, account)
     _ground_claims(found, account, (left, right), counts)
+
+
+def _against_ground_states(
+    case: Case,
+    found: Findings,
+    account: str,
+    states: tuple[States, States],
+    P: Column,
+    counts: NDArray[np.object_],
+) -> None:
+    """Where the ground states of E are known: one visited state that lies below one of them settles the claims."""
+    level = found.source_level
+    if level is None:
+        return
+    originals, known = case.original_states(level.states[:VISITED])
+    if not known.any():
+        return
+    _, reduced, best, many = columns_at(case, originals[known])
+    own = originals[known]
+    high, low = int(reduced.integers.argmax()), int(P.integers.argmin())
+
+    def at_ground(row: int) -> Witness:
+        return case.witness(own[row], best[row], "projection", int(many[row]), reduced[row])
+
+    visited_low = case.witness(states[0][low], states[1][low], "projection", int(counts[low]), P[low])
+    if P[low] < reduced[high] and not found.settled("ground-states"):
+        text = f"a ground state of E does not minimise P: a visited state lies below it; {account}"
+        found.refute("ground-states", METHOD, text, at_ground(high), visited_low)
+    most, fewest = int(np.argmax(many)), int(np.argmin(many))
+    if many[most] != many[fewest] and not found.settled("even-multiplicity"):
+        text = f"m runs from {many[fewest]} to {many[most]} over the ground states of E"
+        found.refute("even-multiplicity", METHOD, text, at_ground(most), at_ground(fewest))
+    target = found.scale * level.energy + found.shift
+    if P[low] < target and found.scale_from != "found" and not found.settled("ground-energy"):
+        text = f"min P is at most {P[low]}, alpha min E + beta = {target}; {account}"
+        found.refute("ground-energy", METHOD, text, visited_low)
 
 
 def _ground_claims(

@@ -39,7 +39,8 @@ def check(
     claims : None, "all", a name or names
         None asks for what the trail says was kept, for all claims where there is no trail.
     evidence : "auto" | "projection" | "exhaustion" | "elimination" | "neighbourhood"
-        "auto" tries them in this order until every asked claim is settled.
+        "auto" tries them in this order until every asked claim is settled, with exhaustion or elimination,
+        whichever is cheaper.
     radius : int, optional
         Hamming radius of the neighbourhood (default 2).
     around : states of the source, optional

@@ -85,6 +85,10 @@ EVIDENCE: Mapping[str, Kind] = MappingProxyType(
 )
 
 
+#: What "auto" goes through; its exhaustion goes over to elimination where that is cheaper.
+AUTO = ("projection", "exhaustion", "neighbourhood")
+
+
 def kinds_for(evidence: str) -> tuple[str, ...]:
     """The kinds that a choice of evidence stands for, in the order in which they are tried.
 
@@ -96,10 +100,10 @@ def kinds_for(evidence: str) -> tuple[str, ...]:
     Examples
     --------
     >>> kinds_for("auto")
-    ('projection', 'exhaustion', 'elimination', 'neighbourhood')
+    ('projection', 'exhaustion', 'neighbourhood')
     """
     if evidence == "auto":
-        return tuple(EVIDENCE)
+        return AUTO
     if evidence not in EVIDENCE:
         raise InputError(f"no such evidence: {evidence!r}; there are auto, {', '.join(EVIDENCE)}", place="evidence")
     return (evidence,)

@@ -10,6 +10,7 @@ from fractions import Fraction
 from hubokit.errors import LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.spectrum.levels import Level
+from hubokit.validation.by_levels import ENUMERABLE, SPARSE_TERMS
 from hubokit.validation.case import Case
 from hubokit.validation.evidence import Options
 from hubokit.validation.findings import Findings
@@ -19,8 +20,6 @@ from hubokit.validation.verdict import Evenness, Figure
 
 #: Seconds that a ground level may be predicted to take when only a figure needs it.
 PATIENCE = 5.0
-#: Terms of a model beyond the reach of enumeration for which an elimination is tried.
-SPARSE_TERMS = 20_000
 #: Variables of which local minima are counted.
 MINIMA_SIZE = 20
 #: Ground states listed for a figure.
@@ -65,7 +64,7 @@ def _ground(H: Hamiltonian, options: Options) -> Level:
     """
     from hubokit.spectrum.search import ground_states
 
-    if H.size > 62 and len(H) > SPARSE_TERMS:
+    if H.size > ENUMERABLE and len(H) > SPARSE_TERMS:
         raise LimitError(f"{H.size:,} variables and {len(H):,} terms are beyond enumeration and elimination")
     return ground_states(H, LISTED, executor=options.executor, time=min(options.time, PATIENCE))
 

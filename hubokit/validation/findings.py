@@ -7,6 +7,7 @@ from fractions import Fraction
 from typing import Any, Literal
 
 from hubokit.errors import HubokitError
+from hubokit.spectrum.levels import Level
 from hubokit.validation.case import States
 from hubokit.validation.claims import CLAIMS, IMPLIES, implied_by
 from hubokit.validation.scaling import Judged
@@ -40,6 +41,8 @@ class Findings:
         self.evenness: tuple[Evenness, ...] = ()
         #: Original states that minimise P, all of them, where they were listed.
         self.minimisers: States | None = None
+        #: The ground level of E over all source states, where it is known.
+        self.source_level: Level | None = None
         self.notes: list[str] = []
         self.evidence: list[dict[str, Any]] = []
 

@@ -7,6 +7,7 @@ elimination of the projection in blocks of states.
 
 from __future__ import annotations
 
+import time as clock
 from collections.abc import Callable
 from dataclasses import dataclass
 from fractions import Fraction
@@ -25,8 +26,7 @@ from hubokit.validation.scaling import Column
 STATES_LIMIT = 20
 #: Most variables, auxiliaries included, of which all energies of the model are tabulated.
 MODEL_LIMIT = 22
-#: Most original variables for which the minimum is taken state by state.
-BLOCKWISE_LIMIT = 16
+#: States in one block where the minimum is taken state by state.
 BLOCK = 2**12
 
 
@@ -109,21 +109,32 @@ def tables_from_model(case: Case) -> Tables:
     )
 
 
-def tables_by_blocks(case: Case) -> Tables:
+def tables_by_blocks(case: Case, seconds: float) -> Tables:
     """E, P and m with the minimum taken for each state by elimination over the auxiliaries.
+
+    Parameters
+    ----------
+    seconds : float
+        Time that the whole may take, judged by its second block.
 
     Raises
     ------
     LimitError
-        More than `BLOCKWISE_LIMIT` original variables, or auxiliaries too densely coupled to be eliminated.
+        More than `STATES_LIMIT` original variables, auxiliaries too densely coupled to be eliminated, or too
+        long.
     """
     n = len(case.originals)
     if case.model.locality > 2:
         raise LimitError("the model is not quadratic, and has too many variables to tabulate its energies")
-    if n > BLOCKWISE_LIMIT:
-        raise LimitError(f"{n} original variables; state by state goes up to {BLOCKWISE_LIMIT}")
+    if n > STATES_LIMIT:
+        raise LimitError(f"{n} original variables; state by state goes up to {STATES_LIMIT}")
     least, chosen, counts = [], [], []
+    begun = clock.monotonic()
     for start in range(0, 2**n, BLOCK):
+        if start == 2 * BLOCK:
+            whole = (clock.monotonic() - begun) * 2**n / start
+            if whole > seconds:
+                raise LimitError(f"the minimum state by state over 2^{n} states would take about {whole:.0f} s")
         numbers = np.arange(start, min(start + BLOCK, 2**n))
         minimum, best, multiplicity = case.projection.minimum(state_rows(case, numbers))
         least.append(np.asarray(minimum))
