@@ -36,7 +36,6 @@ SIDE_WORK = 20_000_000
 SIDE_STARTS = 8
 
 Chosen = NDArray[np.bool_]
-Flags = NDArray[np.bool_]
 
 
 @dataclass(frozen=True)
@@ -119,9 +118,9 @@ def simplified(problem: CoverProblem) -> tuple[Chosen, CoverProblem]:
         rows = rows[~state.is_covered(chosen)]
         degree = np.append(np.bincount(rows[rows >= 0], minlength=problem.pairs), 0)
         cubic = rows[:, 3] < 0
-        lone: Flags = cubic[:, None] & (degree[rows] == 1) & (rows >= 0)
-        shared: Flags = cubic[:, None] & (degree[rows] > 1) & (rows >= 0)
-        drop = lone & shared.any(axis=1)[:, None]
+        lone = cubic[:, None] & (degree[rows] == 1) & (rows >= 0)
+        shared = cubic[:, None] & (degree[rows] > 1) & (rows >= 0)
+        drop = lone & shared.any(axis=1, keepdims=True)
         spare = cubic & ~shared.any(axis=1)
         drop[spare] = False
         kept = rows.copy()

@@ -199,7 +199,7 @@ class PairCoverPlan:
 
         Terms that are not covered, of three and more members, are left out.
         """
-        blocks = self._all_blocks()
+        blocks = canonical_blocks(self.all_parts(), self.source.domain)[1]
         sizes = [np.abs(block.weights) for block in blocks]
         return {
             "auxiliaries": self.auxiliaries,
@@ -221,7 +221,7 @@ class PairCoverPlan:
         if len(names) != self.auxiliaries:
             raise InputError(f"{len(names)} names for {self.auxiliaries} auxiliaries", "names")
         H = self.source
-        every = [*self.parts, *self._short_parts()]
+        every = self.all_parts()
         return Hamiltonian.from_arrays(
             [members for members, _ in every],
             [weights for _, weights in every],
@@ -251,12 +251,11 @@ class PairCoverPlan:
             "penalties": dict(self.tightening) or {"scale": "1", "proved by": "interval bounds"},
         }
 
-    def _short_parts(self) -> list[Part]:
+    def all_parts(self) -> list[Part]:
+        """`parts`, and the terms of one and two members beside them, in units of `unit`."""
         factor = int(self.source.resolution / self.unit)
-        return [(block.members, times(block.weights, factor)) for block in self.source.blocks if block.locality <= 2]
-
-    def _all_blocks(self) -> list[Any]:
-        return [b for b in canonical_blocks([*self.parts, *self._short_parts()], self.source.domain)[1] if len(b)]
+        short = [(block.members, times(block.weights, factor)) for block in self.source.blocks if block.locality <= 2]
+        return [*self.parts, *short]
 
 
 def pair_cover_reduction(

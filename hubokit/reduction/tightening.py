@@ -1,0 +1,270 @@
+"""Penalties of chosen pairs made smaller, as far as shared bounds prove that nothing is lost.
+
+The interval bounds of `hubokit.reduction.penalties` let every other auxiliary do its worst. With every setting
+written as a set of flips d from the right one, the excess is ``sum l_i(x) d_i + sum q_ij(x) d_i d_j``; the cost of
+a negative q_ij is divided between its two ends, and the local condition (`hubokit.projection.shared_bounds`)
+
+    l_i(x) - sum_j share_ij max(0, -q_ij(x)) >= g    for every i and every x
+
+proves the auxiliary gap g. Penalties enter l_i alone, and only by the setting of the two operands: A, B or 2A + B.
+So, shares given, the least A and B of each pair are read off the least value of the rest, setting by setting; no
+scale is guessed. Shares are equal first; then a linear program over the worst states met looks for shares under
+which the largest penalty is smaller (rounded to 64ths; the exact condition is evaluated again and alone decides).
+
+Only pairs of original variables are tightened; groups of auxiliaries with pairs of pairs keep their interval bounds.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from fractions import Fraction
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hubokit.model.numbers import INT64_BOUND, format_fraction
+from hubokit.projection.shared_bounds import PARTS, Candidate, FlipProblem, Slacks, equal_shares, slacks
+from hubokit.reduction.covers import PairCoverPlan, covered_form
+from hubokit.reduction.pairs import PairVariables
+from hubokit.reduction.penalties import SPIN_DIVISOR, BooleanForm, Strengths, penalty_parts
+from hubokit.reduction.tightening_program import Coefficients, Group, SharesProgram
+
+LARGEST_GROUP = 400
+"""Auxiliaries that hang together up to which shared bounds are evaluated, for `work` = 1."""
+
+MOST_ROUNDS = 24
+"""Linear programs solved for the shares of one group, for `work` = 1."""
+
+PROGRAM_GROUP = 40
+"""Auxiliaries of one group up to which shares are sought by linear program, for `work` = 1."""
+
+ENOUGH = Fraction(12, 25)
+"""Share of the largest coefficient before, at which the search for shares is content for `work` = 1.
+
+The tighter the penalties, the longer a later check looks for shares of its own that prove them.
+"""
+
+BOTH_DOWN = np.array([0, 0, 0, 1])
+"""A pair variable over the settings of its operands."""
+
+
+def tightened(plan: PairCoverPlan, work: int = 1) -> PairCoverPlan:
+    """The same plan with smaller penalties, where shared bounds prove them.
+
+    Parameters
+    ----------
+    plan : PairCoverPlan
+        With penalties from interval bounds.
+    work : int
+        Multiplies the limits.
+
+    Returns
+    -------
+    PairCoverPlan
+        Its `tightening` says how far the largest coefficient came down and what proves it; `plan` itself where
+        nothing is gained.
+
+    Examples
+    --------
+    >>> from hubokit.model.hamiltonian import Hamiltonian
+    >>> from hubokit.reduction.covers import pair_cover_reduction
+    >>> H = Hamiltonian({("a", "b", "c", "d"): 1, ("a", "b", "e", "f"): 1}, "spin")
+    >>> plan = pair_cover_reduction(H)
+    >>> better = tightened(plan)
+    >>> better.price()["largest"] < plan.price()["largest"], better.tightening["proved by"]
+    (True, 'shared bounds, equal shares')
+    """
+    form = covered_form(plan.source, plan.covered, plan.factors, plan.pairs, plan.resolution)
+    gap = int(plan.gap / plan.resolution)
+    better = plan
+    proofs: set[str] = set()
+    for group in groups(form, plan.pairs, LARGEST_GROUP * work):
+        table = coefficients(better, group)
+        rounds = MOST_ROUNDS * work if len(group.numbers) <= PROGRAM_GROUP * work else 0
+        one, both = better.strengths.one.copy(), better.strengths.both.copy()
+        before = Strengths(one[group.numbers], both[group.numbers])
+        enough = int(ENOUGH * table.figure(before)[0]) if work == 1 else 0
+        found, proof = least_strengths(group, table, gap, rounds, enough)
+        # A group is proved whole: either all its penalties are the new ones, or none.
+        if table.figure(found) < table.figure(before):
+            one[group.numbers], both[group.numbers] = found.one, found.both
+            better = replace(better, strengths=Strengths(one, both))
+            proofs.add(proof)
+    if not proofs:
+        return plan
+    scale = Fraction(better.price()["largest"]) / plan.price()["largest"]
+    record = {"scale": format_fraction(scale), "proved by": "; ".join(sorted(proofs))}
+    return replace(better, tightening=record)
+
+
+def coefficients(plan: PairCoverPlan, group: Group) -> Coefficients:
+    """The coefficients of the reduced model that the group's penalties enter.
+
+    For spins these are the coefficients of the model over spins and over booleans, each multiplied by the largest of
+    the other, so that what is made small is the larger of the two ratios to what was there before.
+    """
+    domain = plan.source.domain
+    own = _entries(plan, group, domain)
+    if domain == "boolean":
+        return own
+    other = _entries(plan, group, "boolean")
+    before = Strengths(plan.strengths.one[group.numbers], plan.strengths.both[group.numbers])
+    here, there = own.figure(before)[0], other.figure(before)[0]
+    kind = object if here * there * 8 >= INT64_BOUND else own.base.dtype
+    return Coefficients(
+        np.concatenate([own.base.astype(kind) * there, other.base.astype(kind) * here]),
+        np.concatenate([own.row, other.row + len(own.base)]),
+        np.concatenate([own.column, other.column]),
+        np.concatenate([own.factor.astype(kind) * there, other.factor.astype(kind) * here]),
+    )
+
+
+def _entries(plan: PairCoverPlan, group: Group, domain: str) -> Coefficients:
+    """The coefficients that the group's penalties enter, in units of `unit`, with the model read in `domain`."""
+    pairs, source = plan.pairs, plan.source.domain
+    total = pairs.size + pairs.count
+    parts = plan.all_parts()
+    quarters = 1
+    if domain != source:
+        parts, quarters = BooleanForm.of(parts, source, total).parts(), SPIN_DIVISOR
+    held = np.zeros(pairs.count, bool)
+    held[group.numbers] = True
+    count = len(group.numbers)
+    found = [
+        (key_of(members, total), end * count + np.arange(count), weights * quarters)
+        for end, strengths in enumerate(_unit_strengths(pairs.count))
+        for members, weights in penalty_parts(pairs, strengths, domain, held)
+        if members.shape[1] and len(weights)
+    ]
+    keys, columns, factors = zip(*found, strict=True)
+    unique, row = np.unique(np.concatenate(keys), return_inverse=True)
+    base = np.zeros(len(unique), plan.strengths.one.dtype)
+    for members, weights in parts:
+        if members.shape[1]:
+            key = key_of(members, total)
+            place = np.minimum(np.searchsorted(unique, key), len(unique) - 1)
+            here = unique[place] == key
+            np.add.at(base, place[here], weights[here])
+    table = Coefficients(base, row, np.concatenate(columns), np.concatenate(factors))
+    own = Strengths(plan.strengths.one[group.numbers], plan.strengths.both[group.numbers])
+    return replace(table, base=2 * base - table.values(own))
+
+
+def key_of(members: NDArray[Any], total: int) -> NDArray[np.int64]:
+    """One number for each product of one or two of `total` variables, in any order."""
+    ordered = np.sort(members.astype(np.int64), axis=1)
+    return ordered[:, -1] * (total + 1) + (ordered[:, 0] + 1 if ordered.shape[1] == 2 else 0)
+
+
+def _unit_strengths(count: int) -> tuple[Strengths, Strengths]:
+    """A = 1 alone, and B = 1 alone: penalties are linear in both."""
+    one, none = np.ones(count, np.int64), np.zeros(count, np.int64)
+    return Strengths(one, none), Strengths(none, one)
+
+
+def groups(form: BooleanForm, pairs: PairVariables, most: int) -> list[Group]:
+    """The groups of two to `most` coupled pair variables of original variables.
+
+    Parameters
+    ----------
+    form : BooleanForm
+        The rewritten model without penalties.
+    pairs : PairVariables
+    most : int
+    """
+    size = pairs.size
+    inner = (form.members >= size).all(axis=1)
+    ends, weights = form.members[inner] - size, form.couplers[inner]
+    flat = (pairs.operands < size).all(axis=1) & ~pairs.is_product
+    label = _labels(pairs, ends)
+    order = np.argsort(label, kind="stable")
+    cuts = np.flatnonzero(np.diff(label[order])) + 1
+    together = (np.sort(numbers) for numbers in np.split(order, cuts))
+    return [
+        _group(form, pairs, numbers, ends, weights)
+        for numbers in together
+        if 2 <= len(numbers) <= most and flat[numbers].all()
+    ]
+
+
+def _labels(pairs: PairVariables, ends: NDArray[np.int64]) -> NDArray[np.int64]:
+    """The least auxiliary that each auxiliary hangs together with, by couplers or by definition."""
+    needs = np.column_stack([pairs.operands, pairs.companions])
+    line, column = np.nonzero(needs >= pairs.size)
+    links = np.concatenate([ends, np.column_stack([line, needs[line, column] - pairs.size])]).astype(np.int64)
+    label = np.arange(pairs.count)
+    while True:
+        fresh = label.copy()
+        least = np.minimum(label[links[:, 0]], label[links[:, 1]])
+        np.minimum.at(fresh, links[:, 0], least)
+        np.minimum.at(fresh, links[:, 1], least)
+        fresh = fresh[fresh]
+        if np.array_equal(fresh, label):
+            return label
+        label = fresh
+
+
+def _group(
+    form: BooleanForm,
+    pairs: PairVariables,
+    numbers: NDArray[np.int64],
+    ends: NDArray[np.int64],
+    weights: NDArray[Any],
+) -> Group:
+    place = np.full(pairs.size + pairs.count, -1)
+    place[pairs.size + numbers] = np.arange(len(numbers))
+    kind = form.fields.dtype
+    own = place[form.members[:, 1]] >= 0
+    outer = own & (form.members[:, 0] < pairs.size)
+    known = np.union1d(form.members[outer, 0], pairs.operands[numbers])
+    column = np.full(pairs.size, -1)
+    column[known] = np.arange(len(known))
+    linear = np.zeros((len(numbers), len(known)), kind)
+    linear[place[form.members[outer, 1]], column[form.members[outer, 0]]] = form.couplers[outer]
+    inside = place[pairs.size + ends[:, 0]] >= 0
+    first, second = place[pairs.size + ends[inside]].T
+    pair = np.zeros((len(numbers), len(numbers)), kind)
+    pair[first, second] = weights[inside]
+    pair[second, first] = weights[inside]
+    problem = FlipProblem(pairs.size + numbers, known, form.fields[pairs.size + numbers], linear, pair)
+    guards = tuple((int(column[u]), int(column[v])) for u, v in pairs.operands[numbers].tolist())
+    return Group(numbers, problem, Candidate(guards, (BOTH_DOWN,) * len(numbers)))
+
+
+def least_strengths(group: Group, table: Coefficients, gap: int, rounds: int, enough: int) -> tuple[Strengths, str]:
+    """The least A and B of a group under the best shares found, and what proves them.
+
+    The search for shares ends when the largest coefficient in the table is at most `enough`.
+    """
+    best_shares = equal_shares(group.problem)
+    found = slacks(group.problem, group.candidate, best_shares)
+    best, proof = strengths_for(found, gap), "shared bounds, equal shares"
+    program = SharesProgram(group, table, gap)
+    for _ in range(rounds):
+        if table.figure(best)[0] <= enough or not program.learn(found):
+            break
+        shares = program.solve(best_shares)
+        found = slacks(group.problem, group.candidate, shares)
+        strengths = strengths_for(found, gap)
+        if table.figure(strengths) < table.figure(best):
+            best, best_shares, proof = strengths, shares, "shared bounds, shares by linear program"
+    return best, proof
+
+
+def strengths_for(found: Slacks, gap: int) -> Strengths:
+    """The least whole A and B for which slacks without penalties become at least `gap`.
+
+    Examples
+    --------
+    >>> rest = np.array([[0, -2 * PARTS], [-3 * PARTS, -5 * PARTS]])
+    >>> strengths = strengths_for(Slacks((rest,), ()), 1)
+    >>> strengths.one.tolist(), strengths.both.tolist()
+    ([4], [6])
+    """
+    tables = np.array([gap * PARTS - table for table in found.tables])
+    need = -(-tables // PARTS)
+    both = need[:, 1, 1]
+    one = np.maximum(need[:, 0, 1], need[:, 1, 0])
+    short = np.maximum(need[:, 0, 0] - 2 * one - both, 0)
+    return Strengths(one + (short + 1) // 2, both)
