@@ -12,6 +12,7 @@ U. Bertele, F. Brioschi, "Nonserial Dynamic Programming", 1972; R. Dechter, "Buc
 
 from __future__ import annotations
 
+import heapq
 from dataclasses import dataclass
 from typing import Any
 
@@ -64,32 +65,40 @@ class _Message:
     keys: list[Integers]
 
 
-def elimination_order(between: Integers) -> tuple[list[int], int]:
+def elimination_order(between: Integers, limit: int | None = None) -> tuple[list[int], int]:
     """Auxiliaries in order of least degree in the graph that is left, and the width of that order.
 
     Parameters
     ----------
     between : array, shape (a, a)
         Nonzero (in either triangle) where two auxiliaries are coupled.
+    limit : int, optional
+        Stop as soon as the width exceeds this.
     """
     size = len(between)
-    rows, columns = np.nonzero(between)
     linked: list[set[int]] = [set() for _ in range(size)]
-    for i, k in zip(rows.tolist(), columns.tolist(), strict=True):
+    for i, k in np.argwhere(between).tolist():
         if i != k:
             linked[i].add(k)
             linked[k].add(i)
-    left = set(range(size))
+    waiting = [(len(linked[i]), i) for i in range(size)]
+    heapq.heapify(waiting)
     order: list[int] = []
+    gone: set[int] = set()
     width = 0
-    while left:
-        chosen = min(left, key=lambda i: (len(linked[i]), i))
+    while waiting:
+        degree, chosen = heapq.heappop(waiting)
+        if chosen in gone or degree != len(linked[chosen]):
+            continue
         around = linked[chosen]
-        width = max(width, len(around))
+        width = max(width, degree)
+        if limit is not None and width > limit:
+            break
         for i in around:
             linked[i] |= around
             linked[i] -= {i, chosen}
-        left.remove(chosen)
+            heapq.heappush(waiting, (len(linked[i]), i))
+        gone.add(chosen)
         order.append(chosen)
     return order, width
 
@@ -117,10 +126,10 @@ def minimise(fields: Integers, between: Integers, bound: int) -> Best:
     >>> best.energy.tolist(), best.multiplicity.tolist(), best.gap.tolist(), best.bits.tolist()
     ([-2, -1], [1, 3], [2, 1], [[0, 1], [0, 1]])
     """
-    order, width = elimination_order(between)
+    order, width = elimination_order(between, WIDTH_LIMIT)
     if width > WIDTH_LIMIT:
         raise LimitError(
-            f"{len(between)} coupled auxiliaries need tables over {width} of them for every state; "
+            f"{len(between)} coupled auxiliaries need tables over at least {width} of them for every state; "
             f"at most {WIDTH_LIMIT} are allowed"
         )
     if fields.dtype != object and bound >= 2**55:

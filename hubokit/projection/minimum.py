@@ -27,6 +27,9 @@ ENUMERATED = 6
 ELIMINATED = 10
 """Width up to which a larger cluster is eliminated without trying a search."""
 
+MOST_COUPLED = 4000
+"""Auxiliaries of one cluster that are minimised over together."""
+
 CELLS = 2**23
 """States times variables held at once."""
 
@@ -90,8 +93,23 @@ class Minimiser:
     def large(self) -> tuple[tuple[Positions, Integers], ...]:
         """Auxiliaries and inner couplings (upper triangle) of every cluster to be eliminated."""
         found = self.clusters
+        if found.a.max(initial=0) > MOST_COUPLED:
+            raise LimitError(
+                f"a cluster of {found.a.max():,} coupled auxiliaries that no few guards decide is too large to minimise over; "
+                f"at most {MOST_COUPLED:,} are allowed"
+            )
         chosen = np.flatnonzero(found.a > ENUMERATED)
         return tuple(_inner(self.structure, found.auxiliaries_of(int(one))) for one in chosen)
+
+    @cached_property
+    def elimination_work(self) -> int:
+        """Table entries that the larger clusters take for one state; huge where elimination would not be chosen."""
+        if self.clusters.a.max(initial=0) > MOST_COUPLED:
+            return 2**62
+        widths = [elimination_order(between, ELIMINATED)[1] for _, between in self.large]
+        if max(widths, default=0) > ELIMINATED:
+            return 2**62
+        return sum(len(between) << width for (_, between), width in zip(self.large, widths, strict=True))
 
     def minima(self, originals: States) -> Minima:
         """Best auxiliaries for each row of originals (values of the domain, columns in model order).
@@ -151,7 +169,7 @@ class Minimiser:
 
 def _wide(fields: Integers, between: Integers, bound: int) -> Best:
     """One cluster of many auxiliaries: eliminated where narrow, else searched, else eliminated all the same."""
-    _, width = elimination_order(between)
+    _, width = elimination_order(between, WIDTH_LIMIT)
     if width <= ELIMINATED or len(between) <= WIDTH_LIMIT // 2:
         return minimise(fields, between, bound)
     try:

@@ -29,6 +29,9 @@ from hubokit.projection.structure import Structure, structure_of
 from hubokit.projection.substitution import substituted
 from hubokit.projection.tables import NONE
 
+GAP_WORK = 2**28
+"""Table entries that may be computed for the true gap at given states where rules give a bound already."""
+
 
 @dataclass(frozen=True)
 class Projection:
@@ -101,15 +104,10 @@ class Projection:
         from hubokit.model.states import as_states
 
         originals = as_states(states, self.originals, self.model.domain)
+        # Rules give bounds; the minimum over all auxiliaries together gives the true gap, where it is within reach.
         whole = Minimiser(self.findings.structure)
-        found = None
-        if any(self.findings.rounds):
-            try:
-                found = whole.minima(originals)
-            except LimitError:
-                found = None
-        if found is None:
-            found = self.minimiser.minima(originals)
+        within_reach = self.findings.rounds and whole.elimination_work * len(originals) <= GAP_WORK
+        found = (whole if within_reach else self.minimiser).minima(originals)
         positive = found.gap[found.gap != NONE]
         if not len(positive):
             return GapBound(None, found.exact)
@@ -175,12 +173,13 @@ def _projection(findings: Findings) -> Projection:
     structure = findings.structure
     model = structure.model
     polynomial = None
+    too_large: tuple[str, ...] = ()
     if not findings.undecided:
         try:
             gathered = substituted(findings.gathered, findings.rounds, model.size)
             polynomial = _over_originals(structure, gathered)
         except LimitError as refused:
-            findings.undecided.append(f"P as a polynomial: {refused.message}")
+            too_large = (f"P as a polynomial: {refused.message}",)
     bounds = [_gap(settled, model, consistent) for settled, consistent in findings.settled()]
     for rules in findings.rounds:
         for one in rules:
@@ -189,15 +188,15 @@ def _projection(findings: Findings) -> Projection:
             bounds.append(GapBound(int(margin) * model.resolution, attained))
     # Nothing but wholeness is known of the gap of a cluster that was searched state by state.
     bounds.extend(GapBound(model.resolution, False) for _ in findings.listed())
-    clusters_known = polynomial is not None or not any("cluster" in one for one in findings.undecided)
+    is_settled = not findings.undecided
     return Projection(
         model,
         tuple(model.labels[i] for i in structure.auxiliaries),
         tuple(model.labels[i] for i in structure.originals),
         polynomial,
-        tuple(findings.undecided),
-        _uniform(findings) if clusters_known else None,
-        least(bounds) if clusters_known else None,
+        (*findings.undecided, *too_large),
+        _uniform(findings) if is_settled else None,
+        least(bounds) if is_settled else None,
         _summaries(findings),
         findings,
     )

@@ -17,8 +17,8 @@ from numpy.typing import NDArray
 from hubokit.errors import LimitError
 from hubokit.projection.structure import Integers, Positions
 
-BRANCHES = 2**21
-"""Branches that one search may open."""
+BRANCHES, WORK = 2**21, 2**32
+"""Branches that one search may open, and multiplications that they may take."""
 
 ROWS = 4096
 """Branches worked on at once."""
@@ -52,7 +52,7 @@ class _Branches:
         )
 
 
-def search(fields: Integers, pair: Integers, limit: int = BRANCHES) -> Found:
+def search(fields: Integers, pair: Integers, limit: int | None = None) -> Found:
     """Minimise over the bits of one cluster at every state.
 
     Parameters
@@ -61,8 +61,8 @@ def search(fields: Integers, pair: Integers, limit: int = BRANCHES) -> Found:
         Energy of bit i alone, for each state.
     pair : integer array, shape (u, u)
         Symmetric, zero on the diagonal: what two set bits add.
-    limit : int
-        Branches that may be opened.
+    limit : int, optional
+        Branches that may be opened beyond one for each state; by default what `BRANCHES` and `WORK` allow.
 
     Raises
     ------
@@ -76,6 +76,7 @@ def search(fields: Integers, pair: Integers, limit: int = BRANCHES) -> Found:
     ([-2, -1], [1, 3], [[0, 1], [0, 1]])
     """
     count, size = fields.shape
+    limit = min(BRANCHES, WORK // max(1, size * size)) if limit is None else limit
     best = np.zeros(count, fields.dtype)
     number = np.zeros(count, object)
     first = np.zeros((count, size), np.int8)

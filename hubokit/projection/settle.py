@@ -104,7 +104,8 @@ def affordable(distinct: Batch, work: int) -> bool:
         return True
     if len(distinct) << distinct.d > work:
         return False
-    width = max(elimination_order(one)[1] for one in distinct.between)
+    widest = work.bit_length()
+    width = max(elimination_order(one, widest)[1] for one in distinct.between)
     return (len(distinct) * distinct.a) << (distinct.d + width + 1) <= work
 
 

@@ -34,6 +34,9 @@ from hubokit.projection.structure import Integers, Positions, Structure
 PARTS = 64
 """Shares are multiples of 1/64."""
 
+SHARED_MOST = 3000
+"""Auxiliaries of one cluster that are looked at together."""
+
 PROGRAM_MOST = 200
 """Auxiliaries of one cluster for which unequal shares are looked for."""
 

@@ -16,7 +16,14 @@ import numpy as np
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.projection.candidates import fitted, known_samples
 from hubokit.projection.clusters import components
-from hubokit.projection.shared_bounds import PROGRAM_MOST, as_fractions, better_shares, flip_problem, slacks
+from hubokit.projection.shared_bounds import (
+    PROGRAM_MOST,
+    SHARED_MOST,
+    as_fractions,
+    better_shares,
+    flip_problem,
+    slacks,
+)
 from hubokit.projection.structure import structure_of
 
 
@@ -61,7 +68,8 @@ def shared_bound_slacks(
     Returns
     -------
     dict from auxiliary to SlackFigures
-        Positive slacks all over one cluster prove all its auxiliaries; nothing is claimed otherwise.
+        Positive slacks all over one cluster prove all its auxiliaries; nothing is claimed otherwise. Clusters of more than
+        `SHARED_MOST` auxiliaries are left out.
 
     Raises
     ------
@@ -80,6 +88,8 @@ def shared_bound_slacks(
     figures: dict[str, SlackFigures] = {}
     bounds = np.concatenate([[0], np.cumsum(found.a)])
     for start, stop in zip(bounds[:-1].tolist(), bounds[1:].tolist(), strict=True):
+        if stop - start > SHARED_MOST:
+            continue
         members = found.members[start:stop]
         problem = flip_problem(structure, members)
         candidate = fitted(problem, known_samples(structure, [], problem.known))

@@ -28,6 +28,7 @@ from hubokit.projection.settle import TABLE_WORK, by_counting, by_tables
 from hubokit.projection.shared_bounds import (
     PARTS,
     PROGRAM_MOST,
+    SHARED_MOST,
     Candidate,
     FlipProblem,
     better_shares,
@@ -48,9 +49,6 @@ CHEAP = 2**24
 
 DENSE = 2**24
 """Largest number of couplings of one cluster that are written out as a dense array."""
-
-SHARED_MOST = 3000
-"""Auxiliaries of one cluster for which shared bounds are tried."""
 
 LISTED_BITS = 16
 """Originals behind a cluster that is minimised state by state."""
@@ -179,6 +177,8 @@ def _unequal(problem: FlipProblem, shares: Integers | None) -> list[tuple[int, i
 def _by_states(findings: Findings, auxiliaries: Positions, table_bits: int) -> bool:
     """Minimise one cluster at every state of the originals behind it."""
     structure = findings.structure
+    if len(auxiliaries) > SHARED_MOST:
+        return False
     problem = flip_problem(structure, auxiliaries)
     touched = _originals_behind(findings, problem.known)
     if len(touched) > min(LISTED_BITS, table_bits):
@@ -230,8 +230,9 @@ def _originals_behind(findings: Findings, known: Positions) -> Positions:
 def _name_undecided(findings: Findings, found: Components, left: NDArray[np.bool_]) -> None:
     kinds = Counter(zip(found.a[left].tolist(), found.d[left].tolist(), strict=True))
     for (a, d), number in sorted(kinds.items()):
-        many = "s" if number > 1 else ""
+        clusters = "1 cluster" if number == 1 else f"{number:,} clusters"
+        auxiliaries = "1 auxiliary" if a == 1 else f"{a:,} coupled auxiliaries"
         findings.undecided.append(
-            f"{number:,} cluster{many} of {a} coupled auxiliaries touching {d} variables: no few guards decide them, "
-            f"neither alone nor by shared bounds, and tables over {d} variables and {a} auxiliaries are too large"
+            f"{clusters} of {auxiliaries} touching {d:,} variable{'' if d == 1 else 's'}: no few guards decide them, "
+            "alone or by shared bounds, and the minimum over them has too large a table or too many terms"
         )
