@@ -24,7 +24,7 @@ DOCUMENTS = {
 NOT_EXPORTED = ("json", "cnf")
 """The documents stand in the folder anyway; in CNF a weight of w would become w equal clauses."""
 
-EXPORT_LIMIT = 500_000
+EXPORT_LIMIT = 200_000
 """Terms above which a model is not written in other formats unasked."""
 
 BOOLEAN_ANSWERS = "       hubokit project reduced.json STATES.csv --domain boolean"

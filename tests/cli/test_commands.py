@@ -340,3 +340,13 @@ def test_an_interrupt_ends_the_run_with_nothing_left_behind(fixtures: Path, tmp_
     assert run.stderr.count("\n") == 1
     assert "Traceback" not in run.stderr
     assert list(tmp_path.iterdir()) == []
+
+
+def test_spectrum_looks_around_given_states(hubokit: Any, fixtures: Path) -> None:
+    arguments = ["spectrum", fixtures / "greenhouse.json", "--targets", fixtures / "greenhouse-settings.csv"]
+    document = of_schema("summary", hubokit(*arguments, "--radius", "1", "--json").out)
+    assert document["figures"]["targets"] == 6
+    assert document["figures"]["states"] == str(6 * (1 + 14))
+    assert document["figures"]["highest-target-energy"] == "0"
+    assert "distance" in hubokit(*arguments).out
+    assert hubokit(*arguments, "--density").code == 2
