@@ -7,6 +7,7 @@ from concurrent.futures import Executor
 from importlib.metadata import PackageNotFoundError, version
 from typing import Any
 
+from hubokit.errors import LimitError
 from hubokit.model.numbers import Number, as_fraction
 from hubokit.reduction.result import Reduction
 from hubokit.validation.case import Case
@@ -87,7 +88,11 @@ def check(
     for kind in kinds:
         if _enough(case, options, found):
             break
-        EVIDENCE[kind](case, options, found)
+        try:
+            EVIDENCE[kind](case, options, found)
+        except LimitError as refusal:
+            for name in options.asked:
+                found.leave_open(name, f"{kind}: {refusal.message}")
     add_figures(case, options, found)
     return _verdict(case, options, found)
 
