@@ -95,6 +95,8 @@ class Components:
         Cluster and variable of every touched pair, sorted.
     a, d : int64 arrays, shape (c,)
         Auxiliaries and touched variables of each cluster.
+    link, link_entry : int64 arrays, shape (l,)
+        Pairs of the structure between a chosen auxiliary and a touched variable, and the touched entry of each.
     """
 
     members: Positions
@@ -103,6 +105,8 @@ class Components:
     touched: Positions
     a: Positions
     d: Positions
+    link: Positions
+    link_entry: Positions
 
     def __len__(self) -> int:
         return len(self.a)
@@ -137,11 +141,11 @@ def components(structure: Structure, chosen: Positions) -> Components:
     else:
         count, cluster = len(chosen), np.arange(len(chosen), dtype=np.int64)
     order = np.lexsort((chosen, cluster))
-    link = inside.any(axis=1) & ~both
+    link = np.flatnonzero(inside.any(axis=1) & ~both)
     side = inside[link, 0]
     own = np.where(side, ends[link, 0], ends[link, 1])
     other = np.where(side, ends[link, 1], ends[link, 0])
-    keys = np.unique(cluster[index[own]] * n + other)
+    keys, link_entry = sorted_apart(cluster[index[own]] * n + other)
     touched_cluster, touched = keys // n, keys % n
     return Components(
         chosen[order],
@@ -150,7 +154,20 @@ def components(structure: Structure, chosen: Positions) -> Components:
         touched,
         np.bincount(cluster, minlength=count).astype(np.int64),
         np.bincount(touched_cluster, minlength=count).astype(np.int64),
+        link,
+        link_entry,
     )
+
+
+def sorted_apart(keys: Positions) -> tuple[Positions, Positions]:
+    """Distinct keys in ascending order, and the place of each key among them."""
+    order = np.argsort(keys, kind="stable")
+    ordered = keys[order]
+    fresh = np.ones(len(keys), bool)
+    fresh[1:] = ordered[1:] != ordered[:-1]
+    place = np.empty(len(keys), np.int64)
+    place[order] = np.cumsum(fresh) - 1
+    return ordered[fresh], place
 
 
 def batches(structure: Structure, found: Components, chosen: NDArray[np.bool_]) -> Iterator[Batch]:
@@ -169,18 +186,13 @@ def batches(structure: Structure, found: Components, chosen: NDArray[np.bool_]) 
     starts = np.concatenate([[0], np.cumsum(found.a)])
     cluster_of[found.members] = found.cluster
     slot_of[found.members] = np.arange(len(found.members)) - starts[found.cluster]
-    keys = found.touched_cluster * n + found.touched
     touched_starts = np.concatenate([[0], np.cumsum(found.d)])
-
-    ends = cluster_of[structure.ends]
-    first, second = ends[:, 0], ends[:, 1]
-    both = (first >= 0) & (second >= 0)
-    link = ((first >= 0) | (second >= 0)) & ~both
-    own_first = first[link] >= 0
-    own = np.where(own_first, structure.ends[link, 0], structure.ends[link, 1])
-    other = np.where(own_first, structure.ends[link, 1], structure.ends[link, 0])
-    link_cluster, link_weight = cluster_of[own], structure.weights[link]
-    link_touched = np.searchsorted(keys, link_cluster * n + other) - touched_starts[link_cluster]
+    linked = structure.ends[found.link]
+    link_cluster = found.touched_cluster[found.link_entry]
+    own = np.where(cluster_of[linked[:, 0]] >= 0, linked[:, 0], linked[:, 1])
+    link_touched = found.link_entry - touched_starts[link_cluster]
+    link_weight = structure.weights[found.link]
+    both = (cluster_of[structure.ends] >= 0).all(axis=1)
     inner, inner_weight = structure.ends[both], structure.weights[both]
     inner_cluster = cluster_of[inner[:, 0]] if len(inner) else np.zeros(0, np.int64)
 

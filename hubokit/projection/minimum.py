@@ -237,7 +237,9 @@ def _fields(structure: Structure, chosen: Positions, states: States) -> Integers
 def _merged(structure: Structure, found: Components, chosen: NDArray[np.bool_]) -> list[Batch]:
     """Batches by number of auxiliaries alone: the touched variables already sit in the fields."""
     nothing = np.zeros(0, np.int64)
-    bare = Components(found.members, found.cluster, nothing, nothing, found.a, np.zeros_like(found.a))
+    bare = Components(
+        found.members, found.cluster, nothing, nothing, found.a, np.zeros_like(found.a), nothing, nothing
+    )
     inner = Structure(
         structure.model,
         structure.is_auxiliary,

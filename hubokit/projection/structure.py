@@ -116,12 +116,14 @@ def structure_of(model: Hamiltonian, auxiliaries: Sequence[str]) -> Structure:
         raise InputError(f"the model has locality {model.locality}; projection takes quadratic models only", "model")
     positions = model.positions
     chosen = np.zeros(model.size, bool)
-    for label in auxiliaries:
-        if label not in positions:
-            raise InputError(f"{label} is no variable of the model", "auxiliaries")
-        if chosen[positions[label]]:
-            raise InputError(f"{label} is named twice", "auxiliaries")
-        chosen[positions[label]] = True
+    try:
+        named = np.fromiter((positions[label] for label in auxiliaries), np.int64)
+    except KeyError as missing:
+        raise InputError(f"{missing.args[0]} is no variable of the model", "auxiliaries") from None
+    chosen[named] = True
+    if int(chosen.sum()) < len(named):
+        repeated = np.flatnonzero(np.bincount(named) > 1)[0]
+        raise InputError(f"{model.labels[repeated]} is named twice", "auxiliaries")
     kind = np.int64 if model.weight_bound < BOUND else object
     field = np.zeros(model.size, kind)
     direct: list[Part] = []
