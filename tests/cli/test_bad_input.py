@@ -277,3 +277,36 @@ def test_a_name_cannot_steer_the_terminal(hubokit: Any, tmp_path: Path) -> None:
     outcome = hubokit("show", path)
     assert outcome.code == 2
     assert "\x1b" not in outcome.err
+
+
+def test_constraints_of_an_opb_file_become_penalties_and_are_never_dropped_in_silence(
+    hubokit: Any, tmp_path: Path
+) -> None:
+    path = tmp_path / "hard.opb"
+    path.write_text("* #variable= 2 #constraint= 1\nmin: +3 x1 +2 x2 ;\n+1 x1 +1 x2 = 1 ;\n", encoding="utf-8")
+    shown = hubokit("show", path)
+    assert shown.code == 0
+    assert "penalties" in shown.out
+    levels = json.loads(hubokit("spectrum", path, "--levels", "1", "--json").out)["levels"]
+    assert [(level["energy"], level["states"]) for level in levels] == [("2", [[0, 1]])]
+
+
+def test_hard_clauses_of_a_wcnf_file_become_penalties_and_are_never_dropped_in_silence(
+    hubokit: Any, tmp_path: Path
+) -> None:
+    path = tmp_path / "hard.wcnf"
+    path.write_text("h 1 2 0\n5 -1 0\n3 -2 0\n", encoding="utf-8")
+    shown = hubokit("show", path)
+    assert shown.code == 0
+    assert "penalt" in shown.out
+    levels = json.loads(hubokit("spectrum", path, "--levels", "1", "--json").out)["levels"]
+    assert [(level["energy"], level["states"]) for level in levels] == [("3", [[0, 1]])]
+
+
+def test_a_count_of_every_state_of_a_large_model_is_refused_before_the_start(hubokit: Any, tmp_path: Path) -> None:
+    document = copy.deepcopy(GOOD)
+    document["variables"] = [f"v{i}" for i in range(70)]
+    document["terms"] = [{"locality": 2, "members": [[i, i + 1] for i in range(69)], "weights": [1] * 69}]
+    path = tmp_path / "large.json"
+    path.write_text(json.dumps(document), encoding="utf-8")
+    one_line(hubokit("spectrum", path, "--density"), "70")
