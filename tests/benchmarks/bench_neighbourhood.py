@@ -16,8 +16,9 @@ from numpy.typing import NDArray
 
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.spectrum.balls import centres_of
-from hubokit.spectrum.neighbourhood import _rows, neighbourhood, walked
-from hubokit.spectrum.recentring import flip_coefficients, trie_of
+from hubokit.spectrum.neighbourhood import neighbourhood
+from hubokit.spectrum.neighbourhood_walk import walked
+from hubokit.spectrum.recentring import recentred, trie_of
 
 
 @njit(nogil=True)  # type: ignore[untyped-decorator]
@@ -43,31 +44,13 @@ def add_all_rows_to_all(rows, vector, out):  # type: ignore[no-untyped-def]
     return out[size - 1]
 
 
-def dense_cubic(variables: int, terms: int, seed: int = 0) -> Hamiltonian:
-    """Random cubic spin terms, with fields and all pairs."""
-    chance = np.random.default_rng(seed)
+def dense_cubic(variables: int, terms: int, targets: NDArray[np.int8]) -> Hamiltonian:
+    """A design in which each target is deep: on random triples, minus the sum of the targets' products."""
+    chance = np.random.default_rng(0)
     triples = np.sort(chance.integers(0, variables, (terms, 3)), axis=1)
     triples = triples[(triples[:, 0] < triples[:, 1]) & (triples[:, 1] < triples[:, 2])]
-    pairs = np.array(np.triu_indices(variables, 1)).T
-    return Hamiltonian.from_arrays(
-        [triples, pairs],
-        [chance.choice([-2, -1, 1, 2], len(triples)), chance.integers(-3, 4, len(pairs))],
-        domain="spin",
-        size=variables,
-    )
-
-
-def descended(H: Hamiltonian, count: int, seed: int) -> NDArray[np.int8]:
-    """States from which some descent was made, so that centres are low as targets are."""
-    chance = np.random.default_rng(seed)
-    trie = trie_of(H.size, H.blocks, 1)
-    states = chance.choice(np.array([-1, 1], np.int8), (count, H.size))
-    for state in states:
-        for _ in range(60):
-            gains = flip_coefficients(trie, H.blocks, state, H.domain, np.int64)[1:]
-            lowering = np.argsort(gains)[:20]
-            state[lowering[gains[lowering] < 0][: max(1, len(lowering) // 4)]] *= -1
-    return states
+    weights = sum(-target[triples].prod(axis=1, dtype=np.int64) for target in targets)
+    return Hamiltonian.from_arrays([triples], [weights], domain="spin", size=variables)
 
 
 def best_of(action: Any, times: int = 3) -> float:
@@ -81,26 +64,32 @@ def best_of(action: Any, times: int = 3) -> float:
 
 def main() -> None:
     variables, terms, centres = [int(a) for a in sys.argv[1:4]] or [1000, 1_000_000, 20]
-    H = dense_cubic(variables, terms)
-    states = descended(H, centres, 1)
+    chance = np.random.default_rng(1)
+    states = chance.choice(np.array([-1, 1], np.int8), (centres, variables))
+    H = dense_cubic(variables, terms, states)
     print(f"{H!r}, {centres} centres")
     kind: type[Any] = np.int32 if H.weight_bound < 2**30 else np.int64
     for radius in (2, 3):
         trie = trie_of(H.size, H.blocks, radius)
-        values = flip_coefficients(trie, H.blocks, states[0], H.domain, kind)
-        rows, vector = _rows(trie, values, radius), values[1 : 1 + H.size].copy()
+        begun = perf_counter()
+        flips = recentred(trie, H.blocks, states[0], H.domain, kind)
+        recentring = perf_counter() - begun
+        rows, vector = flips.rows, flips.values[1 : 1 + H.size].copy()
         out = np.zeros_like(vector)
         bare_loop = add_all_rows if radius == 2 else add_all_rows_to_all
         bare_loop(rows[:4, :4].copy(), vector[:4], out[:4])
         around = centres_of(states, H.domain, radius, False)
         energies = H.integer_energies(states)
-        job = (trie, values, around, 0, (0, H.size), int(energies.max()), 100)
-        walked(trie, values, around, 0, (0, 1), int(energies.max()), 100)
+        job = (flips, around, 0, (0, H.size), int(energies.max()), 100)
+        walked(flips, around, 0, (0, 1), int(energies.max()), 100)
         count = around.visits // len(states)
         times = 5 if radius == 2 else 1
         bare = count / best_of(lambda loop=bare_loop, r=rows, v=vector, o=out: loop(r, v, o), times)  # type: ignore[misc]
         walk = count / best_of(lambda job=job: walked(*job), times)  # type: ignore[misc]
-        print(f"radius {radius}, one centre, one core, {np.dtype(kind)}: {count:,} states")
+        print(
+            f"radius {radius}, one centre, one core, {np.dtype(kind)}: {count:,} states; "
+            f"re-centring {recentring:.3f} s"
+        )
         print(f"  bare additions {bare:.3g}/s, walk {walk:.3g} states/s, ratio {walk / bare:.2f}")
         begun = perf_counter()
         look = neighbourhood(H, states, radius)
