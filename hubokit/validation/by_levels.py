@@ -94,7 +94,8 @@ class Levels:
     ) -> None:
         self.case, self.found, self.ground = case, found, ground
         self.source, self.reduced = source, reduced
-        self.method = method
+        eliminated = any(level.method.startswith("elimination") for level in (source, reduced))
+        self.method = "elimination" if eliminated else method
 
     def judge_polynomial(self, polynomial: Hamiltonian) -> None:
         """Settle what follows from the ground levels of E and P."""
