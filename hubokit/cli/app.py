@@ -33,17 +33,17 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-for name, command in (
-    ("prepare", prepare.command),
-    ("show", show.command),
-    ("reduce", reduce.command),
-    ("check", check.command),
-    ("spectrum", spectrum.command),
-    ("convert", convert.command),
-    ("project", project.command),
-    ("audit", audit.command),
+for name, command, job in (
+    ("prepare", prepare.command, "Reduce, check, write the verdict and every export."),
+    ("show", show.command, "Say what is in a file."),
+    ("reduce", reduce.command, "Reduce a model to quadratic form."),
+    ("check", check.command, "Judge a reduction, claim by claim."),
+    ("spectrum", spectrum.command, "Low levels, all levels, or states around given ones."),
+    ("convert", convert.command, "Write a model in another format or domain."),
+    ("project", project.command, "Bring a solver's answers back to the design."),
+    ("audit", audit.command, "Check a verdict again by separate code."),
 ):
-    app.command(name)(command)
+    app.command(name, short_help=job)(command)
 
 
 def _version(asked: bool) -> None:
