@@ -27,7 +27,10 @@ Ch. Bouillaguet et al., "Fast exhaustive search for polynomial systems in F2", C
 
 from __future__ import annotations
 
+import hashlib
+import threading
 from dataclasses import dataclass
+from math import comb
 from typing import Any
 
 import numpy as np
@@ -35,16 +38,14 @@ import numpy.typing as npt
 
 from hubokit.errors import LimitError
 from hubokit.spectrum.polynomial import Polynomial, absolute_sum
-from hubokit.spectrum.transforms import inverse_moebius, walsh_hadamard
 
 SUBSET_LIMIT = 2**24
-"""Most (term, set of walked members) pairs that are written down for one slab."""
+"""Most (term, set of walked members) pairs that are written down."""
 
 TABLE_BYTES = 2**26
 """Most bytes of tables of one slab, beyond which fewer low bits are tried."""
 
-_BATCH = 2**19
-"""Table entries transformed at once: they stay in the cache."""
+_PLANS = 64
 
 
 @dataclass(frozen=True)
@@ -110,6 +111,78 @@ def integer_type(polynomial: Polynomial, layout: Layout, factor: int = 1) -> typ
     return np.int64
 
 
+@dataclass(frozen=True)
+class Plan:
+    """What the tables of all slabs have in common: the nodes, and the coefficients before the fixed bits have values.
+
+    Coefficients come as rows of `entries`: the row (or, in `numbers`, the node) that they belong to, their low
+    members, the fixed members of their term, and their value for fixed bits that are all 0 (spins) or where the
+    fixed members are all 1 (booleans; elsewhere they vanish).
+    """
+
+    row: npt.NDArray[np.int32]
+    child: npt.NDArray[np.int32]
+    steady: npt.NDArray[np.int8]
+    entries: tuple[npt.NDArray[np.int64], ...]
+    numbers: tuple[npt.NDArray[np.int64], ...]
+
+
+def plan_of(polynomial: Polynomial, layout: Layout) -> Plan:
+    """The plan of a polynomial; the last few are remembered.
+
+    Raises
+    ------
+    LimitError
+        Terms with so many walked members that their subsets cannot be written down.
+    """
+    found = hashlib.blake2b(f"{polynomial.size} {polynomial.spin} {layout} {len(polynomial.masks)} ".encode())
+    found.update(np.ascontiguousarray(polynomial.masks).tobytes())
+    found.update(np.ascontiguousarray(polynomial.weights).tobytes())
+    key = found.digest()
+    with _lock:
+        plan = _plans.pop(key, None) or _planned(polynomial, layout)
+        _plans[key] = plan
+        while len(_plans) > _PLANS:
+            del _plans[next(iter(_plans))]
+    return plan
+
+
+_plans: dict[bytes, Plan] = {}
+_lock = threading.Lock()
+
+
+def _planned(polynomial: Polynomial, layout: Layout) -> Plan:
+    low, walked, fixed = parted(polynomial.masks, layout)
+    sets, owner = _subsets(walked)
+    nodes, node = _distinct(sets, layout.walked)
+    low, fixed, rest = low[owner], fixed[owner], walked[owner] ^ sets
+    plain = low == 0
+    has_row = np.zeros(len(nodes), bool)
+    has_row[0] = True
+    has_row[node[~plain]] = True
+    row = np.where(has_row, np.cumsum(has_row) - 1, -1).astype(np.int32)
+    child, steady = _family(nodes, row, layout.walked)
+
+    start = (sets >> 1) & ~sets
+    flips = np.bitwise_count(sets & (sets >> 1)) + (sets != 0)
+    if polynomial.spin:
+        order = np.bitwise_count(sets)
+        odd = (np.bitwise_count(rest & start) + order + flips) & 1
+        value = polynomial.weights[owner] << order.astype(np.int64)
+    else:
+        odd = flips & 1
+        value = polynomial.weights[owner] * (rest & ~start == 0)
+    value = np.where(odd, -value, value)
+    vector, number = ~plain & (value != 0), plain & (value != 0)
+    return Plan(
+        row=row,
+        child=child,
+        steady=steady,
+        entries=(row[node[vector]].astype(np.int64), low[vector], fixed[vector], value[vector]),
+        numbers=(node[number], low[number], fixed[number], value[number]),
+    )
+
+
 def tables_of(polynomial: Polynomial, layout: Layout, slab: int, kind: type[np.signedinteger[Any]]) -> Tables:
     """The tables of one slab, before its first step.
 
@@ -129,48 +202,41 @@ def tables_of(polynomial: Polynomial, layout: Layout, slab: int, kind: type[np.s
     LimitError
         Terms with so many walked members that their subsets cannot be written down.
     """
-    low, walked, weights = _in_slab(polynomial, layout, slab)
-    sets, owner = _subsets(walked)
-    nodes, node = np.unique(np.concatenate([np.zeros(1, np.int64), sets]), return_inverse=True)
-    node = node[1:]
-    low, rest = low[owner], walked[owner] ^ sets
-    start = (sets >> 1) & ~sets
-    order = np.bitwise_count(sets).astype(np.int64)
-    if polynomial.spin:
-        value = 1 - 2 * (np.bitwise_count(rest & start).astype(np.int64) & 1)
-        value *= (1 - 2 * (order & 1)) << order
-    else:
-        value = (rest & ~start == 0).astype(np.int64)
-    flips = np.bitwise_count(sets & (sets >> 1)).astype(np.int64) + (sets != 0)
-    value *= (1 - 2 * (flips & 1)) * weights[owner]
+    from hubokit.spectrum import kernels
 
-    number = np.zeros(len(nodes), np.int64)
-    plain = low == 0
-    np.add.at(number, node[plain], value[plain])
-    has_row = np.zeros(len(nodes), bool)
-    has_row[0] = True
-    has_row[node[~plain]] = True
-    row = np.where(has_row, np.cumsum(has_row) - 1, -1).astype(np.int32)
-    rows = np.zeros((int(has_row.sum()), 1 << layout.low), kind)
-    np.add.at(rows, (row[node[~plain]], low[~plain]), value[~plain].astype(kind))
-    _transform(rows, polynomial.spin)
-    child, steady = _family(nodes, row, layout.walked)
+    plan = plan_of(polynomial, layout)
+    rows = np.zeros((int((plan.row >= 0).sum()), 1 << layout.low), kind)
+    number = np.zeros((len(plan.row), 1), np.int64)
+    kernels.place(rows, *plan.entries, slab, polynomial.spin)
+    kernels.place(number, *plan.numbers, slab, polynomial.spin)
+    kernels.transform(rows, polynomial.spin)
     return Tables(
         rows=rows,
-        row=row,
-        child=child,
-        number=number,
-        sign=np.ones(len(nodes), np.int64),
-        steady=steady,
+        row=plan.row,
+        child=plan.child,
+        number=number[:, 0].copy(),
+        sign=np.ones(len(plan.row), np.int64),
+        steady=plan.steady,
         roots=np.zeros(1, np.int64),
     )
 
 
-def table_count(polynomial: Polynomial, layout: Layout) -> int:
-    """Number of vectors that a slab needs."""
-    low, walked, _ = _in_slab(polynomial, layout, 0)
-    sets, owner = _subsets(walked)
-    return 1 + len(np.unique(sets[(low[owner] != 0) & (sets != 0)]))
+def table_count(polynomial: Polynomial, layout: Layout, enough: int) -> int:
+    """Number of vectors that a slab needs, or a bound on it that is below `enough`."""
+    low, walked, _ = parted(polynomial.masks, layout)
+    walked = np.unique(walked[low != 0])
+    most = int(np.bitwise_count(walked).max(initial=0))
+    bound = sum(comb(layout.walked, order) for order in range(most + 1))
+    if bound <= enough:
+        return bound
+    return len(np.unique(_subsets(walked)[0]))
+
+
+def parted(masks: npt.NDArray[np.int64], layout: Layout) -> tuple[npt.NDArray[np.int64], ...]:
+    """Low, walked and fixed members of packed sets, each counted from its own lowest bit."""
+    low = masks & ((np.int64(1) << layout.low) - 1)
+    walked = (masks >> layout.low) & ((np.int64(1) << layout.walked) - 1)
+    return low, walked, masks >> (layout.low + layout.walked)
 
 
 def together(parts: list[Tables]) -> Tables:
@@ -190,17 +256,6 @@ def together(parts: list[Tables]) -> Tables:
         steady=np.concatenate([part.steady for part in parts]),
         roots=nodes[:-1].astype(np.int64),
     )
-
-
-def _in_slab(polynomial: Polynomial, layout: Layout, slab: int) -> tuple[npt.NDArray[np.int64], ...]:
-    """Low members, walked members and weights of the terms once the fixed bits have their values."""
-    low = polynomial.masks & ((np.int64(1) << layout.low) - 1)
-    walked = (polynomial.masks >> layout.low) & ((np.int64(1) << layout.walked) - 1)
-    fixed = polynomial.masks >> (layout.low + layout.walked)
-    if polynomial.spin:
-        odd = np.bitwise_count(fixed & np.int64(slab)).astype(np.int64) & 1
-        return low, walked, polynomial.weights * (1 - 2 * odd)
-    return low, walked, polynomial.weights * (fixed & ~np.int64(slab) == 0)
 
 
 def _subsets(masks: npt.NDArray[np.int64]) -> tuple[npt.NDArray[np.int64], npt.NDArray[np.int64]]:
@@ -224,6 +279,17 @@ def _subsets(masks: npt.NDArray[np.int64]) -> tuple[npt.NDArray[np.int64], npt.N
     return sets, owner
 
 
+def _distinct(sets: npt.NDArray[np.int64], walked: int) -> tuple[npt.NDArray[np.int64], npt.NDArray[np.int64]]:
+    """The distinct sets, ascending and with the empty one, and the place of each set among them."""
+    if walked > 22:
+        nodes, node = np.unique(np.concatenate([np.zeros(1, np.int64), sets]), return_inverse=True)
+        return nodes, node[1:]
+    seen = np.zeros(1 << walked, bool)
+    seen[0] = True
+    seen[sets] = True
+    return np.flatnonzero(seen), (np.cumsum(seen) - 1)[sets]
+
+
 def _family(
     nodes: npt.NDArray[np.int64], row: npt.NDArray[np.int32], walked: int
 ) -> tuple[npt.NDArray[np.int32], npt.NDArray[np.int8]]:
@@ -240,11 +306,3 @@ def _family(
         child[parent, top] = np.arange(1, len(nodes), dtype=np.int32)
         steady[parent[row[1:] >= 0]] = 0
     return child, steady
-
-
-def _transform(rows: npt.NDArray[Any], spin: bool) -> None:
-    """Coefficients to values, batch by batch, in place."""
-    batch = max(1, _BATCH // rows.shape[1])
-    for start in range(0, len(rows), batch):
-        part = rows[start : start + batch]
-        part[:] = walsh_hadamard(part) if spin else inverse_moebius(part)

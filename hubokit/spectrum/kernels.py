@@ -7,7 +7,9 @@ is in `cursor` (int64) and in the tables of `hubokit.spectrum.derivatives`:
     cursor[1]  least entry of the current vector
     cursor[2]  entry of the current block at which its scan resumes, -1 when the block is done
 
-A walk function returns 0 when block ``end - 1`` is done and 1 when the room for states is used up.
+All loops stand in this one file because the cache on disk knows only the file of the function that it holds: a
+change to what another file inlines would go unnoticed. A walk function returns 0 when block ``end - 1`` is done
+and 1 when the room for states is used up.
 """
 
 from __future__ import annotations
@@ -15,127 +17,149 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from numba import njit
+from numba import njit, types
+from numba.extending import intrinsic
 
 HIGHEST = 2**63 - 1
 _OPTIONS: dict[str, Any] = {"nogil": True, "cache": True, "boundscheck": False}
+_INLINE: dict[str, Any] = {"nogil": True, "boundscheck": False, "forceinline": True}
+
+
+def _trailing_zeros(typingctx, value):  # type: ignore[no-untyped-def]
+    """Number of trailing zeros of a nonzero int64, one machine instruction."""
+
+    def generate(context, builder, signature, args):  # type: ignore[no-untyped-def]
+        return builder.cttz(args[0], context.get_constant(types.boolean, True))
+
+    return types.int64(types.int64), generate
+
+
+_lowest_bit: Any = intrinsic(_trailing_zeros)
 
 
 @njit(**_OPTIONS)
-def _add(e, a):  # type: ignore[no-untyped-def]
-    kind = e.dtype.type
-    least = kind(e[0] + a[0])
-    for i in range(e.shape[0]):
-        x = kind(e[i] + a[i])
-        e[i] = x
-        least = min(least, x)
-    return least
+def place(rows, row, column, fixed, value, slab, spin):  # type: ignore[no-untyped-def]
+    """Add coefficients into zeroed rows once the fixed bits have the values of a slab."""
+    kind = rows.dtype.type
+    for m in range(row.shape[0]):
+        if spin:
+            common, odd = fixed[m] & slab, 0
+            while common != 0:
+                common &= common - 1
+                odd ^= 1
+            amount = -value[m] if odd else value[m]
+        elif fixed[m] & ~slab:
+            continue
+        else:
+            amount = value[m]
+        rows[row[m], column[m]] = kind(rows[row[m], column[m]] + amount)
 
 
 @njit(**_OPTIONS)
-def _subtract(e, a):  # type: ignore[no-untyped-def]
-    kind = e.dtype.type
-    least = kind(e[0] - a[0])
-    for i in range(e.shape[0]):
-        x = kind(e[i] - a[i])
-        e[i] = x
-        least = min(least, x)
-    return least
+def transform(rows, spin):  # type: ignore[no-untyped-def]
+    """Coefficients to values, every row in place."""
+    kind = rows.dtype.type
+    for r in range(rows.shape[0]):
+        x = rows[r]
+        half = 1
+        while half < x.shape[0]:
+            for start in range(0, x.shape[0], 2 * half):
+                a, b = x[start : start + half], x[start + half : start + 2 * half]
+                if spin:
+                    for i in range(half):
+                        low, high = a[i], b[i]
+                        a[i] = kind(low + high)
+                        b[i] = kind(low - high)
+                else:
+                    for i in range(half):
+                        b[i] = kind(b[i] + a[i])
+            half *= 2
 
 
-@njit(**_OPTIONS)
-def _add_through_one(e, a, b):  # type: ignore[no-untyped-def]
-    kind = e.dtype.type
-    least = kind(e[0] + kind(b[0] - a[0]))
-    for i in range(e.shape[0]):
-        y = kind(b[i] - a[i])
-        a[i] = y
-        x = kind(e[i] + y)
-        e[i] = x
-        least = min(least, x)
-    return least
+def _signed(plus: bool) -> tuple[Any, Any, Any]:
+    """The three loops of a step, for the last table with sign +1 or -1. Each returns the least of the new
+    energies."""
+
+    @njit(**_INLINE)
+    def add(flat, e, a, size):  # type: ignore[no-untyped-def]
+        kind = flat.dtype.type
+        least = kind(flat[e] + flat[a]) if plus else kind(flat[e] - flat[a])
+        for i in range(size):
+            x = kind(flat[e + i] + flat[a + i]) if plus else kind(flat[e + i] - flat[a + i])
+            flat[e + i] = x
+            least = min(least, x)
+        return least
+
+    @njit(**_INLINE)
+    def add_through_one(flat, e, a, b, size):  # type: ignore[no-untyped-def]
+        kind = flat.dtype.type
+        least = kind(flat[e] + kind((flat[b] if plus else -flat[b]) - flat[a]))
+        for i in range(size):
+            y = kind(flat[b + i] - flat[a + i]) if plus else kind(-flat[b + i] - flat[a + i])
+            flat[a + i] = y
+            x = kind(flat[e + i] + y)
+            flat[e + i] = x
+            least = min(least, x)
+        return least
+
+    @njit(**_INLINE)
+    def add_through_two(flat, e, a, b, c, size):  # type: ignore[no-untyped-def]
+        kind = flat.dtype.type
+        least = kind(flat[e] + kind(kind((flat[c] if plus else -flat[c]) - flat[b]) - flat[a]))
+        for i in range(size):
+            z = kind(flat[c + i] - flat[b + i]) if plus else kind(-flat[c + i] - flat[b + i])
+            flat[b + i] = z
+            y = kind(z - flat[a + i])
+            flat[a + i] = y
+            x = kind(flat[e + i] + y)
+            flat[e + i] = x
+            least = min(least, x)
+        return least
+
+    return add, add_through_one, add_through_two
 
 
-@njit(**_OPTIONS)
-def _subtract_through_one(e, a, b):  # type: ignore[no-untyped-def]
-    kind = e.dtype.type
-    least = kind(e[0] - kind(b[0] + a[0]))
-    for i in range(e.shape[0]):
-        y = kind(-b[i] - a[i])
-        a[i] = y
-        x = kind(e[i] + y)
-        e[i] = x
-        least = min(least, x)
-    return least
+_add, _add_through_one, _add_through_two = _signed(True)
+_subtract, _subtract_through_one, _subtract_through_two = _signed(False)
 
 
-@njit(**_OPTIONS)
-def _add_through_two(e, a, b, c):  # type: ignore[no-untyped-def]
-    kind = e.dtype.type
-    least = kind(e[0] + kind(kind(c[0] - b[0]) - a[0]))
-    for i in range(e.shape[0]):
-        z = kind(c[i] - b[i])
-        b[i] = z
-        y = kind(z - a[i])
-        a[i] = y
-        x = kind(e[i] + y)
-        e[i] = x
-        least = min(least, x)
-    return least
-
-
-@njit(**_OPTIONS)
-def _subtract_through_two(e, a, b, c):  # type: ignore[no-untyped-def]
-    kind = e.dtype.type
-    least = kind(e[0] + kind(kind(-c[0] - b[0]) - a[0]))
-    for i in range(e.shape[0]):
-        z = kind(-c[i] - b[i])
-        b[i] = z
-        y = kind(z - a[i])
-        a[i] = y
-        x = kind(e[i] + y)
-        e[i] = x
-        least = min(least, x)
-    return least
-
-
-@njit(**_OPTIONS)
-def _renew(a, b, sign):  # type: ignore[no-untyped-def]
+@njit(**_INLINE)
+def _renew(flat, a, b, sign, size):  # type: ignore[no-untyped-def]
     """a = sign * b - a."""
-    kind = a.dtype.type
+    kind = flat.dtype.type
     if sign > 0:
-        for i in range(a.shape[0]):
-            a[i] = kind(b[i] - a[i])
+        for i in range(size):
+            flat[a + i] = kind(flat[b + i] - flat[a + i])
     else:
-        for i in range(a.shape[0]):
-            a[i] = kind(-b[i] - a[i])
+        for i in range(size):
+            flat[a + i] = kind(-flat[b + i] - flat[a + i])
 
 
-@njit(**_OPTIONS)
-def _negate(a):  # type: ignore[no-untyped-def]
-    kind = a.dtype.type
-    for i in range(a.shape[0]):
-        a[i] = kind(-a[i])
+@njit(**_INLINE)
+def _negate(flat, a, size):  # type: ignore[no-untyped-def]
+    kind = flat.dtype.type
+    for i in range(size):
+        flat[a + i] = kind(-flat[a + i])
 
 
-@njit(**_OPTIONS)
-def _advance(t, root, rows, row, child, number, sign, steady, chain, least):  # type: ignore[no-untyped-def]
-    """Step t of the walk of one polynomial: its energies move on; the least entry of its vector is returned."""
+@njit(**_INLINE)
+def _advance(t, root, flat, size, row, child, number, sign, steady, chain, least):  # type: ignore[no-untyped-def]
+    """Step t of the walk of one polynomial: its energies move on; the least entry of its vector is returned.
+
+    The rows are addressed by unsigned offsets into `flat`: views would be reference-counted, dearer than the
+    additions.
+    """
     length, with_row = 0, 0
-    node, rest, bit = root, t, 0
+    node, rest = root, t
     while rest != 0:
-        while rest & 1 == 0:
-            rest >>= 1
-            bit += 1
-        node = child[node, bit]
+        node = child[node, _lowest_bit(rest)]
         if node < 0:
             break
         chain[length] = node
         length += 1
         if row[node] >= 0:
             with_row = length
-        rest >>= 1
-        bit += 1
+        rest &= rest - 1
     increment = np.int64(0)
     for place in range(length - 1, -1, -1):
         increment -= number[chain[place]]
@@ -144,24 +168,28 @@ def _advance(t, root, rows, row, child, number, sign, steady, chain, least):  # 
     if with_row == 0:
         return least
     last = chain[with_row - 1]
+    e, b = np.uint64(row[root]) * size, np.uint64(row[last]) * size
     if steady[last]:
         sign[last] = -sign[last]
     else:
-        _negate(rows[row[last]])
+        _negate(flat, b, size)
     factor = sign[last]
-    e, b = rows[row[root]], rows[row[last]]
     while with_row > 3:
-        a = rows[row[chain[with_row - 2]]]
-        _renew(a, b, factor)
+        a = np.uint64(row[chain[with_row - 2]]) * size
+        _renew(flat, a, b, factor, size)
         b, factor = a, np.int64(1)
         with_row -= 1
     if with_row == 1:
-        return np.int64(_add(e, b) if factor > 0 else _subtract(e, b))
-    a = rows[row[chain[0]]]
+        return np.int64(_add(flat, e, b, size) if factor > 0 else _subtract(flat, e, b, size))
+    a = np.uint64(row[chain[0]]) * size
     if with_row == 2:
-        return np.int64(_add_through_one(e, a, b) if factor > 0 else _subtract_through_one(e, a, b))
-    m = rows[row[chain[1]]]
-    return np.int64(_add_through_two(e, a, m, b) if factor > 0 else _subtract_through_two(e, a, m, b))
+        if factor > 0:
+            return np.int64(_add_through_one(flat, e, a, b, size))
+        return np.int64(_subtract_through_one(flat, e, a, b, size))
+    m = np.uint64(row[chain[1]]) * size
+    if factor > 0:
+        return np.int64(_add_through_two(flat, e, a, m, b, size))
+    return np.int64(_subtract_through_two(flat, e, a, m, b, size))
 
 
 @njit(**_OPTIONS)
@@ -174,10 +202,8 @@ def walk_levels(  # type: ignore[no-untyped-def]
     it are counted and not noted. tally: levels in use, next name, notes in use, ceiling (only energies below it
     count). states, names: the notes.
     """
-    e = rows[row[0]]
-    low_bits = 0
-    while 1 << low_bits < e.shape[0]:
-        low_bits += 1
+    e, flat, size = rows[0], rows.ravel(), np.uint64(rows.shape[1])
+    low_bits = _lowest_bit(np.int64(e.shape[0]))
     most = energy.shape[0]
     t, least, resume = cursor[0], cursor[1], cursor[2]
     while True:
@@ -220,7 +246,7 @@ def walk_levels(  # type: ignore[no-untyped-def]
             cursor[0], cursor[1], cursor[2] = t, least, -1
             return 0
         t += 1
-        least = _advance(t, 0, rows, row, child, number, sign, steady, chain, least)
+        least = _advance(t, 0, flat, size, row, child, number, sign, steady, chain, least)
         if least + number[0] < min(tally[3], energy[most - 1] if tally[0] == most else HIGHEST):
             resume = 0
 
@@ -230,10 +256,8 @@ def walk_candidates(  # type: ignore[no-untyped-def]
     cursor, end, base, rows, row, child, number, sign, steady, chain, ceiling, tally, states, energies
 ):
     """Note every state of energy at most `ceiling`, with its energy. tally[0]: notes in use."""
-    e = rows[row[0]]
-    low_bits = 0
-    while 1 << low_bits < e.shape[0]:
-        low_bits += 1
+    e, flat, size = rows[0], rows.ravel(), np.uint64(rows.shape[1])
+    low_bits = _lowest_bit(np.int64(e.shape[0]))
     t, least, resume = cursor[0], cursor[1], cursor[2]
     while True:
         if resume >= 0:
@@ -253,7 +277,7 @@ def walk_candidates(  # type: ignore[no-untyped-def]
             cursor[0], cursor[1], cursor[2] = t, least, -1
             return 0
         t += 1
-        least = _advance(t, 0, rows, row, child, number, sign, steady, chain, least)
+        least = _advance(t, 0, flat, size, row, child, number, sign, steady, chain, least)
         if least + number[0] <= ceiling:
             resume = 0
 
@@ -263,7 +287,7 @@ def walk_counts(  # type: ignore[no-untyped-def]
     cursor, end, rows, row, child, number, sign, steady, chain, lowest, step, counts
 ):
     """Count every energy: counts (2, bins), energy ``lowest + step * bin``, step 1 or 2."""
-    e = rows[row[0]]
+    e, flat, size = rows[0], rows.ravel(), np.uint64(rows.shape[1])
     half = step - 1
     t = cursor[0]
     while True:
@@ -276,7 +300,7 @@ def walk_counts(  # type: ignore[no-untyped-def]
         if t + 1 >= end:
             return 0
         t += 1
-        _advance(t, 0, rows, row, child, number, sign, steady, chain, np.int64(0))
+        _advance(t, 0, flat, size, row, child, number, sign, steady, chain, np.int64(0))
         cursor[2] = 0
 
 
@@ -285,7 +309,7 @@ def walk_energies(  # type: ignore[no-untyped-def]
     cursor, end, rows, row, child, number, sign, steady, chain, out
 ):
     """Write the energies of the next blocks: out (blocks, 2**L) int64."""
-    e = rows[row[0]]
+    e, flat, size = rows[0], rows.ravel(), np.uint64(rows.shape[1])
     t = cursor[0]
     place = 0
     while True:
@@ -298,23 +322,17 @@ def walk_energies(  # type: ignore[no-untyped-def]
         if t + 1 >= end:
             return 0
         t += 1
-        _advance(t, 0, rows, row, child, number, sign, steady, chain, np.int64(0))
+        _advance(t, 0, flat, size, row, child, number, sign, steady, chain, np.int64(0))
         cursor[2] = 0
 
 
-@njit(**_OPTIONS)
-def _keep_at_least(kept, d, bound):  # type: ignore[no-untyped-def]
+@njit(**_INLINE)
+def _keep_within(kept, d, least, most):  # type: ignore[no-untyped-def]
     for i in range(d.shape[0]):
-        kept[i] = kept[i] if d[i] >= bound else 0
+        kept[i] = kept[i] if least <= d[i] <= most else 0
 
 
-@njit(**_OPTIONS)
-def _keep_at_most(kept, d, bound):  # type: ignore[no-untyped-def]
-    for i in range(d.shape[0]):
-        kept[i] = kept[i] if d[i] <= bound else 0
-
-
-@njit(**_OPTIONS)
+@njit(**_INLINE)
 def _keep_low_flips(kept, e):  # type: ignore[no-untyped-def]
     reach = 1
     while reach < e.shape[0]:
@@ -336,6 +354,7 @@ def walk_minima(  # type: ignore[no-untyped-def]
     highest: of that type.
     """
     kind = rows.dtype.type
+    flat, size = rows.ravel(), np.uint64(rows.shape[1])
     t = cursor[0]
     while True:
         if cursor[2] >= 0:
@@ -347,16 +366,11 @@ def walk_minima(  # type: ignore[no-untyped-def]
                 one = fixed[place - 1] if bit < 0 else (gray >> bit) & 1
                 # derivative d + number: not lowered when it is >= 0 (bit 0) or <= 0 (bit 1)
                 bound = -number[root]
-                d = rows[row[root]]
-                if one == 0:
-                    if bound > highest:
-                        kept[:] = 0
-                    elif bound > lowest:
-                        _keep_at_least(kept, d, kind(bound))
-                elif bound < lowest:
+                least, most = (bound, highest) if one == 0 else (lowest, bound)
+                if least > highest or most < lowest:
                     kept[:] = 0
-                elif bound < highest:
-                    _keep_at_most(kept, d, kind(bound))
+                else:
+                    _keep_within(kept, rows[row[root]], kind(max(least, lowest)), kind(min(most, highest)))
             _keep_low_flips(kept, rows[row[roots[0]]])
             found = 0
             for i in range(kept.shape[0]):
@@ -367,7 +381,7 @@ def walk_minima(  # type: ignore[no-untyped-def]
             return 0
         t += 1
         for place in range(roots.shape[0]):
-            _advance(t, roots[place], rows, row, child, number, sign, steady, chain, np.int64(0))
+            _advance(t, roots[place], flat, size, row, child, number, sign, steady, chain, np.int64(0))
         cursor[2] = 0
 
 

@@ -28,6 +28,7 @@ INT64_BOUND = 2**62
 Packed = npt.NDArray[np.uint64]
 
 _CELLS = 2**20
+_ROWS = 256
 
 
 @dataclass(frozen=True)
@@ -188,19 +189,30 @@ def symmetry_of(polynomial: Polynomial) -> Symmetry:
         used = int(np.bitwise_or.reduce(polynomial.masks)) if len(polynomial.masks) else 0
         free = [bit for bit in reversed(range(polynomial.size)) if not used >> bit & 1]
         return Symmetry(polynomial.size, tuple(1 << bit for bit in free))
-    # Rows reduced from the least significant bit up: the bits without a row of their own are free, and each free bit
-    # is the highest of its flip, because a row's other bits all lie above the row's own bit.
-    rows = np.unique(polynomial.masks[polynomial.masks != 0])
+    # Rows are reduced from the least significant bit up: a row's other bits all lie above its own bit, so that a bit
+    # without a row is free, and is the highest of its flip.
     own: dict[int, int] = {}
-    for bit in range(polynomial.size):
-        having = np.flatnonzero((rows >> bit) & 1)
-        if len(having):
-            row = rows[having[0]]
-            rows = np.delete(rows, having[0])
-            rows = np.where((rows >> bit) & 1, rows ^ row, rows)
-            own = {other: (mask ^ int(row) if mask >> bit & 1 else mask) for other, mask in own.items()}
-            own[bit] = int(row)
-            rows = np.unique(rows[rows != 0])
+    for rows in (polynomial.masks[:_ROWS], polynomial.masks[_ROWS:]):  # a few rows mostly suffice
+        if len(own) < polynomial.size:
+            _absorb(own, rows.copy(), polynomial.size)
     free = [bit for bit in reversed(range(polynomial.size)) if bit not in own]
     flips = (1 << bit | sum(1 << low for low, mask in own.items() if mask >> bit & 1) for bit in free)
     return Symmetry(polynomial.size, tuple(flips))
+
+
+def _absorb(own: dict[int, int], rows: npt.NDArray[np.int64], size: int) -> None:
+    """Add rows to a reduced basis over GF(2): own bit to row; no row has the own bit of another."""
+    for bit in range(size):
+        having = ((rows >> bit) & 1).astype(bool)
+        if bit not in own:
+            if not having.any():
+                continue
+            row = int(rows[np.argmax(having)])
+            for other, mask in own.items():
+                if row >> other & 1:
+                    row ^= mask
+            for other, mask in own.items():
+                if mask >> bit & 1:
+                    own[other] = mask ^ row
+            own[bit] = row
+        rows[having] ^= np.int64(own[bit])
