@@ -1,7 +1,8 @@
-"""Least value of a sum of functions of a few bits each: bucket elimination, with mini-buckets where tables would grow.
+"""Least value of a sum of functions of a few bits each, by bucket elimination and mini-buckets.
 
-Where the functions that hold a variable span more than `WIDEST` others, they are split into groups and each group is minimised
-over the variable by itself: a sum of minima never exceeds the minimum of the sum, so the result stays a lower bound.
+Where the functions that hold a variable span more than `WIDEST` others, they are split into groups and each
+group is minimised over the variable by itself: a sum of minima never exceeds the minimum of the sum, so the
+result stays a lower bound.
 
 References
 ----------

@@ -1,7 +1,8 @@
 """Supposed right settings of a cluster's auxiliaries as functions of a few guards, for the proof by shared bounds.
 
-Nothing here proves anything: states are drawn, each is brought to a local minimum by single flips, and every auxiliary is fitted
-by a function of its few heaviest neighbours, setting by setting by majority. A wrong candidate only fails to prove.
+Nothing here proves anything: states are drawn, each is brought to a local minimum by single flips, and every
+auxiliary is fitted by a function of its few heaviest neighbours, setting by setting by majority. A wrong
+candidate only fails to prove.
 """
 
 from __future__ import annotations

@@ -1,41 +1,47 @@
 """What a second checker needs to follow a projection's proof, as a JSON document.
 
-All variables are positions in the model's labels. Energies, weights, margins and tables are integers in units of the model's
-resolution, without its constant. A *bit* is 0 for boolean 0 and spin +1, 1 for boolean 1 and spin -1. Setting number t
-of a list of variables carries the first one as its most significant bit.
+All variables are positions in the model's labels. Energies, weights, margins and tables are integers in units
+of the model's resolution, without its constant. A *bit* is 0 for boolean 0 and spin +1, 1 for boolean 1 and
+spin -1. Setting number t of a list of variables carries the first one as its most significant bit.
 
 Document
 --------
-``kind`` "projection"; ``version`` 1; ``auxiliaries`` (positions); ``multiplicity`` m or null; ``gap`` ``{"value": int or null,
-"exact": bool}`` or null; ``entries``, the number of integers that the steps hold; and ``steps`` in the order of the proof. When there
-would be more than `LIMIT` entries, ``"omitted": "size"`` and ``counts`` (step: auxiliaries) stand in place of ``steps``.
+``kind`` "projection"; ``version`` 1; ``auxiliaries`` (positions); ``multiplicity`` m or null; ``gap``
+``{"value": int or null, "exact": bool}`` or null; ``entries``, the number of integers that the steps hold;
+and ``steps`` in the order of the proof. When there would be more than `LIMIT` entries, ``"omitted": "size"``
+and ``counts`` (step: auxiliaries) stand in place of ``steps``.
 
-The checker keeps a polynomial F', at first the model F, and the set of *known* auxiliaries. Every auxiliary is in exactly one step.
-The field of y is F'(y bit 1) - F'(y bit 0).
+The checker keeps a polynomial F', at first the model F, and the set of *known* auxiliaries. Every auxiliary
+is in exactly one step. The field of y is F'(y bit 1) - F'(y bit 0).
 
 Steps
 -----
 guards
-    ``auxiliaries``, ``guards`` (a list for each), ``functions`` (text: character t is y's bit at setting t of its guards), ``margins``, ``eliminate``.
-    For every setting of the guards and whatever the other variables are, the field is < 0 where the bit is 1 and > 0 where it is 0,
-    by bounds taken term by term, and its absolute value, rounded up to a whole number, is at least the margin. All auxiliaries of a step are judged against the same F'.
-    Not ``eliminate``: the guards are originals or known before, and the auxiliaries become known.
-    ``eliminate``: the auxiliaries are replaced in F' one after the other in the listed order; a guard may be an auxiliary that is still in F'.
+    ``auxiliaries``, ``guards`` (a list for each), ``functions`` (text: character t is y's bit at setting t of
+    its guards), ``margins``, ``eliminate``. For every setting of the guards and whatever the other variables
+    are, the field is < 0 where the bit is 1 and > 0 where it is 0, by bounds taken term by term, and its
+    absolute value, rounded up to a whole number, is at least the margin. All auxiliaries of a step are judged
+    against the same F'. Not ``eliminate``: the guards are originals or known before, and the auxiliaries
+    become known. ``eliminate``: the auxiliaries are replaced in F' one after the other in the listed order; a
+    guard may be an auxiliary that is still in F'.
 shared
-    ``auxiliaries``, ``guards``, ``functions``, ``shares``, ``slacks``: decided together, see `hubokit.projection.shared_bounds`. ``shares`` is
-    "equal" or a list of ``[i, k, bit of i, bit of k, "p/q"]`` (end i bears p/q of a negative coupling, end k the rest; one half where not listed).
+    ``auxiliaries``, ``guards``, ``functions``, ``shares``, ``slacks``: decided together, see
+    `hubokit.projection.shared_bounds`. ``shares`` is "equal" or a list of ``[i, k, bit of i, bit of k,
+    "p/q"]`` (end i bears p/q of a negative coupling, end k the rest; one half where not listed).
 tables
-    ``shapes`` (``field``, ``coupling``, ``between`` as ``[i, k, weight]``, ``minimum``, ``multiplicity``) and ``clusters`` ``[shape, factor, auxiliaries, touched]``: the
-    cluster's couplings are factor times the shape's; ``minimum[t]`` is the least energy at setting t of the touched variables, which are originals or
+    ``shapes`` (``field``, ``coupling``, ``between`` as ``[i, k, weight]``, ``minimum``, ``multiplicity``) and
+    ``clusters`` ``[shape, factor, auxiliaries, touched]``: the cluster's couplings are factor times the
+    shape's; ``minimum[t]`` is the least energy at setting t of the touched variables, which are originals or
     known; ``multiplicity`` is one number or one for each t.
 counting
-    The same with ``classes`` (columns), ``signs`` (of the columns) and ``coupling`` by class; ``minimum`` is flat in C order over the numbers of
-    sign-adjusted set bits in each class.
+    The same with ``classes`` (columns), ``signs`` (of the columns) and ``coupling`` by class; ``minimum`` is
+    flat in C order over the numbers of sign-adjusted set bits in each class.
 states
-    ``auxiliaries``, ``touched`` (originals), ``minimum``, ``multiplicity``: the terms that hold the auxiliaries minimised state by state, with the
-    known auxiliaries at their values.
+    ``auxiliaries``, ``touched`` (originals), ``minimum``, ``multiplicity``: the terms that hold the
+    auxiliaries minimised state by state, with the known auxiliaries at their values.
 
-P is what F' holds without undecided auxiliaries, plus factor times the polynomials of the tables, with the known auxiliaries put in, last first.
+P is what F' holds without undecided auxiliaries, plus factor times the polynomials of the tables, with the
+known auxiliaries put in, last first.
 """
 
 from __future__ import annotations

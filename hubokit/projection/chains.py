@@ -1,11 +1,12 @@
 """Auxiliaries eliminated one after another: chains of pairs, and whatever else the plain bounds leave open.
 
-In y1 = x0 x1, y2 = y1 x2 the penalty of y2 pulls on y1 as hard as the penalty of y1 itself, so that no interval bound decides y1
-while y2 is free. But y2 is decided by y1 and x2. Put in, it leaves a polynomial F' = min over y2 of F in which the pull is gone,
-and there y1 is decided in its turn. Every step is the same fact as in `hubokit.projection.guards`, about a polynomial that
-need not be quadratic: fix the guards; a product that they do not fix adds anything between its least and its greatest value.
-A wrong auxiliary that was put in early costs at least its margin in the polynomial of its time, so the least margin
-bounds the auxiliary gap from below.
+In y1 = x0 x1, y2 = y1 x2 the penalty of y2 pulls on y1 as hard as the penalty of y1 itself, so that no
+interval bound decides y1 while y2 is free. But y2 is decided by y1 and x2. Put in, it leaves a polynomial F'
+= min over y2 of F in which the pull is gone, and there y1 is decided in its turn. Every step is the same fact
+as in `hubokit.projection.guards`, about a polynomial that need not be quadratic: fix the guards; a product
+that they do not fix adds anything between its least and its greatest value. A wrong auxiliary that was put in
+early costs at least its margin in the polynomial of its time, so the least margin bounds the auxiliary gap
+from below.
 """
 
 from __future__ import annotations

@@ -1,9 +1,10 @@
 """Symmetric clusters by counting: variables with equal coupling vectors matter only by how many of them are set.
 
-Group the touched variables of a cluster into *classes* of equal coupling vectors to the cluster's auxiliaries (for spins: equal
-up to sign, where a flipped spin is counted by its negative). The minimum over the auxiliaries depends only on the number
-of set bits in each class, so the table has prod(d_c + 1) entries in place of 2**d. The coefficient of a product with e_c
-variables from class c follows from it one class at a time:
+Group the touched variables of a cluster into *classes* of equal coupling vectors to the cluster's auxiliaries
+(for spins: equal up to sign, where a flipped spin is counted by its negative). The minimum over the
+auxiliaries depends only on the number of set bits in each class, so the table has prod(d_c + 1) entries in
+place of 2**d. The coefficient of a product with e_c variables from class c follows from it one class at a
+time:
 
 - booleans: the e-th finite difference at 0, ``sum_k (-1)**(e-k) C(e, k) T(k)``;
 - spins: ``2**-d sum_k K(e, k) T(k)`` with ``K(e, k) = sum_j (-1)**j C(e, j) C(d-e, k-j)``.
@@ -11,7 +12,8 @@ variables from class c follows from it one class at a time:
 References
 ----------
 M. Krawtchouk, "Sur une generalisation des polynomes d'Hermite", 1929 (the numbers K(e, k)).
-M. Anthony, E. Boros, Y. Crama, A. Gruber, "Quadratization of symmetric pseudo-Boolean functions", 2016 (why counting is enough).
+M. Anthony, E. Boros, Y. Crama, A. Gruber, "Quadratization of symmetric pseudo-Boolean functions", 2016 (why
+counting is enough).
 """
 
 from __future__ import annotations

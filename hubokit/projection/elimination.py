@@ -1,9 +1,10 @@
 """The minimum over one cluster's auxiliaries for many states at once, by bucket elimination.
 
-Fix the originals in each of m states. What is left of a cluster is ``sum_i f_i b_i + sum_{i<k} q_ik b_i b_k`` over the bits b of its
-auxiliaries, with fields f that differ from state to state and couplings q that do not. Auxiliaries are eliminated one after
-another along a low-degree order; a message over the neighbours left behind carries, for each state and setting, the least
-energy, the number of settings that reach it, the nearest energy above it, and the first of the best settings in lift order.
+Fix the originals in each of m states. What is left of a cluster is ``sum_i f_i b_i + sum_{i<k} q_ik b_i b_k``
+over the bits b of its auxiliaries, with fields f that differ from state to state and couplings q that do not.
+Auxiliaries are eliminated one after another along a low-degree order; a message over the neighbours left
+behind carries, for each state and setting, the least energy, the number of settings that reach it, the
+nearest energy above it, and the first of the best settings in lift order.
 
 References
 ----------

@@ -1,13 +1,14 @@
 """Auxiliaries decided by a few guard variables: interval bounds.
 
-Fix an auxiliary y and a set G of other variables, its *guards*. The local field of y (the energy change when y is flipped) is
-an affine function of the other variables. If for every setting of G its sign is the same, and strict, whatever the variables
-outside G are, then y is a function of G in every state that minimises over the auxiliaries. Such facts hold together; where the
-guards are originals or auxiliaries decided before, y is a unique function of the originals. Flipping a wrong y improves
-by at least the *margin*, the least absolute field met, whatever the other variables are.
+Fix an auxiliary y and a set G of other variables, its *guards*. The local field of y (the energy change when
+y is flipped) is an affine function of the other variables. If for every setting of G its sign is the same,
+and strict, whatever the variables outside G are, then y is a function of G in every state that minimises over
+the auxiliaries. Such facts hold together; where the guards are originals or auxiliaries decided before, y is
+a unique function of the originals. Flipping a wrong y improves by at least the *margin*, the least absolute
+field met, whatever the other variables are.
 
-The case in mind is pair substitution, y = x1 x2 (I. G. Rosenberg, "Reduction of bivalent maximization to the quadratic case",
-1975), whose penalty couples y strongly to x1 and x2 and to nothing else.
+The case in mind is pair substitution, y = x1 x2 (I. G. Rosenberg, "Reduction of bivalent maximization to the
+quadratic case", 1975), whose penalty couples y strongly to x1 and x2 and to nothing else.
 """
 
 from __future__ import annotations

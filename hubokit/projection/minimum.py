@@ -1,7 +1,8 @@
 """The exact minimum over the auxiliaries at given states of the originals, for any quadratic model.
 
-Auxiliaries that rules decide are read off their guards. The others split into clusters: small ones are enumerated, all
-clusters of one size at once, larger ones go through bucket elimination. Nothing here needs P as a polynomial.
+Auxiliaries that rules decide are read off their guards. The others split into clusters: small ones are
+enumerated, all clusters of one size at once, larger ones go through bucket elimination. Nothing here needs P
+as a polynomial.
 """
 
 from __future__ import annotations
@@ -95,8 +96,8 @@ class Minimiser:
         found = self.clusters
         if found.a.max(initial=0) > MOST_COUPLED:
             raise LimitError(
-                f"a cluster of {found.a.max():,} coupled auxiliaries that no few guards decide is too large to minimise over; "
-                f"at most {MOST_COUPLED:,} are allowed"
+                f"a cluster of {found.a.max():,} coupled auxiliaries that no few guards decide is too large to "
+                f"minimise over; at most {MOST_COUPLED:,} are allowed"
             )
         chosen = np.flatnonzero(found.a > ENUMERATED)
         return tuple(_inner(self.structure, found.auxiliaries_of(int(one))) for one in chosen)

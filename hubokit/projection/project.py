@@ -1,7 +1,8 @@
-"""Projection of a quadratic model: P(x) = min over the auxiliaries of F(x, a), as a polynomial where it can be proved.
+"""Projection of a quadratic model: P(x) = min over the auxiliaries of F(x, a).
 
-The auxiliaries split into clusters, which `hubokit.projection.stages` settles one way or another. What nothing settles is
-named in `Projection.undecided`, and P is then not claimed; the minimum at given states is exact all the same.
+The auxiliaries split into clusters, which `hubokit.projection.stages` settles one way or another, and P is a polynomial. What
+nothing settles is named in `Projection.undecided`, and P is then not claimed; the minimum at given states is
+exact all the same.
 """
 
 from __future__ import annotations

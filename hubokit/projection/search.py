@@ -1,9 +1,10 @@
 """The minimum over many coupled auxiliaries, state by state, by branch and bound over flips.
 
-Each state starts from a local minimum. Any other setting is a set of flips d with excess ``sum l_i d_i + sum Q_ik d_i d_k`` (see
-`hubokit.projection.shared_bounds`). A flip with ``l_i > sum_k max(0, -Q_ik)`` over the flips still open is in no minimiser,
-one with ``l_i < -sum_k max(0, Q_ik)`` is in all, and ``sum_i min(0, l_i - 1/2 sum_k max(0, -Q_ik))`` bounds what the open flips can
-gain. States and branches are worked on together as rows of arrays; the number of branches is limited, not the time.
+Each state starts from a local minimum. Any other setting is a set of flips d with excess ``sum l_i d_i + sum
+Q_ik d_i d_k`` (see `hubokit.projection.shared_bounds`). A flip with ``l_i > sum_k max(0, -Q_ik)`` over the
+flips still open is in no minimiser, one with ``l_i < -sum_k max(0, Q_ik)`` is in all, and ``sum_i min(0, l_i
+- 1/2 sum_k max(0, -Q_ik))`` bounds what the open flips can gain. States and branches are worked on together
+as rows of arrays; the number of branches is limited, not the time.
 """
 
 from __future__ import annotations

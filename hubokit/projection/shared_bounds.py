@@ -1,7 +1,8 @@
 """Auxiliaries decided together by shared bounds: what proves a penalty that plain interval bounds find too weak.
 
-Let r(x) be supposed right settings, one function of a few guards for each auxiliary of a cluster. Write any setting as flips d from the
-right one. Over bits, with sigma_i = 1 - 2 r_i, local fields f_i (the others right) and couplings q_ik, its excess is
+Let r(x) be supposed right settings, one function of a few guards for each auxiliary of a cluster. Write any
+setting as flips d from the right one. Over bits, with sigma_i = 1 - 2 r_i, local fields f_i (the others
+right) and couplings q_ik, its excess is
 
     sum_i l_i(x) d_i + sum_{i<k} Q_ik(x) d_i d_k,    l_i = sigma_i f_i,    Q_ik = q_ik sigma_i sigma_k.
 
@@ -9,14 +10,16 @@ Divide the cost of every negative Q_ik between its two ends, shares s_ik + s_ki 
 
     slack_i(x) = l_i(x) - sum_k s_ik max(0, -Q_ik(x)) > 0,
 
-the excess is at least the sum of the slacks of what was flipped, so r is the only minimiser and the auxiliary gap is at least the
-least slack. The shares may depend on the right bits of both ends. Equal shares need no search; better ones come from a linear
-program over the worst states met, are rounded to 64ths, and count only if the condition then holds exactly. The least value
-over x is bounded by bucket elimination: each slack is a sum of functions of a few originals.
+the excess is at least the sum of the slacks of what was flipped, so r is the only minimiser and the auxiliary
+gap is at least the least slack. The shares may depend on the right bits of both ends. Equal shares need no
+search; better ones come from a linear program over the worst states met, are rounded to 64ths, and count only
+if the condition then holds exactly. The least value over x is bounded by bucket elimination: each slack is a
+sum of functions of a few originals.
 
 References
 ----------
-E. Boros, P. L. Hammer, "Pseudo-Boolean optimization", 2002 (bounds of quadratic functions by dividing terms among variables).
+E. Boros, P. L. Hammer, "Pseudo-Boolean optimization", 2002 (bounds of quadratic functions by dividing terms
+among variables).
 """
 
 from __future__ import annotations
@@ -43,7 +46,8 @@ PROGRAM_MOST = 200
 
 @dataclass(frozen=True)
 class FlipProblem:
-    """One cluster over bits: energy ``sum_i (start_i + sum_k linear_ik b_k) b_i + sum_{i<j} pair_ij b_i b_j`` in known bits b_k.
+    """One cluster over bits: energy ``sum_i (start_i + sum_k linear_ik b_k) b_i + sum_{i<j} pair_ij b_i b_j``
+    in known bits b_k.
 
     Parameters
     ----------
@@ -146,7 +150,8 @@ def _slack_functions(
     for k in np.flatnonzero(problem.pair[i]):
         q = sigma * problem.pair[i, k]
         here = (PARTS // 2, PARTS // 2) if shares is None else shares[i, k, right]
-        # The other end counts when its right bit is 1; a joint flip costs -Q where the product of q and both signs is negative.
+        # The other end counts when its right bit is 1; a joint flip costs -Q where the product of q and both
+        # signs is negative.
         values = np.array([-max(0, -q) * here[0], PARTS * q - max(0, q) * here[1]], kind)
         table = values[candidate.functions[k]].reshape((2,) * len(candidate.guards[k]))
         functions.append((candidate.guards[k], table))
@@ -156,8 +161,8 @@ def _slack_functions(
 def better_shares(problem: FlipProblem, candidate: Candidate, rounds: int = 12) -> tuple[Integers, Slacks]:
     """Shares that raise the least slack, by a linear program over the worst states met so far.
 
-    Each round finds the worst states, solves for the shares that maximise the least slack over all of them, and rounds these to
-    multiples of 1 / `PARTS`. The best shares seen are returned, with their exact slacks.
+    Each round finds the worst states, solves for the shares that maximise the least slack over all of them,
+    and rounds these to multiples of 1 / `PARTS`. The best shares seen are returned, with their exact slacks.
     """
     cases = _cases(problem)
     number = {case: index for index, case in enumerate(cases)}

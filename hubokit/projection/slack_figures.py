@@ -1,8 +1,8 @@
 """How far penalties could shrink: the slack that shared bounds leave each auxiliary.
 
-A penalty that is part of no coupling between two auxiliaries enters the slack of its own auxiliary alone. So where the slack at a
-setting of the guards is s, the penalty's share of the local field there may fall by anything less than s, at all auxiliaries
-at once, and the reduction is still proved.
+A penalty that is part of no coupling between two auxiliaries enters the slack of its own auxiliary alone. So
+where the slack at a setting of the guards is s, the penalty's share of the local field there may fall by
+anything less than s, at all auxiliaries at once, and the reduction is still proved.
 """
 
 from __future__ import annotations
@@ -62,14 +62,14 @@ def shared_bound_slacks(
         Quadratic.
     auxiliaries : sequence of str
     shares : "equal" or "program"
-        Half of each cost to each end, or shares from a linear program where some slack is not positive (clusters of up to
-        `PROGRAM_MOST` auxiliaries).
+        Half of each cost to each end, or shares from a linear program where some slack is not positive
+        (clusters of up to `PROGRAM_MOST` auxiliaries).
 
     Returns
     -------
     dict from auxiliary to SlackFigures
-        Positive slacks all over one cluster prove all its auxiliaries; nothing is claimed otherwise. Clusters of more than
-        `SHARED_MOST` auxiliaries are left out.
+        Positive slacks all over one cluster prove all its auxiliaries; nothing is claimed otherwise. Clusters
+        of more than `SHARED_MOST` auxiliaries are left out.
 
     Raises
     ------

@@ -41,6 +41,9 @@ from hubokit.projection.tables import coefficients, written
 SMALL = 12
 """Auxiliaries plus touched variables up to which a cluster is tabulated without looking for guards."""
 
+SINGLE = 6
+"""Touched variables up to which a single auxiliary is tabulated without looking for guards."""
+
 SMALL_WORK = 2**28
 """Energies that these tables may take together."""
 
@@ -82,7 +85,8 @@ def settle(structure: Structure, table_bits: int) -> Findings:
 
 def _small_tables(findings: Findings, found: Components, table_bits: int) -> NDArray[np.bool_]:
     """Tables for small clusters; returns which clusters are left."""
-    size = found.a + found.d
+    # A single auxiliary with many neighbours is usually decided by a few of them, which is quicker and as exact.
+    size = np.where((found.a == 1) & (found.d > SINGLE), SMALL + 1, found.a + found.d)
     total, limit = 0, -1
     for bits in range(SMALL + 1):
         total += int((size == bits).sum()) << bits

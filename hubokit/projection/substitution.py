@@ -1,7 +1,7 @@
 """Decided auxiliaries replaced by the polynomials of their guards, by array work.
 
-A rule y = g(guards) is a truth table; its polynomial has at most 2**g products. Rounds are undone last first, so that the
-polynomial put in for y may hold auxiliaries of earlier rounds, which are replaced in their turn.
+A rule y = g(guards) is a truth table; its polynomial has at most 2**g products. Rounds are undone last first,
+so that the polynomial put in for y may hold auxiliaries of earlier rounds, which are replaced in their turn.
 """
 
 from __future__ import annotations

@@ -1,8 +1,9 @@
 """Small clusters by tables: the minimum over the auxiliaries for every setting of the touched variables.
 
-For each setting of the touched variables (in lift order) the table holds the least energy of the cluster, the number of
-auxiliary settings that reach it, and the least strictly positive excess of the others. The minimum becomes a polynomial
-by the Moebius transform (booleans) or the Walsh-Hadamard transform (spins, with a factor 2**d that is carried exactly).
+For each setting of the touched variables (in lift order) the table holds the least energy of the cluster, the
+number of auxiliary settings that reach it, and the least strictly positive excess of the others. The minimum
+becomes a polynomial by the Moebius transform (booleans) or the Walsh-Hadamard transform (spins, with a factor
+2**d that is carried exactly).
 """
 
 from __future__ import annotations

@@ -87,7 +87,8 @@ def make_model() -> Callable[..., tuple[Hamiltonian, tuple[str, ...]]]:
 
 
 def random_chain(seed: int, domain: str) -> tuple[Hamiltonian, tuple[str, ...]]:
-    """Products of random pairs, of originals or of products made before, with random penalties, some of them too weak.
+    """Products of random pairs, of originals or of products made before, with random penalties, some of them
+    too weak.
 
     Every product enters the model with a random weight, and products are coupled to originals and to each other.
     """
