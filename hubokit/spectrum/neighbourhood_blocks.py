@@ -1,4 +1,4 @@
-"""Looking around given states by asking for the energies of blocks of states: slow, plain, for energies of any kind."""
+"""Looking around given states by asking for the energies of blocks of states: slow, plain, for any kind of energy."""
 
 from __future__ import annotations
 

@@ -1,10 +1,10 @@
 """Compiled walk over the flip sets around a centre, nothing else: importing this file loads numba.
 
 The walk goes down the flip sets in lexicographic order, all flips but the last one by one (the *prefix*), the last
-one as a vector: for a prefix A with energy e the vector V holds, for every later variable k, the change when k is flipped
-too, so that ``e + V[k]`` are the energies of all states A + {k}. Lengthening the prefix by i adds the row of second
-derivatives of i to V, and the few rows of higher derivatives in i and members of the prefix, which are found in the
-trie of `hubokit.spectrum.recentring`.
+one as a vector: for a prefix A with energy e the vector V holds, for every later variable k, the change when k is
+flipped too, so that ``e + V[k]`` are the energies of all states A + {k}. Lengthening the prefix by i adds the row of
+second derivatives of i to V, and the few rows of higher derivatives in i and members of the prefix, which are found
+in the trie of `hubokit.spectrum.recentring`.
 """
 
 from __future__ import annotations

@@ -14,7 +14,7 @@ and only their coefficients are worked out again for every centre.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache, cached_property
 from itertools import combinations
 from math import comb
@@ -235,6 +235,7 @@ class Recentred:
     Parameters
     ----------
     trie : Trie
+        Without the places of the terms in it, which only re-centring needs.
     values : integer array, shape (nodes,)
         D(U) of every node.
     rows : integer array, shape (n, n) or (0, 0)
@@ -251,11 +252,11 @@ def recentred(
 ) -> Recentred:
     """The polynomial around one centre; parameters as for `flip_coefficients`."""
     values = flip_coefficients(trie, blocks, centre, domain, kind)
-    size = trie.size
+    size, bare = trie.size, replace(trie, index=())
     if trie.depth < 2 or size > DENSE_ROWS or (trie.end[size] - trie.begin[1]) * 16 < size * size:
-        return Recentred(trie, values, np.zeros((0, 0), kind))
+        return Recentred(bare, values, np.zeros((0, 0), kind))
     first, stop = trie.begin[1], trie.end[size]
     rows: NDArray[Any] = np.zeros((size, size), kind)
     owner = np.repeat(np.arange(size), trie.end[1 : size + 1] - trie.begin[1 : size + 1])
     rows[owner, trie.last[first:stop]] = values[first:stop]
-    return Recentred(trie, values, rows)
+    return Recentred(bare, values, rows)
