@@ -2,14 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from fractions import Fraction
 from itertools import combinations, product
 from math import comb
+from operator import mul
 from typing import Any
 
+from hubokit.validation.audit_branching import least_and_count
 from hubokit.validation.audit_polynomials import Key, Poly, TooLarge, add, interpolated, settings, values_of
 from hubokit.validation.audit_proof import MOST_BITS, Proof, Rejected, binary, positions_in
+
+#: Auxiliaries of one cluster whose settings are all listed, those that branch and bound is tried on, touched
+#: variables.
+ENUMERATED, MOST_BRANCHED, MOST_TOUCHED = 6, 64, 16
 
 
 def _clusters(proof: Proof, step: Mapping[str, Any], variables: int) -> list[tuple[int, int, Key, Key]]:
@@ -49,16 +55,27 @@ def _expected(shape: Mapping[str, Any], factor: int, members: Key, coupling: Any
     return expected
 
 
-def _minima(proof: Proof, fields: list[int], between: Any) -> tuple[int, int]:
-    """Least energy over the auxiliaries' settings and the number of settings that reach it."""
-    values = values_of(proof.domain)
-    energies = []
-    proof.spend((1 << len(fields)) * (len(fields) + len(between)) // 4 + 1)
-    for setting in settings(len(fields)):
-        v = [values[bit] for bit in setting]
-        inner = sum(w * v[i] * v[k] for i, k, w in between)
-        energies.append(inner + sum(f * s for f, s in zip(fields, v, strict=True)))
-    return min(energies), energies.count(min(energies))
+def _minima(proof: Proof, rows: list[list[int]], between: Any, size: int) -> Iterator[tuple[int, int]]:
+    """Least energy over the auxiliaries' settings and how many settings reach it, for each row of fields."""
+    if size <= ENUMERATED:
+        values = values_of(proof.domain)
+        all_settings = [[values[bit] for bit in setting] for setting in settings(size)]
+        inner = [sum(w * v[i] * v[k] for i, k, w in between) for v in all_settings]
+        proof.spend(len(inner) * (len(between) + len(rows) * size))
+        for fields in rows:
+            energies = [e + sum(map(mul, fields, v)) for e, v in zip(inner, all_settings, strict=True)]
+            yield min(energies), energies.count(min(energies))
+        return
+    quadratic = [[0] * size for _ in range(size)]
+    spin = proof.domain == "spin"
+    for i, k, w in between:
+        quadratic[i][k] = quadratic[k][i] = 4 * w if spin else w
+    around = [sum(row) // 4 if spin else 0 for row in quadratic]
+    base = sum(w for _, _, w in between) if spin else 0
+    for fields in rows:
+        linear = [-2 * (f + q) for f, q in zip(fields, around, strict=True)] if spin else fields
+        low, count = least_and_count(linear, quadratic, proof.spend)
+        yield low + (base + sum(fields) if spin else 0), count
 
 
 def _listed(value: Any, count: int) -> list[int]:
@@ -67,11 +84,15 @@ def _listed(value: Any, count: int) -> list[int]:
 
 def _checked(proof: Proof, shape: Mapping[str, Any], rows: list[list[int]]) -> list[int]:
     """A shape's minima and multiplicities, one for each row of the auxiliaries' fields; returns the latter."""
+    size = len(rows[0]) if rows else 0
+    if len({(i, k) for i, k, _ in shape["between"] if 0 <= i < k < size}) < len(shape["between"]):
+        raise Rejected("couplings among the auxiliaries repeat or are out of range")
     minimum, counts = shape["minimum"], _listed(shape["multiplicity"], len(rows))
     if len(minimum) != len(rows) or len(counts) != len(rows):
         raise Rejected("a table is not as long as its settings")
-    for number, fields in enumerate(rows):
-        if _minima(proof, fields, shape["between"]) != (minimum[number], counts[number]):
+    found = _minima(proof, rows, shape["between"], size)
+    for number, pair in enumerate(found):
+        if pair != (minimum[number], counts[number]):
             raise Rejected(f"a table is wrong at entry {number}")
     return counts
 
@@ -89,8 +110,8 @@ def tables_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
     checked = []
     for shape in step["shapes"]:
         a, d = len(shape["field"]), len(shape["coupling"][0]) if shape["coupling"] else 0
-        if a + d > MOST_BITS:
-            raise TooLarge(f"a table over {a + d} variables")
+        if d > MOST_TOUCHED or a > MOST_BRANCHED:
+            raise TooLarge(f"a table of {a} auxiliaries over {d} variables")
         pairs = list(zip(shape["field"], shape["coupling"], strict=True))
         rows = [
             [f + sum(c * values[b] for c, b in zip(row, t, strict=True)) for f, row in pairs] for t in settings(d)
@@ -112,7 +133,7 @@ def counting_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None
     for shape in step["shapes"]:
         sizes = [len(columns) for columns in shape["classes"]]
         grid = list(product(*(range(size + 1) for size in sizes)))
-        if len(grid) > 2**MOST_BITS or len(shape["field"]) > MOST_BITS:
+        if len(grid) > 2**MOST_BITS or len(shape["field"]) > MOST_BRANCHED:
             raise TooLarge(f"counts of {len(grid)} kinds")
         if sorted(j for columns in shape["classes"] for j in columns) != list(range(len(shape["signs"]))):
             raise Rejected("the classes do not part the columns")
@@ -185,7 +206,7 @@ def _weight(domain: str, d: int, j: int, k: int) -> Any:
 def states_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
     members, touched = positions_in(step["auxiliaries"], variables), positions_in(step["touched"], variables)
     proof.fresh(members)
-    if len(members) + len(touched) > MOST_BITS:
+    if len(touched) > MOST_TOUCHED or len(members) > MOST_BRANCHED:
         raise TooLarge(f"a cluster of {len(members)} auxiliaries and {len(touched)} touched variables")
     if not proof.settled(touched) or set(touched) & set(members):
         raise Rejected("a cluster touches a variable that is not settled")
@@ -196,7 +217,8 @@ def states_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
     place = {x: j for j, x in enumerate(touched)}
     if any(len(key) > 2 or not set(key) <= {*members, *touched} for key in held):
         raise Rejected("a cluster leaves out a variable that it touches")
-    between = [[slot[key[0]], slot[key[1]], w] for key, w in held.items() if len(key) == 2 and set(key) <= set(slot)]
+    pairs = {key: w for key, w in held.items() if len(key) == 2 and set(key) <= set(slot)}
+    between = [[*sorted((slot[i], slot[k])), w] for (i, k), w in pairs.items()]
     values = values_of(proof.domain)
     rows = []
     for t in settings(len(touched)):

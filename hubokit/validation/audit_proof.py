@@ -9,7 +9,7 @@ from typing import Any
 from hubokit.validation.audit_polynomials import Key, Poly, TooLarge, add, add_product, interpolated, values_of
 
 #: Elementary operations that one certificate may take.
-MOST_WORK = 2**25
+MOST_WORK = 2**29
 #: Guards of one auxiliary, bits of one table, and entries of any one list.
 MOST_GUARDS, MOST_BITS, MOST_ENTRIES = 12, 20, 4_000_000
 

@@ -1,0 +1,290 @@
+"""The second checker: it accepts every honest verdict and rejects each of a set of forged ones."""
+
+import ast
+import copy
+from dataclasses import replace
+from fractions import Fraction
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+import hubokit.validation.audit as audit_module
+from hubokit.errors import InputError
+from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.reduction.reduce import reduce
+from hubokit.reduction.result import Reduction
+from hubokit.validation.audit import audit
+from hubokit.validation.audit_models import digest, read_model
+from hubokit.validation.audit_polynomials import interpolated, least
+from hubokit.validation.check import check
+
+
+@pytest.fixture(scope="module")
+def audited(by_hand):
+    def run(reduction, change=None, verdict=None):
+        fields = by_hand["written"](check(reduction) if verdict is None else verdict)
+        if change is not None:
+            change(fields)
+        return audit(fields, by_hand["document"](reduction.source), by_hand["document"](reduction.model))
+
+    return run
+
+
+def chained(seed=0, thirds=14):
+    """A pair variable in many cubic terms: too many touched variables for a table, decided by its two guards."""
+    rng = np.random.default_rng(seed)
+    names = [f"t{i}" for i in range(thirds)]
+    weights = [int(w) for w in rng.integers(1, 6, thirds) * rng.choice([-1, 1], thirds)]
+    E = Hamiltonian({("a", "b", t): w for t, w in zip(names, weights, strict=True)}, "boolean")
+    M = 1 + sum(abs(w) for w in weights)
+    terms = {("y", t): w for t, w in zip(names, weights, strict=True)}
+    terms |= {("a", "b"): M, ("a", "y"): -2 * M, ("b", "y"): -2 * M, ("y",): 3 * M}
+    return Reduction(E, Hamiltonian(terms, "boolean", labels=["a", "b", *names, "y"]), ["y"])
+
+
+def symmetric(size):
+    """A negative monomial of many variables with one tie-free auxiliary: settled by counting."""
+    names = [f"x{i}" for i in range(size)]
+    terms = {("y",): 2 * size - 1} | {(x, "y"): -2 for x in names}
+    return Reduction(Hamiltonian({tuple(names): -1}, "boolean"), Hamiltonian(terms, "boolean"), ["y"])
+
+
+def step_kinds(reduction, by_hand):
+    (piece,) = [p for p in by_hand["written"](check(reduction))["evidence"] if p["kind"] == "projection"]
+    return {step["step"] for step in piece["certificate"]["steps"]}
+
+
+class TestHonestVerdicts:
+    def test_tables_counting_and_guards_are_followed(self, by_hand, audited):
+        made = {
+            "tables": by_hand["cubic"](strict=True),
+            "guards": chained(),
+            "counting": symmetric(60),
+        }
+        for kind, reduction in made.items():
+            assert kind in step_kinds(reduction, by_hand)
+            report = audited(reduction)
+            assert report.accepted, str(report)
+            assert report.exit_code == 0
+
+    @pytest.mark.parametrize("method", ["auto", "pair-cover", "term-by-term"])
+    def test_our_own_reductions_of_a_four_local_spin_model_are_accepted(self, by_hand, audited, method):
+        for size in (8, 12):
+            report = audited(reduce(by_hand["autocorrelation"](size), method=method))
+            assert report.accepted, str(report)
+
+    def test_refutations_are_re_checked_too(self, by_hand, audited):
+        for reduction in (by_hand["cubic"](strict=False), by_hand["rosenberg"](1)):
+            report = audited(reduction)
+            assert report.accepted, str(report)
+
+    def test_both_domains_both_conventions_and_every_origin(self, audited):
+        for convention in ("1-2x", "2x-1"):
+            E = Hamiltonian({("a", "b"): 1, ("c",): 2, (): "1/3"}, "spin", convention=convention)
+            moved = E.substituted({"a": ("not", "p"), "b": "q"}).in_domain("boolean")
+            assert audited(Reduction(E, moved, [], origin={"a": ("not", "p"), "b": "q"})).accepted
+            fixed = E.substituted({"a": 1, "b": "c"})
+            assert audited(Reduction(E, fixed, [], origin={"a": 1, "b": "c"})).accepted
+
+    def test_found_scale_and_shift_are_sought_again(self, by_hand, audited):
+        made = by_hand["cubic"](strict=True)
+        assert audited(replace(made, model=Fraction(5, 2) * made.model - 1)).accepted
+
+    def test_a_large_exhaustion_is_not_re_checked_and_not_accepted(self, by_hand, audited):
+        rng = np.random.default_rng(1)
+        pairs = np.array([(i, j) for i in range(18) for j in range(i)])
+        E = Hamiltonian.from_arrays([pairs], [rng.integers(-3, 4, len(pairs))], "spin", size=18)
+        reduction = Reduction(E, E, [])
+        report = audited(reduction, verdict=check(reduction, evidence="exhaustion"))
+        assert {item.result for item in report.items if item.name == "ground-states"} == {"not re-checked"}
+        assert "2^18" in str(report)
+        assert not report.accepted
+        assert not report.rejected
+        assert report.exit_code == 3
+
+    def test_tested_claims_are_not_accepted(self, by_hand, audited):
+        made = by_hand["cubic"](strict=True)
+        report = audited(made, verdict=check(made, evidence="neighbourhood", radius=1))
+        assert report.exit_code == 3
+
+
+def projection_piece(fields):
+    return next(piece for piece in fields["evidence"] if piece["kind"] == "projection")
+
+
+def first_step(fields, kind):
+    return next(step for step in projection_piece(fields)["certificate"]["steps"] if step["step"] == kind)
+
+
+def raise_claim(fields):
+    fields["claims"]["one-to-one"].update(status="proved", witness=None)
+
+
+def lower_claim(fields):
+    fields["claims"]["ground-states"]["status"] = "refuted"
+
+
+def swap_digest(fields):
+    fields["source_digest"] = fields["model_digest"]
+
+
+def change_scale(fields):
+    fields["scale"] = "2"
+
+
+def alter_table(fields):
+    first_step(fields, "tables")["shapes"][0]["minimum"][3] += 1
+
+
+def alter_multiplicity(fields):
+    first_step(fields, "tables")["shapes"][0]["multiplicity"] = 1
+    projection_piece(fields)["certificate"]["multiplicity"] = 1
+
+
+def alter_witness(fields):
+    fields["claims"]["one-to-one"]["witness"]["source_energy"] = "17"
+
+
+def drop_auxiliary(fields):
+    fields["evidence"][0]["auxiliaries"] = []
+    fields["evidence"][0]["origin"] = {}
+
+
+def negate_factor(fields):
+    first_step(fields, "tables")["clusters"][0][1] = -1
+
+
+class TestForgedVerdicts:
+    @pytest.mark.parametrize(
+        "forge",
+        [
+            raise_claim,
+            lower_claim,
+            swap_digest,
+            change_scale,
+            alter_table,
+            alter_multiplicity,
+            alter_witness,
+            negate_factor,
+        ],
+    )
+    def test_a_forged_verdict_on_a_gadget_with_ties_is_rejected(self, by_hand, audited, forge):
+        made = by_hand["cubic"](strict=False)
+        assert audited(made).accepted
+        assert audited(made, forge).rejected
+
+    def test_auxiliaries_passed_off_as_originals_are_bad_input(self, by_hand, audited):
+        with pytest.raises(InputError, match="originals"):
+            audited(by_hand["cubic"](strict=False), drop_auxiliary)
+
+    @pytest.mark.parametrize("forge", ["margin", "function", "guards", "missing", "twice", "order"])
+    def test_a_forged_guard_is_rejected(self, audited, forge):
+        def change(fields):
+            step = first_step(fields, "guards")
+            certificate = projection_piece(fields)["certificate"]
+            if forge == "margin":
+                step["margins"][0] += 1
+            elif forge == "function":
+                step["functions"][0] = "0000"
+            elif forge == "guards":
+                step["guards"][0] = [0, 2]
+            elif forge == "missing":
+                certificate["steps"] = []
+            elif forge == "twice":
+                certificate["steps"].append(copy.deepcopy(step))
+            else:
+                step["guards"][0] = [step["auxiliaries"][0], 0]
+
+        made = chained()
+        assert audited(made).accepted
+        assert audited(made, change).rejected
+
+    def test_a_weak_penalty_passed_off_as_strong_is_rejected(self, by_hand, audited):
+        strong, weak = chained(), chained()
+        terms = dict(weak.model.terms())
+        for key in terms:
+            if set(key) <= {"a", "b", "y"}:
+                terms[key] = terms[key] / 8
+        weak = replace(weak, model=Hamiltonian(terms, "boolean", labels=weak.model.labels))
+        fields = by_hand["written"](check(strong))
+        fields["model_digest"] = weak.model.digest
+        report = audit(fields, by_hand["document"](weak.source), by_hand["document"](weak.model))
+        assert report.rejected
+
+    @pytest.mark.parametrize("place", ["minimum", "signs", "classes", "coupling"])
+    def test_a_forged_count_is_rejected(self, audited, place):
+        def change(fields):
+            shape = first_step(fields, "counting")["shapes"][0]
+            if place == "minimum":
+                shape["minimum"][-1] -= 1
+            elif place == "signs":
+                shape["signs"][0] = -1
+            elif place == "classes":
+                shape["classes"][0] = shape["classes"][0][1:]
+            else:
+                shape["coupling"][0][0] -= 1
+
+        assert audited(symmetric(24), change).rejected
+
+    def test_tables_of_hostile_size_are_not_worked_through(self, audited):
+        def many(fields):
+            shape = first_step(fields, "counting")["shapes"][0]
+            shape["field"], shape["coupling"] = [1] * 300, [[1]] * 300
+
+        def wide(fields):
+            shape = {"field": [0], "coupling": [[0] * 40], "between": [], "minimum": [0], "multiplicity": 1}
+            steps = [{"step": "tables", "shapes": [shape], "clusters": []}]
+            projection_piece(fields)["certificate"]["steps"] = steps
+
+        for change in (many, wide):
+            report = audited(symmetric(24), change)
+            assert not report.rejected
+            assert "not re-checked" in str(report)
+            assert not report.accepted
+
+    @pytest.mark.parametrize("fields", [{}, {"evidence": []}, {"evidence": 3}])
+    def test_what_is_no_verdict_is_bad_input(self, by_hand, fields):
+        made = by_hand["cubic"](strict=True)
+        with pytest.raises(InputError):
+            audit(fields, by_hand["document"](made.source), by_hand["document"](made.model))
+
+
+def test_the_audit_computes_the_same_digest_from_the_document_alone(by_hand):
+    for H in (
+        Hamiltonian({("b", "a"): "1/2", ("é",): 10**30, (): -3}, "spin"),
+        Hamiltonian({("x10", "x9", "x1"): -2, ("x9",): "4/6"}, "boolean"),
+    ):
+        assert digest(read_model(by_hand["document"](H))) == H.digest
+
+
+def test_tables_turn_into_polynomials_by_the_definition():
+    assert interpolated([1, 2, 3, 5], (7, 9), "boolean") == {(): 1, (9,): 1, (7,): 2, (7, 9): 1}
+    assert interpolated([1, 1, 1, -1], (0, 1), "spin") == {
+        (): Fraction(1, 2),
+        (1,): Fraction(1, 2),
+        (0,): Fraction(1, 2),
+        (0, 1): Fraction(-1, 2),
+    }
+
+
+def test_the_least_value_of_a_sum_is_found_bit_by_bit():
+    rng = np.random.default_rng(0)
+    for _ in range(20):
+        functions = [
+            (tuple(sorted(rng.choice(6, 3, replace=False).tolist())), rng.integers(-9, 9, 8).tolist())
+            for _ in range(5)
+        ]
+        states = [[n >> (5 - i) & 1 for i in range(6)] for n in range(64)]
+        sums = [sum(table[int("".join(str(x[b]) for b in bits), 2)] for bits, table in functions) for x in states]
+        assert least(functions) == min(sums)
+
+
+def test_the_audit_imports_nothing_of_hubokit_but_itself_and_the_errors():
+    for path in Path(audit_module.__file__).parent.glob("audit*.py"):
+        tree = ast.parse(path.read_text())
+        names = {node.module for node in ast.walk(tree) if isinstance(node, ast.ImportFrom)}
+        names |= {alias.name for node in ast.walk(tree) if isinstance(node, ast.Import) for alias in node.names}
+        ours = {name for name in names if name.startswith("hubokit")}
+        assert all(name == "hubokit.errors" or name.startswith("hubokit.validation.audit") for name in ours)
+        assert not names & {"numpy", "scipy", "networkx"}
