@@ -24,6 +24,9 @@ guards
     against the same F'. Not ``eliminate``: the guards are originals or known before, and the auxiliaries
     become known. ``eliminate``: the auxiliaries are replaced in F' one after the other in the listed order; a
     guard may be an auxiliary that is still in F'.
+weak guards
+    As guards with ``eliminate``, but the field may be 0 as well, on the side where the bit is right: P is
+    right, the multiplicity not known.
 shared
     ``auxiliaries``, ``guards``, ``functions``, ``shares``, ``slacks``: decided together, see
     `hubokit.projection.shared_bounds`. ``shares`` is "equal" or a list of ``[i, k, bit of i, bit of k,
@@ -103,7 +106,9 @@ def _name(step: Step) -> str:
         return "counting" if step.method == "counting" else "tables"
     if isinstance(step, Listed):
         return "states"
-    return "shared" if isinstance(step, SharedStep) else "guards"
+    if isinstance(step, SharedStep):
+        return "shared"
+    return "guards" if step.least_margin else "weak guards"
 
 
 def _auxiliaries(step: Step) -> int:
@@ -143,7 +148,7 @@ def _written(step: Step, domain: str) -> dict[str, Any]:
     rows = _rules(step.rules)
     margins = rows.pop("margins")
     if isinstance(step, RuleStep):
-        return {"step": "guards", "eliminate": step.at_once, **rows, "margins": margins}
+        return {"step": _name(step), "eliminate": step.at_once, **rows, "margins": margins}
     shares = [[i, k, r, s, format_fraction(Fraction(part, PARTS))] for i, k, r, s, part in step.shares]
     return {"step": "shared", **rows, "shares": shares or "equal", "slacks": margins}
 

@@ -36,11 +36,14 @@ class Chain:
         In the order of the proof: whether the auxiliaries were put in at once, and their rules.
     left : int64 array
         Auxiliaries that stayed undecided.
+    least_margin : 1 or 0
+        With 0 the settings are best ones, but maybe not the only ones.
     """
 
     polynomial: Gathered
     steps: list[tuple[bool, list[Rules]]] = field(default_factory=list)
     left: Positions = field(default_factory=lambda: np.zeros(0, np.int64))
+    least_margin: int = 1
 
     def rounds(self) -> list[list[Rules]]:
         """Rules in an order in which every guard is known before it is asked for."""
@@ -49,7 +52,7 @@ class Chain:
         return known + replaced[::-1]
 
 
-def eliminate(structure: Structure, waiting: Positions, known: Integers) -> Chain:
+def eliminate(structure: Structure, waiting: Positions, known: Integers, least_margin: int = 1) -> Chain:
     """Eliminate auxiliaries in turn as far as interval bounds go.
 
     Parameters
@@ -59,6 +62,9 @@ def eliminate(structure: Structure, waiting: Positions, known: Integers) -> Chai
         Auxiliaries to decide; together they make whole clusters apart from known ones.
     known : bool array, shape (n,)
         Originals and auxiliaries already decided.
+    least_margin : 1 or 0
+        With 0 a field that is nowhere of the wrong sign decides, too: the setting is one of the best, P is
+        right, but ties are not counted. The auxiliaries are then all put in at once.
 
     Returns
     -------
@@ -72,19 +78,19 @@ def eliminate(structure: Structure, waiting: Positions, known: Integers) -> Chai
         (waiting[:, None], structure.field[waiting]),
         (structure.ends[kept], structure.weights[kept]),
     ]
-    chain = Chain(Gathered(structure.domain))
+    chain = Chain(Gathered(structure.domain), least_margin=least_margin)
     chain.polynomial.add(parts)
     chain.polynomial.merge()
     known = known.copy()
     while len(waiting):
         fields = _fields(chain.polynomial, waiting, size)
-        found = _decisions(fields, waiting, known, structure)
+        found = _decisions(fields, waiting, known, structure, 1) if least_margin else []
         if found:
             chain.steps.append((False, found))
             fresh = np.concatenate([rules.auxiliaries for rules in found])
             known[fresh] = True
         else:
-            found = _in_order(_decisions(fields, waiting, ~np.zeros(size, bool), structure), size)
+            found = _in_order(_decisions(fields, waiting, ~np.zeros(size, bool), structure, least_margin), size)
             if not found:
                 break
             try:
@@ -100,7 +106,7 @@ def eliminate(structure: Structure, waiting: Positions, known: Integers) -> Chai
 
 @dataclass(frozen=True)
 class _Fields:
-    """Local fields as sums of products: entry e adds ``weight[e]`` times the product of ``rest[e]`` (-1: absent) to row e."""
+    """Local fields: entry e adds ``weight[e]`` times the product of ``rest[e]`` (-1: absent) to ``row[e]``."""
 
     row: Positions
     rest: Positions
@@ -127,7 +133,9 @@ def _fields(polynomial: Gathered, waiting: Positions, size: int) -> _Fields:
     return _Fields(np.concatenate(rows), np.concatenate(rests), np.concatenate(weights), polynomial.shift)
 
 
-def _decisions(fields: _Fields, waiting: Positions, usable: Integers, structure: Structure) -> list[Rules]:
+def _decisions(
+    fields: _Fields, waiting: Positions, usable: Integers, structure: Structure, least_margin: int
+) -> list[Rules]:
     """Auxiliaries decided by up to `MOST_GUARDS` of the usable variables."""
     order, starts = _ranked(fields, len(waiting), usable)
     available = starts[1:] - starts[:-1]
@@ -138,7 +146,7 @@ def _decisions(fields: _Fields, waiting: Positions, usable: Integers, structure:
         if not len(left):
             break
         guards = order[starts[left][:, None] + np.arange(g)]
-        rules = _decided(fields, left, waiting[left], guards, structure.domain)
+        rules = _decided(fields, left, waiting[left], guards, structure.domain, least_margin)
         if len(rules):
             found.append(rules)
             left = left[~np.isin(waiting[left], rules.auxiliaries)]
@@ -161,7 +169,9 @@ def _ranked(fields: _Fields, count: int, usable: Integers) -> tuple[Positions, P
     return keys[order] % size, np.searchsorted(keys[order] // size, np.arange(count + 1))
 
 
-def _decided(fields: _Fields, rows: Positions, auxiliaries: Positions, guards: Positions, domain: str) -> Rules:
+def _decided(
+    fields: _Fields, rows: Positions, auxiliaries: Positions, guards: Positions, domain: str, least_margin: int
+) -> Rules:
     """Which of these rows their guards decide."""
     g = guards.shape[1]
     index = np.full(int(rows.max()) + 1, -1)
@@ -187,7 +197,8 @@ def _decided(fields: _Fields, rows: Positions, auxiliaries: Positions, guards: P
         else:
             np.add.at(low, row, factor * np.where(is_free, below, weight))
             np.add.at(high, row, factor * np.where(is_free, above, weight))
-        positive, negative = (low > 0), (high < 0)
+        positive = low >= least_margin
+        negative = ~positive & (high <= -least_margin)
         good &= positive | negative
         if not good.any():
             break

@@ -24,10 +24,18 @@ class RuleStep:
     at_once : bool
         Whether the auxiliaries are put in before the next step is judged.
     rules : list of Rules
+    least_margin : 1 or 0
+        With 0 the settings are best ones, but maybe not the only ones.
     """
 
     at_once: bool
     rules: list[Rules]
+    least_margin: int = 1
+
+    @property
+    def name(self) -> str:
+        """Name of the method."""
+        return "guards" if self.least_margin else "guards with ties"
 
 
 @dataclass(frozen=True)
@@ -103,6 +111,11 @@ class Findings:
             if isinstance(step, Settled):
                 yield step, not bool(self.structure.is_auxiliary[step.batch.touched].any())
 
+    @property
+    def is_tie_free_or_counted(self) -> bool:
+        """Whether m is known of every cluster."""
+        return all(step.least_margin > 0 for step in self.steps if isinstance(step, RuleStep))
+
     def listed(self) -> Iterator[Listed]:
         """Clusters minimised state by state."""
         return (step for step in self.steps if isinstance(step, Listed))
@@ -124,8 +137,10 @@ class Findings:
 
     def follow(self, chain: Chain) -> None:
         """Take in auxiliaries eliminated in turn, with what their terms became."""
-        self.rounds.extend(chain.rounds())
-        self.steps.extend(RuleStep(at_once, rules) for at_once, rules in chain.steps)
+        # Where ties are possible the rules are no facts about every minimiser, and nothing but P may rest on them.
+        if chain.least_margin:
+            self.rounds.extend(chain.rounds())
+        self.steps.extend(RuleStep(at_once, rules, chain.least_margin) for at_once, rules in chain.steps)
         polynomial = chain.polynomial
         constant = (np.zeros((1, 0), np.int64), np.array([polynomial.constant], object))
         self.gathered.add([constant, *polynomial.parts], polynomial.shift)

@@ -1,8 +1,8 @@
 """Projection of a quadratic model: P(x) = min over the auxiliaries of F(x, a).
 
-The auxiliaries split into clusters, which `hubokit.projection.stages` settles one way or another, and P is a polynomial. What
-nothing settles is named in `Projection.undecided`, and P is then not claimed; the minimum at given states is
-exact all the same.
+The auxiliaries split into clusters, which `hubokit.projection.stages` settles one way or another, and P is a
+polynomial. What nothing settles is named in `Projection.undecided`, and P is then not claimed; the minimum at
+given states is exact all the same.
 """
 
 from __future__ import annotations
@@ -20,7 +20,7 @@ from numpy.typing import NDArray
 from hubokit.errors import LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.states import States, from_bits, unpack
-from hubokit.projection.findings import Findings, Listed, RuleStep
+from hubokit.projection.findings import Findings, Listed, SharedStep
 from hubokit.projection.minimum import Minimiser
 from hubokit.projection.polynomial import Gathered
 from hubokit.projection.result import ClusterSummary, GapBound, least
@@ -115,7 +115,7 @@ class Projection:
         return GapBound(int(positive.min()) * self.model.resolution, found.exact)
 
     def multiplicity_witness(self) -> States | None:
-        """A state of the originals (1, originals) with more than one best auxiliary setting, where tables show one."""
+        """A state of the originals (1, originals) with several best auxiliary settings, where tables show one."""
         structure = self.findings.structure
         for settled, consistent in self.findings.settled():
             shape = settled.shape
@@ -189,6 +189,8 @@ def _projection(findings: Findings) -> Projection:
             bounds.append(GapBound(int(margin) * model.resolution, attained))
     # Nothing but wholeness is known of the gap of a cluster that was searched state by state.
     bounds.extend(GapBound(model.resolution, False) for _ in findings.listed())
+    if not findings.is_tie_free_or_counted:
+        bounds.append(GapBound(model.resolution, False))
     is_settled = not findings.undecided
     return Projection(
         model,
@@ -196,7 +198,7 @@ def _projection(findings: Findings) -> Projection:
         tuple(model.labels[i] for i in structure.originals),
         polynomial,
         (*findings.undecided, *too_large),
-        _uniform(findings) if is_settled else None,
+        _uniform(findings) if is_settled and findings.is_tie_free_or_counted else None,
         least(bounds) if is_settled else None,
         _summaries(findings),
         findings,
@@ -247,7 +249,7 @@ def _summaries(findings: Findings) -> tuple[ClusterSummary, ...]:
         if isinstance(step, Listed):
             counted["single states", len(step.auxiliaries), len(step.touched)] += 1
         elif not isinstance(step, Settled):
-            method = "guards" if isinstance(step, RuleStep) else "shared bounds"
+            method = "shared bounds" if isinstance(step, SharedStep) else step.name
             for one in step.rules:
                 counted[method, 1, one.g] += len(one)
     return tuple(ClusterSummary(method, number, a, d) for (method, a, d), number in sorted(counted.items()))

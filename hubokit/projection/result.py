@@ -36,7 +36,7 @@ class ClusterSummary:
     Parameters
     ----------
     method : str
-        "table", "counting", "guards", "shared bounds" or "search".
+        "table", "counting", "guards", "guards with ties", "shared bounds" or "single states".
     count : int
         Number of clusters (for guards: of auxiliaries).
     auxiliaries, touched : int
@@ -49,7 +49,7 @@ class ClusterSummary:
     touched: int
 
     def __str__(self) -> str:
-        if self.method in ("guards", "shared bounds"):
+        if self.method in ("guards", "guards with ties", "shared bounds"):
             return f"{self.count:,} auxiliaries decided by {self.touched} guards each ({self.method})"
         return (
             f"{self.count:,} clusters of {self.auxiliaries} auxiliaries over {self.touched} variables ({self.method})"

@@ -27,7 +27,7 @@ ROWS = 4096
 
 @dataclass(frozen=True)
 class Found:
-    """Minimum at each of m states: energy above all bits 0, number of best settings, the first of them in lift order."""
+    """Minimum at each of m states: energy above all bits 0, number of best settings, the first in lift order."""
 
     energy: Integers
     multiplicity: Integers

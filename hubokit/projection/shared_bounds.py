@@ -69,7 +69,15 @@ class FlipProblem:
 
 @dataclass(frozen=True)
 class Candidate:
-    """Supposed right settings: for each auxiliary its guards (columns of `known`, ascending) and its bits over their settings."""
+    """Supposed right settings.
+
+    Parameters
+    ----------
+    guards : tuple of tuples of int
+        For each auxiliary its guards, as ascending columns of `known`.
+    functions : tuple of int64 arrays, shape (2**g,)
+        Its bits over their settings, in lift order.
+    """
 
     guards: tuple[tuple[int, ...], ...]
     functions: tuple[NDArray[np.int64], ...]
@@ -192,7 +200,7 @@ def better_shares(problem: FlipProblem, candidate: Candidate, rounds: int = 12) 
 
 
 def _programmed(rows: list[tuple[dict[int, int], int]], count: int) -> list[float] | None:
-    """Shares in [0, 1] that maximise t with ``costs @ shares + t <= constant`` in every row; None where t cannot be positive."""
+    """Shares in [0, 1] with the largest t, ``costs @ shares + t <= constant`` in every row; None where t <= 0."""
     from scipy.optimize import linprog
     from scipy.sparse import csr_array
 
@@ -215,7 +223,7 @@ def _programmed(rows: list[tuple[dict[int, int], int]], count: int) -> list[floa
 
 
 def _cases(problem: FlipProblem) -> list[tuple[int, int, int, int]]:
-    """Couplings with the right bits of both ends for which a joint flip gains: q > 0 when they differ, q < 0 when not."""
+    """Couplings with the right bits of both ends for which a joint flip gains: they differ exactly when q > 0."""
     first, second = np.nonzero(np.triu(problem.pair))
     return [
         (int(i), int(k), r, 1 - r if problem.pair[i, k] > 0 else r)

@@ -6,6 +6,7 @@
 4. Auxiliaries eliminated in turn (chains).
 5. Auxiliaries decided together by shared bounds.
 6. Single states, where few originals are behind a cluster of many auxiliaries; then larger tables.
+7. Chains once more, ties allowed: P is found, but not how many settings reach it.
 """
 
 from __future__ import annotations
@@ -79,6 +80,7 @@ def settle(structure: Structure, table_bits: int) -> Findings:
     for cluster in np.flatnonzero(left):
         left[cluster] = not _by_states(findings, found.auxiliaries_of(int(cluster)), table_bits)
     left = _by_shape(findings, found, left, table_bits, TABLE_WORK)
+    left = _by_chains(findings, found, left, least_margin=0)
     _name_undecided(findings, found, left)
     return findings
 
@@ -122,8 +124,10 @@ def _by_shape(
     return left
 
 
-def _by_chains(findings: Findings, found: Components, chosen: NDArray[np.bool_]) -> NDArray[np.bool_]:
-    """Auxiliaries eliminated in turn, for clusters that come out decided whole; returns which of the chosen are left."""
+def _by_chains(
+    findings: Findings, found: Components, chosen: NDArray[np.bool_], least_margin: int = 1
+) -> NDArray[np.bool_]:
+    """Auxiliaries eliminated in turn, for clusters that come out decided whole; returns which are left."""
     structure = findings.structure
     known = findings.known()
     cluster_of = np.full(len(structure.is_auxiliary), -1)
@@ -131,7 +135,7 @@ def _by_chains(findings: Findings, found: Components, chosen: NDArray[np.bool_])
     trying = chosen
     # A second pass leaves out the clusters that stayed open: the terms of one cluster never meet those of another.
     while trying.any():
-        chain = eliminate(structure, found.members[trying[found.cluster]], known)
+        chain = eliminate(structure, found.members[trying[found.cluster]], known, least_margin)
         if not len(chain.left):
             findings.follow(chain)
             return chosen & ~trying

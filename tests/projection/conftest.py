@@ -15,7 +15,7 @@ from hubokit.model.hamiltonian import Hamiltonian
 
 @dataclass(frozen=True)
 class Enumerated:
-    """For each setting of the originals: the minimum, its multiplicity, the first best auxiliaries, the nearest excess."""
+    """For each setting of the originals: minimum, multiplicity, first best auxiliaries, nearest excess."""
 
     states: list[tuple[int, ...]]
     minimum: list[Fraction]

@@ -1,4 +1,4 @@
-"""A certificate is enough for the second checker: it follows every step in plain integers and arrives at the same P."""
+"""A certificate is enough for the second checker: it follows every step in plain integers to the same P."""
 
 from __future__ import annotations
 
@@ -49,7 +49,7 @@ def test_every_certificate_of_products_of_products_leads_to_its_polynomial(monke
     for seed in range(80):
         model, auxiliaries = make_chain(seed, domain)
         P = project(model, auxiliaries, table_bits=20 if seed % 2 else 0)
-        if P.polynomial is not None:
+        if P.polynomial is not None and P.findings.is_tie_free_or_counted:
             kinds |= assert_certificate_is_enough(P)
     assert {"guards", "tables"} <= kinds
 

@@ -149,3 +149,40 @@ def test_a_chain_of_pairs_is_decided_link_by_link(monkeypatch):
     P = project(F, auxiliaries, table_bits=4)
     assert P.polynomial == Hamiltonian({tuple(f"x{k}" for k in range(30)): -1}, domain="boolean")
     assert P.uniform_multiplicity == 1
+
+
+def common_part(count, extra):
+    """Negative products that share x, each with its own auxiliary z behind y; y is tied where `extra` is 0."""
+    terms = {("y",): -extra, ("x", "y"): count + extra}
+    for k in range(count):
+        z, first, second = f"z{k}", f"a{k}", f"b{k}"
+        for key, c in (((z,), 5), ((z, "y"), -2), ((z, first), -2), ((z, second), -2)):
+            terms[key] = terms.get(key, 0) + c
+    return Hamiltonian(terms, domain="boolean"), ["y", *(f"z{k}" for k in range(count))]
+
+
+def test_terms_with_a_common_part_are_proved_and_ties_only_cost_the_multiplicity():
+    tied, auxiliaries = common_part(15, 0)
+    P = project(tied, auxiliaries)
+    assert P.polynomial is not None
+    assert P.uniform_multiplicity is None
+    assert {summary.method for summary in P.clusters} == {"guards with ties"}
+    rng = np.random.default_rng(4)
+    states = np.vstack([rng.integers(0, 2, (40, len(P.originals))), np.ones((1, len(P.originals)), int)])
+    energies, _, multiplicities = P.minimum(states)
+    assert [P.polynomial.energy(row) for row in states] == [int(k) for k in energies]
+    assert set(multiplicities) > {1}
+    assert not P.gap_everywhere.exact
+
+
+@pytest.mark.parametrize("domain", ["spin", "boolean"])
+def test_chains_with_ties_give_the_right_polynomial(monkeypatch, make_chain, enumerated, domain):
+    monkeypatch.setattr(module, "SMALL", -1)
+    monkeypatch.setattr(module, "decide", lambda structure, candidates: [])
+    monkeypatch.setattr(module, "_by_shared_bounds", lambda *given: False)
+    tied = 0
+    for seed in range(100):
+        model, auxiliaries = make_chain(seed, domain)
+        P = assert_projection_is_true(model, auxiliaries, enumerated, table_bits=0)
+        tied += any(summary.method == "guards with ties" for summary in P.clusters)
+    assert tied >= 2

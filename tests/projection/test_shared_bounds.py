@@ -74,7 +74,7 @@ def random_pairs(seed, domain):
 def test_what_shared_bounds_prove_of_random_pair_models_is_true(monkeypatch, enumerated, domain):
     monkeypatch.setattr(stages, "SMALL", -1)
     monkeypatch.setattr(stages, "decide", lambda structure, candidates: [])
-    monkeypatch.setattr(stages, "_by_chains", lambda findings, found, chosen: chosen)
+    monkeypatch.setattr(stages, "_by_chains", lambda findings, found, chosen, least_margin=1: chosen)
     outcomes = []
     for seed in range(60):
         model, auxiliaries = random_pairs(seed, domain)
@@ -104,7 +104,7 @@ def test_unequal_shares_raise_the_least_slack(make_low_autocorrelation):
 
 
 def test_slacks_are_never_above_the_true_excess_of_single_flips(make_low_autocorrelation):
-    model, auxiliaries, source = make_low_autocorrelation(6, Fraction("0.7"))
+    model, auxiliaries, _ = make_low_autocorrelation(6, Fraction("0.7"))
     figures = shared_bound_slacks(model, auxiliaries)
     bits = (np.arange(64)[:, None] >> np.arange(5, -1, -1)) & 1
     right = np.array([[row[int(y[1:3])] * row[int(y[4:6])] for y in auxiliaries] for row in bits])
