@@ -326,21 +326,26 @@ def walk_energies(  # type: ignore[no-untyped-def]
         cursor[2] = 0
 
 
-@njit(**_INLINE)
+@njit(**_OPTIONS)
 def _keep_within(kept, d, least, most):  # type: ignore[no-untyped-def]
+    kind = kept.dtype.type
     for i in range(d.shape[0]):
-        kept[i] = kept[i] if least <= d[i] <= most else 0
+        kept[i] = kind(kept[i] & (kind(least <= d[i]) & kind(d[i] <= most)))
 
 
-@njit(**_INLINE)
+@njit(**_OPTIONS)
 def _keep_low_flips(kept, e):  # type: ignore[no-untyped-def]
-    reach = 1
-    while reach < e.shape[0]:
-        for start in range(0, e.shape[0], 2 * reach):
-            for i in range(start, start + reach):
-                kept[i] = kept[i] if e[i] <= e[i + reach] else 0
-                kept[i + reach] = kept[i + reach] if e[i + reach] <= e[i] else 0
-        reach *= 2
+    """Every pair at distance `reach`, also those that differ in more than one bit: whole vectors, masked.
+
+    The places are unsigned: a signed one might be negative and count from the end, and nothing would be vectorised.
+    """
+    kind, size, reach = kept.dtype.type, np.uint64(e.shape[0]), np.uint64(1)
+    while reach < size:
+        for i in range(size - reach):
+            kept[i] = kind(kept[i] & (kind(e[i] <= e[i + reach]) | kind((i & reach) != 0)))
+        for i in range(size - reach):
+            kept[i + reach] = kind(kept[i + reach] & (kind(e[i + reach] <= e[i]) | kind((i & reach) != 0)))
+        reach = np.uint64(reach + reach)
 
 
 @njit(**_OPTIONS)

@@ -160,8 +160,8 @@ def layout_of(polynomial: Polynomial, derivatives: bool = False) -> Layout:
     """
     size = polynomial.size
     fixed = 0 if size <= 22 else 1 if size <= 24 else 3 if size <= 30 else 3 + (2 * (size - 30) + 2) // 3
-    if derivatives:
-        fixed = max(0, min(size - 20, 8))
+    if derivatives:  # a slab makes many tables, and so is larger
+        fixed = 0 if size <= 20 else 1 if size <= 24 else 3 + max(0, size - 30)
     locality = int(np.bitwise_count(polynomial.masks).max(initial=0))
     most = VECTOR_BYTES if locality <= 3 else VECTOR_BYTES // 2
     for low in (12, 11, 10, 9, 8):
