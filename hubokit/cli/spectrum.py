@@ -15,6 +15,7 @@ from hubokit.cli.text import fields, number, section
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import format_fraction
+from hubokit.spectrum.bandwidth import bandwidth_within
 from hubokit.spectrum.exhaustive import density_of_states
 from hubokit.spectrum.neighbourhood import neighbourhood
 from hubokit.spectrum.search import low_levels
@@ -87,6 +88,7 @@ def _around(model: Hamiltonian, targets: Path, radius: int, limit: int, time: fl
     with bar("walking") as progress:
         found = neighbourhood(model, centres, radius, limit=limit, progress=progress, time=time)
     lowest = found.lowest_other
+    merit = bandwidth_within(found)
     parts: Parts = {
         "figures": {
             "radius": found.radius,
@@ -94,12 +96,15 @@ def _around(model: Hamiltonian, targets: Path, radius: int, limit: int, time: fl
             "states": str(found.states),
             "highest-target-energy": format_fraction(found.highest),
             "lowest-other-energy": None if lowest is None else format_fraction(lowest),
+            "bandwidth": format_fraction(merit.bandwidth),
+            "bandwidth-ratio": None if merit.ratio is None else format_fraction(merit.ratio),
             "at-or-below-highest-target": str(found.at_or_below),
         },
-        "notes": [f"visited: {found.method}"],
+        "notes": [str(merit)],
     }
     about = [
         ("lowest other", number(lowest)),
+        ("merit", str(merit)),
         ("at or below", f"{found.at_or_below} other states at or below the highest target"),
     ]
     lines = "\n".join(f"  {line}" for line in str(found).splitlines())
