@@ -179,7 +179,7 @@ def flip_coefficients(
             weights = weights * inside.prod(axis=1, dtype=np.int8).astype(kind)
             values[0] += weights.sum(dtype=kind)
             for degree, nodes in enumerate(levels, 1):
-                _scatter(values, nodes, weights * kind((-2) ** degree))
+                _scatter(values, nodes, weights * _wrapped((-2) ** degree, kind))
         else:
             zeros = (inside == 0).astype(np.int16)
             missing = zeros.sum(axis=1, dtype=np.int16)
@@ -187,6 +187,14 @@ def flip_coefficients(
             for degree, nodes in enumerate(levels, 1):
                 _scatter_booleans(values, nodes, weights, zeros, missing, degree)
     return values
+
+
+def _wrapped(number: int, kind: type[Any]) -> Any:
+    """A number in the arithmetic of a type: modulo 2**32 or 2**64, or as it is."""
+    if kind is object:
+        return number
+    bits = 8 * np.dtype(kind).itemsize
+    return kind((number + (1 << bits - 1)) % (1 << bits) - (1 << bits - 1))
 
 
 def _scatter(values: NDArray[Any], nodes: Members, weights: NDArray[Any]) -> None:

@@ -260,3 +260,11 @@ def test_too_many_subsets_for_the_memory_are_refused_with_their_number(monkeypat
 def test_bad_centres_are_told(around: object, radius: int, fault: str) -> None:
     with pytest.raises(InputError, match=fault):
         neighbourhood(Hamiltonian({("a", "b"): 1}, "spin"), around, radius)
+
+
+def test_all_flips_of_a_product_of_thirty_four_spins_wrap_around_without_reaching_an_energy() -> None:
+    """Sums of coefficients up to 2**34 in 32 bits: modulo 2**32 they give back the energies +1 and -1."""
+    assert [int(recentring._wrapped((-2) ** d, np.int32)) for d in (2, 31, 34)] == [4, -(2**31), 0]
+    assert int(recentring._wrapped((-2) ** 34, np.int64)) == 2**34
+    total = sum(comb(34, d) * int(recentring._wrapped((-2) ** d, np.int32)) for d in range(35))
+    assert (total - 1) % 2**32 == 0
