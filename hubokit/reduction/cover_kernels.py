@@ -1,8 +1,8 @@
 """Inner loops of the cover searches: plain functions over arrays, compiled (numba) for large problems.
 
-Rows have six slots (``cover_problem``): a cubic row holds its pairs in slots 0 to 2, a quartic row its split s in
-slots 2s and 2s + 1. A quartic is *half done* when some pair of it is chosen but no split is whole. The same source
-runs compiled and uncompiled, with the same answer.
+Rows have eight slots (``cover_problem``): a cubic row holds its pairs in slots 0 to 2, a quartic row its split s in
+slots 2s and 2s + 1, the last split standing for a gadget of its own. A quartic is *half done* when some pair of it is
+chosen but no split is whole. The same source runs compiled and uncompiled, with the same answer.
 """
 
 from __future__ import annotations
@@ -51,11 +51,11 @@ def greedy_loop(rows: Ints, starts: Ints, slots: Ints, given: Flags, allowed: Fl
     pairs = len(starts) - 1
     chosen = np.zeros(pairs, np.bool_)
     done = np.zeros(len(rows), np.bool_)
-    value = np.zeros(pairs + 1, np.int64)  # the last stands for empty slots
+    value = np.zeros(pairs + 2, np.int64)  # the last two stand for empty slots
     for row in range(len(rows)):
-        for place in range(6):
+        for place in range(8):
             if rows[row, place] >= 0:
-                value[rows[row, place]] += 2 if rows[row, 3] < 0 else 1
+                value[rows[row, place]] += 2 if rows[row, 3] == -1 else 1
     first = np.flatnonzero(given)
     heap = [(-value[pair], rank[pair], pair) for pair in range(pairs) if allowed[pair] and not given[pair]]
     heapq.heapify(heap)
@@ -74,19 +74,20 @@ def greedy_loop(rows: Ints, starts: Ints, slots: Ints, given: Flags, allowed: Fl
                 continue
         chosen[best] = True
         for entry in range(starts[best], starts[best + 1]):
-            row = slots[entry] // 6
+            row = slots[entry] // 8
             if done[row]:
                 continue
-            if rows[row, 3] < 0:
+            if rows[row, 3] == -1:
                 done[row] = True
                 for place in range(3):
                     value[rows[row, place]] -= 2
                 continue
-            partner = rows[row, (slots[entry] - 6 * row) ^ 1]
+            partner = rows[row, (slots[entry] - 8 * row) ^ 1]
             if chosen[partner]:
                 done[row] = True
-                for place in range(6):
-                    value[rows[row, place]] -= 2 if chosen[rows[row, place ^ 1]] else 1
+                for place in range(8):
+                    if rows[row, place] >= 0:
+                        value[rows[row, place]] -= 2 if chosen[rows[row, place ^ 1]] else 1
             else:
                 value[partner] += 1
                 if allowed[partner]:
@@ -97,21 +98,22 @@ def greedy_loop(rows: Ints, starts: Ints, slots: Ints, given: Flags, allowed: Fl
 def prune_loop(rows: Ints, starts: Ints, slots: Ints, chosen: Flags, order: Ints) -> None:
     """Leave out of a full cover, in the given order, every pair without which all rows are still covered.
 
-    `chosen` has shape (p + 1,); its last entry stands for empty slots and is False.
+    `chosen` has shape (p + 2,); its last two entries stand for empty slots and are False.
     """
     for pair in order:
         if not chosen[pair]:
             continue
         chosen[pair] = False
         for entry in range(starts[pair], starts[pair + 1]):
-            row = slots[entry] // 6
-            if rows[row, 3] < 0:
+            row = slots[entry] // 8
+            if rows[row, 3] == -1:
                 held = chosen[rows[row, 0]] or chosen[rows[row, 1]] or chosen[rows[row, 2]]
             else:
                 held = (
                     (chosen[rows[row, 0]] and chosen[rows[row, 1]])
                     or (chosen[rows[row, 2]] and chosen[rows[row, 3]])
                     or (chosen[rows[row, 4]] and chosen[rows[row, 5]])
+                    or (chosen[rows[row, 6]] and chosen[rows[row, 7]])
                 )
             if not held:
                 chosen[pair] = True
@@ -142,7 +144,7 @@ def exchange_loop(
     pairs, count = len(starts) - 1, len(rows)
     best, chosen = start.copy(), np.zeros(pairs, np.bool_)
     cover = np.zeros(count, np.int64)  # chosen pairs of a cubic, whole splits of a quartic
-    halves = np.zeros(count, np.int64)  # chosen pairs of a quartic
+    halves = np.zeros(count, np.int64)  # chosen pairs of a quartic, its own gadget apart
     weight = np.ones(count, np.int64)
     stamp = np.zeros(pairs, np.int64)
     fresh = np.ones(pairs, np.bool_)
@@ -180,14 +182,14 @@ def exchange_loop(
                         continue
                     cost = 0
                     for entry in range(starts[pair], starts[pair + 1]):
-                        row = slots[entry] // 6
-                        if rows[row, 3] < 0:
+                        row = slots[entry] // 8
+                        if rows[row, 3] == -1:
                             if cover[row] == 1:
                                 cost += weight[row]
                         elif cover[row] == 0:
                             if halves[row] == 1:
                                 cost += weight[row]
-                        elif cover[row] == 1 and chosen[rows[row, (slots[entry] - 6 * row) ^ 1]]:
+                        elif cover[row] == 1 and chosen[rows[row, (slots[entry] - 8 * row) ^ 1]]:
                             cost += weight[row]
                     if out < 0 or cost < loss or (cost == loss and stamp[pair] < stamp[out]):
                         out, loss = pair, cost
@@ -200,18 +202,18 @@ def exchange_loop(
                 members[where[out]] = members[size]
                 where[members[size]] = where[out]
                 for entry in range(starts[out], starts[out + 1]):
-                    row = slots[entry] // 6
-                    lost = rows[row, 3] < 0
+                    row = slots[entry] // 8
+                    lost = rows[row, 3] == -1
                     if not lost:
-                        halves[row] -= 1
-                        lost = chosen[rows[row, (slots[entry] - 6 * row) ^ 1]]
+                        halves[row] -= slots[entry] - 8 * row < 6
+                        lost = chosen[rows[row, (slots[entry] - 8 * row) ^ 1]]
                     if lost:
                         cover[row] -= 1
                         if cover[row] == 0:
                             open_at[row] = opened
                             open_rows[opened] = row
                             opened += 1
-                    for place in range(6):
+                    for place in range(8):
                         if rows[row, place] >= 0 and rows[row, place] != out:
                             fresh[rows[row, place]] = True
             if opened == 0:
@@ -219,17 +221,17 @@ def exchange_loop(
             state = state * 48271 % 2147483647
             row = open_rows[state % opened]
             gain = 0
-            for place in range(6):
+            for place in range(8):
                 pair = rows[row, place]
                 if pair < 0 or chosen[pair] or not fresh[pair]:
                     continue
                 worth = 0
                 for entry in range(starts[pair], starts[pair + 1]):
-                    other = slots[entry] // 6
+                    other = slots[entry] // 8
                     if cover[other] == 0 and (
-                        rows[other, 3] < 0
+                        rows[other, 3] == -1
                         or halves[other] == 0
-                        or chosen[rows[other, (slots[entry] - 6 * other) ^ 1]]
+                        or chosen[rows[other, (slots[entry] - 8 * other) ^ 1]]
                     ):
                         worth += weight[other]
                 if into < 0 or worth > gain or (worth == gain and stamp[pair] < stamp[into]):
@@ -245,11 +247,11 @@ def exchange_loop(
             where[into] = size
             size += 1
         for entry in range(starts[into], starts[into + 1]):
-            row = slots[entry] // 6
-            won = rows[row, 3] < 0
+            row = slots[entry] // 8
+            won = rows[row, 3] == -1
             if not won:
-                halves[row] += 1
-                won = chosen[rows[row, (slots[entry] - 6 * row) ^ 1]]
+                halves[row] += slots[entry] - 8 * row < 6
+                won = chosen[rows[row, (slots[entry] - 8 * row) ^ 1]]
             if won:
                 cover[row] += 1
                 if cover[row] == 1:
@@ -257,7 +259,7 @@ def exchange_loop(
                     moved = open_rows[opened]
                     open_rows[open_at[row]] = moved
                     open_at[moved] = open_at[row]
-            for place in range(6):
+            for place in range(8):
                 if rows[row, place] >= 0 and rows[row, place] != into:
                     fresh[rows[row, place]] = True
     if opened == 0 and size < best.sum() - given.sum():

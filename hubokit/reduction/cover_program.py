@@ -88,7 +88,8 @@ def least_cover(problem: CoverProblem, start: NDArray[np.bool_], nodes: int) -> 
 
 def _columns(problem: CoverProblem, chosen: NDArray[np.bool_]) -> NDArray[np.float64]:
     quartic = problem.rows[~problem.is_cubic]
-    splits = (chosen[quartic[:, 0::2]] & chosen[quartic[:, 1::2]]).ravel()
+    held = np.append(chosen, [False, False])
+    splits = (held[quartic[:, 0::2]] & held[quartic[:, 1::2]]).ravel()
     return np.concatenate([chosen, splits]).astype(np.float64)
 
 
@@ -97,9 +98,11 @@ def _program(problem: CoverProblem) -> Any:
 
     pairs = problem.pairs
     cubic, quartic = problem.rows[problem.is_cubic][:, :3], problem.rows[~problem.is_cubic]
-    split = pairs + np.arange(3 * len(quartic)).reshape(-1, 3)
-    cover_rows = [[int(pair) for pair in row if pair >= 0] for row in cubic] + split.tolist()
-    links = np.column_stack([np.repeat(split.ravel(), 2), quartic.ravel()])
+    split = pairs + np.arange(4 * len(quartic)).reshape(-1, 4)
+    there = quartic[:, 0::2] >= 0
+    cover_rows = [[int(pair) for pair in row if pair >= 0] for row in cubic]
+    cover_rows += [row[usable].tolist() for row, usable in zip(split, there, strict=True)]
+    links = np.column_stack([np.repeat(split[there], 2), quartic.reshape(-1, 4, 2)[there].ravel()])
     lengths = np.array([len(row) for row in cover_rows] + [2] * len(links), np.int32)
     index = np.array([column for row in cover_rows for column in row] + links.ravel().tolist(), np.int32)
     value = np.ones(len(index))

@@ -18,13 +18,21 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hubokit.reduction.cover_kernels import exchange_loop, greedy_loop, kernel, prune_loop
-from hubokit.reduction.cover_problem import EMPTY, CoverProblem
+from hubokit.reduction.cover_problem import DROPPED, EMPTY, SLOTS, CoverProblem
 from hubokit.reduction.cover_program import least_cover
 
 PROGRAM_WORK = 10_000
 """Rows times squared mean degree of the pairs up to which the integer program is asked, for `work` = 1."""
 
 PROGRAM_NODES = 100
+"""Branch and bound nodes of one program, for `work` = 1."""
+
+QUARTIC_NODES = 2000
+"""Nodes times rows where quartics are among them: there a node takes far longer."""
+
+QUARTIC_ROWS, LOOSE_DEGREE = 64, 1.6
+"""More quartics than these count as hard, unless their pairs stand in this few rows on average."""
+
 EXCHANGE_WORK = 100_000_000
 """Slots that the weighted exchange may look at, for `work` = 1."""
 
@@ -102,36 +110,43 @@ def simplified(problem: CoverProblem) -> tuple[Chosen, CoverProblem]:
     """Pairs that some least cover holds for certain, and the problem that is left.
 
     In a cubic row a pair that occurs nowhere else is no better than another pair of the row: it is left out while
-    the row has another. A cubic row with one pair left forces that pair.
+    the row has another. A cubic row with one pair left forces that pair. In a quartic with a gadget of its own a
+    split with a pair that occurs nowhere else is no better than the gadget; without other splits the gadget is
+    forced.
 
     Returns
     -------
     forced : bool array, shape (p,)
         Given pairs included.
     core : CoverProblem
-        The rows that are not covered yet, with the forced pairs given; cubic rows may have empty slots.
+        The rows that are not covered yet, with the forced pairs given; some slots are left out.
     """
     chosen = problem.given.copy()
     rows = problem.rows
     while True:
         state = replace(problem, rows=rows, given=chosen)
         rows = rows[~state.is_covered(chosen)]
-        degree = np.append(np.bincount(rows[rows >= 0], minlength=problem.pairs), 0)
-        cubic = rows[:, 3] < 0
-        lone = cubic[:, None] & (degree[rows] == 1) & (rows >= 0)
-        shared = cubic[:, None] & (degree[rows] > 1) & (rows >= 0)
-        drop = lone & shared.any(axis=1, keepdims=True)
-        spare = cubic & ~shared.any(axis=1)
-        drop[spare] = False
+        degree = np.append(np.bincount(rows[rows >= 0], minlength=problem.pairs), [0, 0])
+        held = np.append(chosen, [False, False])
+        lonely = (rows >= 0) & (degree[rows] == 1) & ~held[rows]
+        shared = (rows >= 0) & ~lonely
+        cubic = rows[:, 3] == EMPTY
+        drop = lonely & shared.any(axis=1, keepdims=True) & cubic[:, None]
+        own = rows[:, 6] >= 0
+        for split in (0, 2, 4):
+            broken = own & (lonely[:, split] | lonely[:, split + 1])
+            drop[:, split : split + 2] |= broken[:, None]
         kept = rows.copy()
         kept[drop] = EMPTY
-        single = cubic & ((kept >= 0).sum(axis=1) == 1)
-        take = spare | single
-        if not take.any():
+        kept[drop & ~cubic[:, None]] = DROPPED
+        left = (kept >= 0).sum(axis=1)
+        take = np.where(cubic, (left == 1) | ~shared.any(axis=1), own & (left == 2))
+        if take.any():
+            chosen = chosen.copy()
+            first = (kept[take] >= 0).argmax(axis=1)
+            chosen[kept[take][np.arange(len(first)), first]] = True
+        elif np.array_equal(kept, rows):
             return chosen, replace(problem, rows=kept, given=chosen)
-        chosen = chosen.copy()
-        first = (kept[take] >= 0).argmax(axis=1)
-        chosen[kept[take][np.arange(len(first)), first]] = True
         rows = kept
 
 
@@ -160,9 +175,9 @@ def pruned(problem: CoverProblem, chosen: Chosen) -> Chosen:
     starts, slots = problem.incidence
     order = np.argsort(np.diff(starts), kind="stable")
     order = order[chosen[order] & ~problem.given[order]]
-    held = np.append(chosen, False)
+    held = np.append(chosen, [False, False])
     kernel(prune_loop, len(slots))(problem.rows, starts, slots, held, order)
-    return held[:-1]
+    return held[:-2]
 
 
 def exchanged(problem: CoverProblem, chosen: Chosen, seed: int, steps: int) -> Chosen:
@@ -211,11 +226,14 @@ def _search(problem: CoverProblem, seed: int, work: int) -> tuple[Chosen, str, i
 
 
 def program_work(problem: CoverProblem, lines: NDArray[np.int64]) -> int:
-    """Rows times squared mean degree: what the integer program grows with."""
+    """Rows times squared mean degree of the pairs: what the integer program grows with; more for many quartics."""
     rows = problem.rows[lines]
-    used = rows[rows >= 0]
+    used = rows[:, :6][rows[:, :6] >= 0]
+    used = used[~problem.given[used]]
     degree = len(used) / max(1, len(np.unique(used)))
-    return int(len(rows) * degree**2)
+    quartics = int((rows[:, 3] != EMPTY).sum())
+    hard = quartics > QUARTIC_ROWS and degree > LOOSE_DEGREE
+    return int(len(rows) * degree**2) * (1 + hard * quartics)
 
 
 def _by_program(
@@ -232,7 +250,8 @@ def _by_program(
         if load < PROGRAM_WORK and index + 1 < len(parts):
             continue
         inner, numbers = problem.part(np.concatenate(batch))
-        answer = least_cover(inner, chosen[numbers], PROGRAM_NODES * work)
+        nodes = PROGRAM_NODES if inner.is_cubic.all() else max(1, QUARTIC_NODES // len(inner.rows))
+        answer = least_cover(inner, chosen[numbers], nodes * work)
         chosen[numbers] = answer.chosen
         least += answer.bound
         batch, load = [], 0
@@ -244,7 +263,8 @@ def components(problem: CoverProblem) -> list[NDArray[np.int64]]:
     label = np.arange(len(problem.rows))
     starts, slots = problem.incidence
     owner = np.repeat(np.arange(problem.pairs), np.diff(starts))
-    row = slots // 6
+    joins = ~problem.given[owner]
+    owner, row = owner[joins], slots[joins] // SLOTS
     while True:
         least = np.full(problem.pairs, len(label), np.int64)
         np.minimum.at(least, owner, label[row])
@@ -295,12 +315,14 @@ def sides(problem: CoverProblem, seed: int) -> list[Chosen]:
 def even_sides(problem: CoverProblem) -> NDArray[np.bool_]:
     """A basis of all sides that add up to an even number over every quartic row, shape (b, variables)."""
     quartic = problem.rows[~problem.is_cubic]
-    used = np.unique(problem.operands)
+    used = np.unique(problem.operands[problem.operands >= 0])
     if len(quartic) * len(used) > SIDE_WORK:
         return np.zeros((0, problem.variables), bool)
     place = {int(variable): index for index, variable in enumerate(used)}
     pivots: dict[int, int] = {}
-    members = np.column_stack([problem.operands[quartic[:, 0]], problem.operands[quartic[:, 1]]])
+    usable = (quartic[:, 0:6:2] >= 0).argmax(axis=1) * 2
+    each = np.arange(len(quartic))
+    members = np.column_stack([problem.operands[quartic[each, usable]], problem.operands[quartic[each, usable + 1]]])
     for row in members.tolist():
         vector = 0
         for variable in row:

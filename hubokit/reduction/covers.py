@@ -15,7 +15,7 @@ Anthony, Boros, Crama, Gruber 2017, "Quadratic reformulations of nonlinear binar
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from functools import cached_property
 from typing import Any
@@ -30,7 +30,7 @@ from hubokit.model.terms import Part, canonical_blocks
 from hubokit.reduction.cover_joins import most_common_pairs
 from hubokit.reduction.cover_problem import cover_problem
 from hubokit.reduction.cover_search import find_cover
-from hubokit.reduction.pairs import PairVariables, factors_of, rewritten, shortened
+from hubokit.reduction.pairs import PairVariables, factors_of, factors_where_covered, rewritten, shortened
 from hubokit.reduction.penalties import SPIN_DIVISOR, BooleanForm, Strengths, interval_strengths, penalty_parts
 
 JOIN_WORK = 50_000
@@ -50,6 +50,8 @@ class ChosenPairs:
         Auxiliaries that the most-common-pair rule takes.
     proven_least : bool
         No other pairs of the same way (splits or nests) are fewer.
+    alone : int
+        Terms left to a gadget of their own, of one auxiliary each.
     skipped : tuple of str
         Ways that were not tried because of the work limit.
     """
@@ -59,10 +61,21 @@ class ChosenPairs:
     greedy: int
     proven_least: bool
     skipped: tuple[str, ...] = ()
+    alone: int = 0
+
+    @property
+    def auxiliaries(self) -> int:
+        """Auxiliaries of the pairs and of the terms left alone."""
+        return self.pairs.count + self.alone
 
 
 def choose_pairs(
-    blocks: Mapping[int, NDArray[Any]], size: int, domain: str, seed: int = 0, work: int = 1
+    blocks: Mapping[int, NDArray[Any]],
+    size: int,
+    domain: str,
+    seed: int = 0,
+    work: int = 1,
+    alone: NDArray[np.bool_] | None = None,
 ) -> ChosenPairs:
     """As few pairs as the search finds for terms of three and more members.
 
@@ -75,6 +88,8 @@ def choose_pairs(
     seed : int
     work : int
         Multiplies the limits of the searches, which count steps.
+    alone : bool array, optional
+        The quartic terms that a gadget of one auxiliary serves as well; the search may leave them to it.
 
     Examples
     --------
@@ -84,49 +99,60 @@ def choose_pairs(
     """
     blocks = {locality: members for locality, members in sorted(blocks.items()) if len(members)}
     long = sum(len(members) for locality, members in blocks.items() if locality >= 4)
-    tried = [_shorten_and_cover(blocks, size, domain, 4, seed, work)]
+    tried = [_shorten_and_cover(blocks, size, domain, 4, seed, work, alone)]
     skipped: tuple[str, ...] = ()
     if domain == "boolean" and long:
         if long <= JOIN_WORK * work:
-            tried.append(_shorten_and_cover(blocks, size, domain, 3, seed, work))
+            tried.append(_shorten_and_cover(blocks, size, domain, 3, seed, work, None))
             rule = most_common_pairs(blocks.values(), size, domain, 2)
             tried.append(ChosenPairs(rule, "most common pair", rule.count, False))
         else:
             skipped = (f"nested pairs: {long} terms of four and more, limit {JOIN_WORK * work}",)
-    best = min(tried, key=lambda one: one.pairs.count)
+    best = min(tried, key=lambda one: one.auxiliaries)
     greedy = min(one.greedy for one in tried)
-    return ChosenPairs(best.pairs, best.how, greedy, best.proven_least, skipped)
+    return replace(best, greedy=greedy, skipped=skipped)
 
 
 def _shorten_and_cover(
-    blocks: Mapping[int, NDArray[Any]], size: int, domain: str, most: int, seed: int, work: int
+    blocks: Mapping[int, NDArray[Any]],
+    size: int,
+    domain: str,
+    most: int,
+    seed: int,
+    work: int,
+    alone: NDArray[np.bool_] | None,
 ) -> ChosenPairs:
     """Terms shortened to at most `most` members by joint variables, then covered by pairs."""
-    short: list[NDArray[Any]] = [members for locality, members in blocks.items() if locality <= most]
     long = [members for locality, members in blocks.items() if locality > most]
     joins = most_common_pairs(blocks.values(), size, domain, most) if long else PairVariables.of(size, [])
-    short += [shortened(members, joins, domain, most) for members in long]
-    by_columns = [
-        np.concatenate([members for members in short if members.shape[1] == columns])
-        for columns in (3, 4)
-        if any(members.shape[1] == columns for members in short)
-    ]
-    problem = cover_problem(by_columns, size + joins.count, joins.operands[~joins.is_product])
+    short = {locality: [members] for locality, members in blocks.items() if locality <= most}
+    for members in long:
+        short.setdefault(most, []).append(shortened(members, joins, domain, most))
+    by_columns = [np.concatenate(rows) for rows in short.values()]
+    marks = [np.zeros(len(rows), bool) for rows in by_columns]
+    if alone is not None and 4 in short:
+        marks[list(short).index(4)][: len(alone)] = alone
+    problem = cover_problem(by_columns, size + joins.count, joins.operands[~joins.is_product], marks)
     cover = find_cover(problem, seed, work)
-    fresh = problem.operands[cover.chosen & ~problem.given]
+    fresh = cover.chosen & ~problem.given
+    left = int((fresh & (problem.operands[:, 0] < 0)).sum())
+    operands = problem.operands[fresh & (problem.operands[:, 0] >= 0)]
     pairs = PairVariables(
         size,
-        np.concatenate([joins.operands, fresh]).astype(np.int32),
-        np.concatenate([joins.companions, np.full(len(fresh), -1)]).astype(np.int32),
+        np.concatenate([joins.operands, operands]).astype(np.int32),
+        np.concatenate([joins.companions, np.full(len(operands), -1)]).astype(np.int32),
     )
     least = joins.count == 0 and problem.count(cover.chosen) == cover.least
     how = cover.how if not joins.count else f"{joins.count} joint variables by the most common pair, then {cover.how}"
-    return ChosenPairs(pairs, how, joins.count + cover.greedy, least)
+    return ChosenPairs(pairs, how, joins.count + cover.greedy, least, alone=left)
 
 
 @dataclass(frozen=True)
 class PairCoverPlan:
     """A pair substitution ready to be priced and built.
+
+    Terms that are not covered are no part of it: with gadgets of their own they can stand beside it, because no
+    variable but the originals is shared.
 
     Parameters
     ----------
@@ -266,6 +292,7 @@ def pair_cover_reduction(
     seed: int = 0,
     work: int = 1,
     only: Mapping[int, NDArray[np.bool_]] | None = None,
+    alone: NDArray[np.bool_] | None = None,
 ) -> PairCoverPlan:
     """Choose pairs for the terms of three and more members, and penalties that interval bounds prove.
 
@@ -284,6 +311,9 @@ def pair_cover_reduction(
         Multiplies the limits of the searches.
     only : mapping of locality to bool array (m,), optional
         The terms to cover, one mask for each block; a locality left out is covered whole.
+    alone : bool array (m,), optional
+        For the block of locality four: terms that a gadget of one auxiliary would serve. They are covered where that
+        takes fewer auxiliaries, and left to their gadgets (not `covered`) where it does not.
 
     Returns
     -------
@@ -303,11 +333,18 @@ def pair_cover_reduction(
             mask = np.ones(len(block), bool)
             covered[block.locality] = mask if only is None else np.asarray(only.get(block.locality, mask), bool)
     members = {b.locality: b.members[covered[b.locality]] for b in H.blocks if b.locality >= 3}
-    chosen = choose_pairs(members, H.size, H.domain, seed, work)
-    factors = {
-        locality: factors_of(rows, chosen.pairs, H.domain) if len(rows) else np.zeros((0, 2), np.int64)
-        for locality, rows in members.items()
-    }
+    lone = alone[covered[4]] if alone is not None and 4 in covered else None
+    chosen = choose_pairs(members, H.size, H.domain, seed, work, lone)
+    factors = {}
+    for locality, rows in members.items():
+        if chosen.alone and locality == 4:
+            found = factors_where_covered(rows, chosen.pairs, H.domain)
+            reached = found[:, 0] >= 0
+            covered[4] = np.array(covered[4])
+            covered[4][covered[4]] = reached
+            factors[4] = found[reached]
+        else:
+            factors[locality] = factors_of(rows, chosen.pairs, H.domain)
     gap = auxiliary_gap if auxiliary_gap else H.resolution
     resolution = common_resolution([H.resolution, gap])
     form = covered_form(H, covered, factors, chosen.pairs, resolution)

@@ -236,21 +236,29 @@ def factors_of(members: NDArray[Any], pairs: PairVariables, domain: str) -> NDAr
     >>> factors_of(np.array([[0, 1, 2]]), PairVariables.of(3, [(1, 2)]), "boolean").tolist()
     [[3, 0]]
     """
-    rows = shortened(members, pairs, domain) if members.shape[1] > 4 else np.array(members, dtype=np.int64)
+    rows = shortened(members, pairs, domain) if members.shape[1] > 4 else members
+    factors = factors_where_covered(rows, pairs, domain)
+    if (factors < 0).any():
+        place = int(np.flatnonzero((factors < 0).any(axis=1))[0])
+        raise InputError(f"no chosen pair makes the term {np.asarray(members)[place].tolist()} quadratic", "pairs")
+    return factors
+
+
+def factors_where_covered(members: NDArray[Any], pairs: PairVariables, domain: str) -> NDArray[np.int64]:
+    """The factors of terms of three or four members, as `factors_of` gives them; -1 where the pairs do not reach.
+
+    Returns
+    -------
+    int64 array, shape (m, 2)
+    """
+    rows = np.array(members, dtype=np.int64)
     factors = np.full((len(rows), 2), ABSENT, np.int64)
-    for options in _options(rows, pairs, domain):
-        missing = factors[:, 0] < 0
-        if not missing.any():
-            break
-        first, second = options
-        usable = (first >= 0) & (second >= 0) & missing[:, None]
+    for first, second in _options(rows, pairs, domain):
+        usable = (first >= 0) & (second >= 0) & (factors[:, :1] < 0)
         line = np.flatnonzero(usable.any(axis=1))
         choice = usable[line].argmax(axis=1)
         factors[line, 0] = first[line, choice]
         factors[line, 1] = second[line, choice]
-    if (factors < 0).any():
-        place = int(np.flatnonzero((factors < 0).any(axis=1))[0])
-        raise InputError(f"no chosen pair makes the term {np.asarray(members)[place].tolist()} quadratic", "pairs")
     return factors
 
 

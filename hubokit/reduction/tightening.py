@@ -16,6 +16,7 @@ Only pairs of original variables are tightened; groups of auxiliaries with pairs
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import replace
 from fractions import Fraction
 from typing import Any
@@ -38,6 +39,12 @@ MOST_ROUNDS = 24
 
 PROGRAM_GROUP = 40
 """Auxiliaries of one group up to which shares are sought by linear program, for `work` = 1."""
+
+SHARED_WORK = 200_000
+"""Sum of squared group sizes over which shared bounds are evaluated, heaviest penalties first, for `work` = 1."""
+
+PROGRAM_WORK = 3_000
+"""Sum of squared group sizes over which linear programs are solved, for `work` = 1."""
 
 ENOUGH = Fraction(12, 25)
 """Share of the largest coefficient before, at which the search for shares is content for `work` = 1.
@@ -79,9 +86,15 @@ def tightened(plan: PairCoverPlan, work: int = 1) -> PairCoverPlan:
     gap = int(plan.gap / plan.resolution)
     better = plan
     proofs: set[str] = set()
-    for group in groups(form, plan.pairs, LARGEST_GROUP * work):
+    shared, programmed = SHARED_WORK * work, PROGRAM_WORK * work
+    for group in heaviest_first(groups(form, plan.pairs, LARGEST_GROUP * work), plan.strengths):
+        size = len(group.numbers)
+        shared -= size**2
+        if shared < 0:
+            break
+        programmed -= size**2
         table = coefficients(better, group)
-        rounds = MOST_ROUNDS * work if len(group.numbers) <= PROGRAM_GROUP * work else 0
+        rounds = MOST_ROUNDS * work if size <= PROGRAM_GROUP * work and programmed >= 0 else 0
         one, both = better.strengths.one.copy(), better.strengths.both.copy()
         before = Strengths(one[group.numbers], both[group.numbers])
         enough = int(ENOUGH * table.figure(before)[0]) if work == 1 else 0
@@ -96,6 +109,12 @@ def tightened(plan: PairCoverPlan, work: int = 1) -> PairCoverPlan:
     scale = Fraction(better.price()["largest"]) / plan.price()["largest"]
     record = {"scale": format_fraction(scale), "proved by": "; ".join(sorted(proofs))}
     return replace(better, tightening=record)
+
+
+def heaviest_first(found: Sequence[Group], strengths: Strengths) -> list[Group]:
+    """Groups by their largest penalty, the largest first."""
+    weight = 2 * strengths.one + strengths.both
+    return sorted(found, key=lambda group: -int(weight[group.numbers].max()))
 
 
 def coefficients(plan: PairCoverPlan, group: Group) -> Coefficients:

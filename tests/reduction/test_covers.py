@@ -269,3 +269,41 @@ def test_the_price_is_that_of_the_model_built() -> None:
     assert price["largest"] == max(sizes)
     assert price["smallest"] == min(sizes)
     assert price["couplers"] == sum(len(key) == 2 for key, _ in model.terms())
+
+
+def least_mixed_by_enumeration(problem: CoverProblem, quartics: int) -> int:
+    """The least number of pairs plus quartics left alone, by trying all sets of pairs."""
+    pairs = np.flatnonzero(problem.operands[:, 0] >= 0)
+    best = quartics
+    for size in range(quartics):
+        for some in itertools.combinations(pairs, size):
+            chosen = np.zeros(problem.pairs, bool)
+            chosen[list(some)] = True
+            held = np.append(chosen, [False, False])[problem.rows]
+            left = int((~(held[:, 0:6:2] & held[:, 1:6:2]).any(axis=1)).sum())
+            best = min(best, size + left)
+    return best
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_quartics_are_left_to_gadgets_of_their_own_where_that_is_fewer(seed: int) -> None:
+    rows = random_rows(seed, 6, 5, 4)
+    alone = np.ones(len(rows), bool)
+    chosen = choose_pairs({4: rows}, 6, "spin", alone=alone)
+    assert chosen.auxiliaries == least_mixed_by_enumeration(cover_problem([rows], 6, alone=[alone]), len(rows))
+
+
+def test_mixing_never_takes_more_than_either_way_alone() -> None:
+    for seed in range(2):
+        rows = random_rows(seed, 20, 90, 4)
+        mixed = choose_pairs({4: rows}, 20, "spin", alone=np.ones(len(rows), bool))
+        assert mixed.auxiliaries <= min(len(rows), choose_pairs({4: rows}, 20, "spin").auxiliaries)
+        assert 0 < mixed.alone < len(rows)
+
+
+def test_terms_left_alone_are_not_covered_and_the_others_are() -> None:
+    shared = {("a", "b", "c", "d"): 1, ("a", "b", "e", "f"): 2, ("c", "d", "e", "f"): 1, ("a", "b", "g", "h"): 1}
+    H = Hamiltonian({**shared, ("c", "d", "g", "h"): 1, ("i", "j", "k", "l"): 5}, "spin")
+    plan = pair_cover_reduction(H, alone=np.ones(6, bool))
+    assert plan.covered[4].tolist() == [True, True, True, True, True, False]
+    assert (plan.auxiliaries, plan.chosen.alone) == (4, 1)
