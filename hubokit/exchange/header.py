@@ -28,7 +28,7 @@ from hubokit.model.labels import as_label, as_labels
 from hubokit.model.numbers import as_fraction, format_fraction
 from hubokit.model.states import CONVENTIONS, DOMAINS
 
-VARIABLE_LIMIT = 2**24
+VARIABLE_LIMIT = 2**20
 """A file that counts more variables than this is refused."""
 
 

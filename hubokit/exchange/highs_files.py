@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import io
 import os
+import re
 import subprocess
 import sys
 import tempfile
@@ -16,7 +17,8 @@ from pathlib import Path
 import numpy as np
 
 from hubokit.errors import InputError
-from hubokit.exchange.files import read_bytes
+from hubokit.exchange.files import read_text
+from hubokit.exchange.json_text import quoted
 from hubokit.exchange.programs import Program
 
 PROGRAM_LIMIT = 2**28
@@ -85,6 +87,8 @@ if solver.passModel(lp) == highspy.HighsStatus.kError or solver.writeModel(targe
     sys.exit(6)
 """
 
+_NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?|[+-]?[iI]nf(inity)?")
+
 _REASONS = {
     3: "HiGHS does not read the file as a linear program",
     4: "a quadratic objective; write the products as columns, or use .opb",
@@ -127,6 +131,50 @@ def _in_child(script: str, source: str, target: str) -> None:
         raise InputError(_REASONS.get(done.returncode, "HiGHS failed on the file; it may be damaged"))
 
 
+def refuse_damaged(text: str, *, mps: bool) -> None:
+    """Raise for what HiGHS passes over: a missing end, and in MPS files numbers that are none.
+
+    Raises
+    ------
+    InputError
+        With the line.
+
+    Examples
+    --------
+    >>> refuse_damaged("NAME\\nROWS\\n N c\\nCOLUMNS\\n x c 5q\\nENDATA", mps=True)
+    Traceback (most recent call last):
+    hubokit.errors.InputError: line 5: "5q" is no number
+    """
+    lines = text.split("\n")
+    last = next((place for place in range(len(lines), 0, -1) if lines[place - 1].strip()), 1)
+    if lines[last - 1].strip().lower() != ("endata" if mps else "end"):
+        raise InputError(f"the file does not end with {'ENDATA' if mps else 'end'}; it may be cut", f"line {last}")
+    if not mps:
+        return
+    section = ""
+    for number, line in enumerate(lines, start=1):
+        words = line.split()
+        if not words or line.startswith("*"):
+            continue
+        if not line[0].isspace():
+            section = words[0].upper()
+            continue
+        for word in _number_words(section, words):
+            if not _NUMBER.fullmatch(word):
+                raise InputError(f"{quoted(word)} is no number", f"line {number}")
+
+
+def _number_words(section: str, words: list[str]) -> list[str]:
+    """The words of a line of an MPS file that must be numbers."""
+    if section == "COLUMNS":
+        return [] if "'MARKER'" in words else words[2::2]
+    if section in ("RHS", "RANGES"):
+        return words[2::2] if len(words) % 2 else words[1::2]
+    if section == "BOUNDS":
+        return words[3:]
+    return []
+
+
 def highs_read(name: str) -> Program:
     """The linear program in a file.
 
@@ -137,7 +185,7 @@ def highs_read(name: str) -> Program:
     """
     if os.path.getsize(name) == 0 if os.path.isfile(name) else False:
         raise InputError("the file is empty")
-    read_bytes(name, limit=PROGRAM_LIMIT)
+    refuse_damaged(read_text(name, limit=PROGRAM_LIMIT), mps=name.lower().endswith(".mps"))
     with tempfile.TemporaryDirectory() as folder:
         target = os.path.join(folder, "program.npz")
         _in_child(_READER, os.path.abspath(name), target)
@@ -147,7 +195,9 @@ def highs_read(name: str) -> Program:
 
 
 def _program(stored: dict[str, np.ndarray[tuple[int, ...], np.dtype[np.generic]]]) -> Program:
-    names = str(stored["names"]).split("\n") if len(stored["cost"]) else []
+    if not len(stored["cost"]):
+        raise InputError("the program has no columns")
+    names = str(stored["names"]).split("\n")
     if not np.isfinite(stored["cost"].astype(float)).all() or not np.isfinite(stored["values"].astype(float)).all():
         raise InputError("a coefficient of the program is not finite")
     starts, columns, values = (

@@ -125,9 +125,8 @@ def _sum(program: Program, products: list[tuple[int, ...]], labels: tuple[str, .
 def _foreign_model(program: Program, header: Header) -> tuple[Hamiltonian, tuple[str, ...]]:
     if not program.binary.all():
         column = int((~program.binary).argmax())
-        raise InputError(
-            "every column must be binary (or a product column as hubokit writes it)", program.names[column]
-        )
+        mend = "every column must be binary, or a product column as hubokit writes it"
+        raise InputError(mend, f"column {program.names[column][:60]}")
     size = len(program.names)
     labels = header.labels(size, lambda number: program.names[number - 1] or default_name(number))
     model = _sum(program, [(i,) for i in range(size)], labels, header)
