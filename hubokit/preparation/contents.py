@@ -82,8 +82,16 @@ def export(reduction: Reduction, place: Path, formats: Iterable[str]) -> tuple[d
                 left_out[name] = error.message
     for path in sorted(place.iterdir()):
         if path.name not in files and path.name not in DOCUMENTS:
-            files[path.name] = BESIDE
+            files[path.name] = (
+                BESIDE if path.name.endswith(".names.json") else f"second part of {_first_part(path, files)}"
+            )
     return files, left_out
+
+
+def _first_part(path: Path, files: Mapping[str, str]) -> str:
+    """The file that a second file of the same format goes with: reduced.mtx for reduced.fields.mtx."""
+    first = f"{path.name.partition('.')[0]}{path.suffix}"
+    return first if first in files else "another file"
 
 
 def grouped(files: Mapping[str, str]) -> list[tuple[str, str]]:
