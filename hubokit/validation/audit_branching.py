@@ -32,34 +32,46 @@ def least_and_count(linear: Sequence[int], quadratic: Matrix, spend: Callable[[i
     """
     n = len(linear)
     bits = [0] * n
+    field = list(linear)
     while True:
-        field = [linear[i] + sum(q for q, b in zip(quadratic[i], bits, strict=True) if b) for i in range(n)]
         flips = [-f if b else f for f, b in zip(field, bits, strict=True)]
-        spend(n * n)
         worst = min(range(n), key=flips.__getitem__, default=-1)
+        spend(n)
         if worst >= 0 and flips[worst] < 0:
-            bits[worst] ^= 1
+            _flip(worst, bits, field, quadratic)
             continue
         signs = [1 - 2 * b for b in bits]
         Q = [[q * s * t for q, t in zip(row, signs, strict=True)] for row, s in zip(quadratic, signs, strict=True)]
+        spend(n * n)
         better, count = _explored(flips, Q, spend)
         if better is None:
             energy = sum(f for f, b in zip(linear, bits, strict=True) if b)
             pairs = sum(quadratic[i][k] for i in range(n) for k in range(i) if bits[i] and bits[k])
             return energy + pairs, count
         for i in better:
-            bits[i] ^= 1
+            _flip(i, bits, field, quadratic)
+
+
+def _flip(i: int, bits: list[int], field: list[int], quadratic: Matrix) -> None:
+    """Flip one bit and bring the fields of the others up to date."""
+    change = 1 - 2 * bits[i]
+    bits[i] ^= 1
+    for k, q in enumerate(quadratic[i]):
+        if q:
+            field[k] += change * q
 
 
 def _explored(flips: list[int], Q: list[list[int]], spend: Callable[[int], None]) -> tuple[list[int] | None, int]:
     """Flips that lower the energy, or None and the number of flip sets (none included) that leave it as it is."""
     count = 0
-    waiting: list[tuple[int, list[int], list[int], list[int]]] = [(0, [], list(range(len(flips))), flips)]
+    negative = [[min(0, q) for q in row] for row in Q]
+    shares = [sum(row) for row in negative]
+    waiting = [(0, [0] * 0, list(range(len(flips))), flips, shares)]
     while waiting:
-        excess, taken, free, cost = waiting.pop()
-        spend(len(free) ** 2 + 1)
-        least = {u: 2 * cost[u] + sum(min(0, Q[u][k]) for k in free) for u in free}
-        if 2 * excess + sum(min(0, value) for value in least.values()) > 0:
+        excess, taken, free, cost, shares = waiting.pop()
+        spend(len(free) + 1)
+        least = {u: 2 * cost[u] + shares[u] for u in free}
+        if 2 * excess + sum(value for value in least.values() if value < 0) > 0:
             continue
         if excess < 0:
             return taken, 0
@@ -68,7 +80,8 @@ def _explored(flips: list[int], Q: list[list[int]], spend: Callable[[int], None]
             count += excess == 0
             continue
         rest = [u for u in free if u != branch]
+        fewer = [share - part for share, part in zip(shares, negative[branch], strict=True)]
         after = [c + q for c, q in zip(cost, Q[branch], strict=True)]
-        waiting.append((excess, taken, rest, cost))
-        waiting.append((excess + cost[branch], [*taken, branch], rest, after))
+        waiting.append((excess, taken, rest, cost, fewer))
+        waiting.append((excess + cost[branch], [*taken, branch], rest, after, fewer))
     return None, count

@@ -220,15 +220,18 @@ def states_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
     pairs = {key: w for key, w in held.items() if len(key) == 2 and set(key) <= set(slot)}
     between = [[*sorted((slot[i], slot[k])), w] for (i, k), w in pairs.items()]
     values = values_of(proof.domain)
+    fields = [0] * len(members)
+    pulls: list[list[tuple[int, int]]] = [[] for _ in members]
+    for key, weight in held.items():
+        (inside, *others) = sorted(key, key=lambda position: position not in slot)
+        if not others:
+            fields[slot[inside]] += weight
+        elif others[0] in place:
+            pulls[slot[inside]].append((place[others[0]], weight))
     rows = []
     for t in settings(len(touched)):
-        fields = [0] * len(members)
-        for key, weight in held.items():
-            inside = [p for p in key if p in slot]
-            if len(inside) == 1:
-                out = [p for p in key if p in place]
-                fields[slot[inside[0]]] += weight * (values[t[place[out[0]]]] if out else 1)
-        rows.append(fields)
+        v = [values[bit] for bit in t]
+        rows.append([f + sum(w * v[j] for j, w in pull) for f, pull in zip(fields, pulls, strict=True)])
     counts = _checked(proof, {**step, "between": between}, rows)
     for key in held:
         del proof.left[key]
