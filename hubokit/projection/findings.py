@@ -51,6 +51,7 @@ class SharedStep:
 
     rules: list[Rules]
     shares: list[tuple[int, int, int, int, int]]
+    name: str = "shared bounds"
 
 
 @dataclass(frozen=True)

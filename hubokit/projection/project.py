@@ -20,7 +20,7 @@ from numpy.typing import NDArray
 from hubokit.errors import LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.states import States, from_bits, unpack
-from hubokit.projection.findings import Findings, Listed, SharedStep
+from hubokit.projection.findings import Findings, Listed
 from hubokit.projection.minimum import Minimiser
 from hubokit.projection.polynomial import Gathered
 from hubokit.projection.result import ClusterSummary, GapBound, least
@@ -249,7 +249,7 @@ def _summaries(findings: Findings) -> tuple[ClusterSummary, ...]:
         if isinstance(step, Listed):
             counted["single states", len(step.auxiliaries), len(step.touched)] += 1
         elif not isinstance(step, Settled):
-            method = "shared bounds" if isinstance(step, SharedStep) else step.name
+            method = step.name
             for one in step.rules:
                 counted[method, 1, one.g] += len(one)
     return tuple(ClusterSummary(method, number, a, d) for (method, a, d), number in sorted(counted.items()))
