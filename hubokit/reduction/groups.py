@@ -22,8 +22,8 @@ import numpy.typing as npt
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import INT64_BOUND, absolute_sum, common_resolution
 from hubokit.model.rewriting import affine_parts
-from hubokit.model.terms import Block, canonical_blocks
-from hubokit.reduction.gadgets.attach import Sketch
+from hubokit.model.terms import Block
+from hubokit.reduction.gadgets.attach import Sketch, sketch_of
 from hubokit.reduction.gadgets.base import Part
 from hubokit.reduction.gadgets.four_variables import PAIRS, UNIT, Forms, four_variable_forms
 
@@ -135,17 +135,7 @@ class GroupPiece:
         """What pricing needs to know."""
         first = int(self.members.max()) + 1 if len(self.members) else 0
         parts, _ = self.attach(first, unit, gap, resolution)
-        _, blocks = canonical_blocks(parts, self.domain)
-        own: list[Part] = []
-        couplers, sizes = 0, []
-        for block in blocks:
-            mixed = block.members[:, -1] >= first
-            own.append((block.members[~mixed].astype(np.int64), block.weights[~mixed]))
-            sizes.append(np.abs(block.weights[mixed]))
-            couplers += int(mixed.sum()) * (block.locality - 1)
-        low = min((int(array.min()) for array in sizes if len(array)), default=None)
-        high = max((int(array.max()) for array in sizes if len(array)), default=None)
-        return Sketch(own, couplers, low, high)
+        return sketch_of(parts, first, self.domain)
 
     def _lower_order(self) -> tuple[npt.NDArray[Any], npt.NDArray[Any]]:
         """Of the boolean terms in spins: coefficients at ``PAIRS`` and the constant, sixteenths of the resolution."""
@@ -187,7 +177,7 @@ class Grouping:
     taken: Taken
 
 
-def gathered(H: Hamiltonian) -> Grouping | str:
+def gathered(H: Hamiltonian) -> Grouping | str | None:
     """Gather cubic and quartic terms into groups of at least two terms.
 
     Parameters
@@ -196,8 +186,8 @@ def gathered(H: Hamiltonian) -> Grouping | str:
 
     Returns
     -------
-    Grouping or str
-        A sentence says why there is none: no two terms share enough, or a work limit.
+    Grouping, str or None
+        None when no two terms lie on the same four variables; a sentence where a work limit is in the way.
 
     Examples
     --------
@@ -218,7 +208,7 @@ def gathered(H: Hamiltonian) -> Grouping | str:
     fours = quartic.members.astype(np.int64)
     chosen, inside = _chosen_groups(table, fours, runs.candidates())
     if not len(chosen):
-        return "no two terms lie on the same four variables"
+        return None
     kind = object if object in (cubic.weights.dtype, quartic.weights.dtype) else np.int64
     functions = np.zeros((len(chosen), 5), kind)
     is_quartic = np.zeros(len(chosen), bool)

@@ -3,8 +3,8 @@
 Ways are
 
 - *term by term*: a family for each locality and sign. Every single family is priced, the families that are best for
-  one term alone, and, while the work limit allows, every mix;
-- *four-variable groups* (groups.py), with the best mix for what is left over;
+  one term alone, and every mix, or the best improved one locality at a time;
+- *four-variable groups* (groups.py) and *symmetric* parts (symmetric.py), with the best mix for what is left over;
 - *pair cover* (pair_cover.py): pairs chosen globally.
 
 Prices are exact counts and coefficients of the model that would come out, so the choice is never dearer in the
@@ -17,29 +17,40 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
 from fractions import Fraction
+from functools import cache
 from itertools import product
 from math import ceil, lcm, prod
 from typing import Any
 
+import numpy as np
+
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.trail import Trail
 from hubokit.reduction.assembly import Choice, Price, assembled, priced, term_pieces, trail_rows, work_of
+from hubokit.reduction.covers import pair_cover_reduction
 from hubokit.reduction.gadgets.attach import Piece
 from hubokit.reduction.gadgets.base import Family, Keep
 from hubokit.reduction.gadgets.table import FAMILIES, families_for, family, stand_in
 from hubokit.reduction.groups import METHOD as GROUPS
-from hubokit.reduction.groups import gathered, group_piece
+from hubokit.reduction.groups import Taken, gathered, group_piece
+from hubokit.reduction.pair_piece import METHOD as PAIR_COVER
+from hubokit.reduction.pair_piece import PairPiece, lonely_terms, without
+from hubokit.reduction.symmetric import LARGEST, symmetric_pieces
+from hubokit.reduction.symmetric import METHOD as SYMMETRIC
+from hubokit.reduction.tightening import tightened
 
-PAIR_COVER = "pair-cover"
 TERM_BY_TERM = "term-by-term"
 
-MIX_LIMIT = 2**24
-"""Largest work (members times mixes) for pricing every mix of families."""
+MIX_LIMIT = 27
+"""Most mixes of families that are all priced; beyond it the best is improved one locality at a time."""
 
-PAIR_COVER_LIMIT = 2**19
-"""Largest work for pricing a pair cover where auxiliaries are not what is preferred."""
+PAIR_COVER_LIMIT = 2**15
+"""Most members of terms for pricing a pair cover where auxiliaries are not what is preferred."""
 
-Built = tuple[Hamiltonian, tuple[str, ...], list[dict[str, Any]]]
+Built = tuple[Hamiltonian, tuple[str, ...], dict[str, Any]]
+
+RECORD_LIMIT = 2**17
+"""Most pairs that are listed in the trail one by one."""
 
 
 @dataclass(frozen=True)
@@ -51,7 +62,7 @@ class Plan:
     name : str
         For the trail.
     price : Price
-    build : callable () -> (model, auxiliaries, rows for the trail)
+    build : callable () -> (model, auxiliaries, parameters for the trail)
     """
 
     name: str
@@ -114,7 +125,7 @@ def methods() -> list[str]:
     >>> methods()[:2]
     ['auto', 'negative-monomial']
     """
-    return ["auto", *(one.name for one in FAMILIES), TERM_BY_TERM, GROUPS, PAIR_COVER]
+    return ["auto", *(one.name for one in FAMILIES), TERM_BY_TERM, GROUPS, SYMMETRIC, PAIR_COVER]
 
 
 def planned(question: Question, method: str = "auto") -> Planned:
@@ -133,10 +144,13 @@ def planned(question: Question, method: str = "auto") -> Planned:
         plans += term_plans(question, others)
     if method in ("auto", GROUPS):
         plans += _noted(group_plans(question), GROUPS, others)
+    if method in ("auto", SYMMETRIC):
+        largest = LARGEST if method == "auto" else question.H.size
+        plans += symmetric_plans(question, largest)
     if method in ("auto", PAIR_COVER):
         plans += _noted(pair_plans(question, method), PAIR_COVER, others)
     if not plans:
-        name = method if method not in (GROUPS, PAIR_COVER) else ""
+        name = method if method not in (GROUPS, SYMMETRIC, PAIR_COVER) else ""
         if name:
             family(name)
         plans = [_best_gap(question, single_choice(question, name), name or TERM_BY_TERM)]
@@ -166,37 +180,44 @@ def single_choice(question: Question, name: str, prefer: str | None = None) -> C
     """The named family wherever it applies; elsewhere the family that is best for one term alone."""
     choice = {}
     for (locality, sign), families in options_of(question.H).items():
-        ranked = sorted(
-            families, key=lambda one: _alone(one, locality, sign, question.keep, prefer or question.prefer)
-        )
-        choice[locality, sign] = next((one.name for one in families if one.name == name), ranked[0].name)
+        best = best_alone(question.H.domain, locality, sign, question.keep, prefer or question.prefer)
+        choice[locality, sign] = name if name in [one.name for one in families] else best
     return choice
 
 
-def _alone(one: Family, locality: int, sign: int, keep: Keep, prefer: str) -> tuple[Any, ...]:
-    """How a family compares for one term of weight 1, with gap 1 for one-to-one and 0 otherwise."""
-    shape = stand_in(one.name, locality, sign, keep)
-    found = shape.coefficients(Fraction(1), Fraction(1 if keep == "one-to-one" else 0))
-    sizes = [abs(value) for item, value in found.items() if item]
-    price = Price(shape.auxiliaries, shape.couplers, max(sizes) / min(sizes))
-    return (*price.figure(prefer), FAMILIES.index(one))
+@cache
+def best_alone(domain: str, locality: int, sign: int, keep: Keep, prefer: str) -> str:
+    """The family that is best for one term of weight 1, with gap 1 for one-to-one and 0 otherwise.
+
+    Examples
+    --------
+    >>> best_alone("boolean", 3, 1, "one-to-one", "couplers")
+    'flipped-literals'
+    """
+
+    def figure(one: Family) -> tuple[Any, ...]:
+        shape = stand_in(one.name, locality, sign, keep)
+        found = shape.coefficients(Fraction(1), Fraction(1 if keep == "one-to-one" else 0))
+        sizes = [abs(value) for item, value in found.items() if item]
+        return Price(shape.auxiliaries, shape.couplers, max(sizes) / min(sizes)).figure(prefer)
+
+    return min(families_for(domain, locality, sign), key=figure).name
 
 
 def term_choices(question: Question, notes: list[dict[str, str]]) -> list[tuple[str, Choice]]:
-    """Single families, the best for one term alone, and every mix while the work limit allows."""
+    """Single families, the best for one term alone, and every mix where there are few."""
     options = options_of(question.H)
     named = {one.name for families in options.values() for one in families}
     found = [(one.name, single_choice(question, one.name)) for one in FAMILIES if one.name in named]
     found += [(TERM_BY_TERM, single_choice(question, "", prefer)) for prefer in ("auxiliaries", "range", "couplers")]
     mixes = prod(len(families) for families in options.values())
-    work = mixes * work_of(question.H)
-    if work <= MIX_LIMIT:
-        for mix in product(*options.values()):
-            names = [one.name for one in mix]
-            found.append((TERM_BY_TERM, dict(zip(options, names, strict=True))))
-    else:
-        reason = f"{mixes} mixes take {work:,} steps; at most {MIX_LIMIT:,} are taken"
+    if mixes > MIX_LIMIT:
+        reason = f"there are {mixes:,}, more than {MIX_LIMIT}; the best was improved one locality at a time instead"
         notes.append({"method": "every mix of families", "reason": reason})
+        return found
+    for mix in product(*options.values()):
+        names = [one.name for one in mix]
+        found.append((TERM_BY_TERM, dict(zip(options, names, strict=True))))
     return found
 
 
@@ -211,8 +232,24 @@ def term_plans(question: Question, notes: list[dict[str, str]]) -> list[Plan]:
         plan = Plan(name, prices[key].price, prices[key].build)
         if name not in best or plan.price.figure(question.prefer) < best[name].price.figure(question.prefer):
             best[name] = plan
+    options = options_of(question.H)
+    if prod(len(families) for families in options.values()) > MIX_LIMIT:
+        start = min(prices.values(), key=lambda plan: plan.price.figure(question.prefer))
+        choice = dict(next(key for key, plan in prices.items() if plan is start))
+        best[TERM_BY_TERM] = _improved(question, choice, start)
     # The mix stands first: where it is no better than a single family, the two are the same model.
     return sorted(best.values(), key=lambda plan: plan.name != TERM_BY_TERM)
+
+
+def _improved(question: Question, choice: dict[tuple[int, int], str], plan: Plan) -> Plan:
+    """The plan after one pass that tries every other family for one (locality, sign) after the other."""
+    for key, families in options_of(question.H).items():
+        for one in families:
+            if one.name != choice[key]:
+                other = _best_gap(question, {**choice, key: one.name}, TERM_BY_TERM)
+                if other.price.figure(question.prefer) < plan.price.figure(question.prefer):
+                    choice, plan = {**choice, key: one.name}, other
+    return Plan(TERM_BY_TERM, plan.price, plan.build)
 
 
 def _best_gap(question: Question, choice: Choice, name: str) -> Plan:
@@ -241,25 +278,52 @@ def _term_plan(question: Question, choice: Choice, name: str) -> Plan:
 def _plan(question: Question, pieces: Sequence[Piece], name: str) -> Plan:
     def build() -> Built:
         model, auxiliaries = assembled(question.H, pieces, question.gap)
-        return model, auxiliaries, trail_rows(pieces)
+        return model, auxiliaries, {"methods": trail_rows(pieces), **_records(pieces, auxiliaries)}
 
     return Plan(name, priced(question.H, pieces, question.gap), build)
 
 
+def _records(pieces: Sequence[Piece], auxiliaries: tuple[str, ...]) -> dict[str, Any]:
+    """What each pair variable stands for, so that lifting needs no search."""
+    first = 0
+    found: dict[str, Any] = {}
+    for piece in pieces:
+        names = auxiliaries[first : first + piece.auxiliaries]
+        first += piece.auxiliaries
+        if isinstance(piece, PairPiece):
+            found["pair cover"] = (
+                piece.plan.record(names)
+                if len(names) <= RECORD_LIMIT
+                else {"pairs": f"{len(names):,}, too many to list", "found by": piece.plan.how}
+            )
+    return found
+
+
 def group_plans(question: Question) -> list[Plan] | str:
-    """Four-variable groups with the best of three mixes for what is left over; or why there is none."""
-    if question.H.locality < 3:
-        return "the model is quadratic"
+    """Four-variable groups with the best of three mixes for what is left over; or the work limit in the way."""
     grouping = gathered(question.H)
-    if isinstance(grouping, str):
-        return grouping
+    if grouping is None or isinstance(grouping, str):
+        return grouping or []
     piece, taken = group_piece(question.H, grouping, question.gap)
     if not piece.auxiliaries:
-        return "no group reaches the auxiliary gap asked for"
+        return []
+    return _with_rest(question, [piece], taken, GROUPS)
+
+
+def symmetric_plans(question: Question, largest: int) -> list[Plan]:
+    """Symmetric parts as functions of a count, with the best of three mixes for the rest."""
+    pieces, taken = symmetric_pieces(question.H, question.gap, largest)
+    if not pieces:
+        return []
+    return _with_rest(question, pieces, taken, SYMMETRIC)
+
+
+def _with_rest(question: Question, pieces: Sequence[Piece], taken: Taken, name: str) -> list[Plan]:
+    """The pieces with the best of three mixes for the terms that they leave over."""
     plans = []
     for choice in _distinct(single_choice(question, "", prefer) for prefer in ("auxiliaries", "range", "couplers")):
         rest = term_pieces(question.H, choice, question.gap, question.keep, taken)
-        plans.append(_plan(question, [piece, *rest], GROUPS))
+        plans.append(_plan(question, [*pieces, *rest], name))
     return [min(plans, key=lambda plan: plan.price.figure(question.prefer))]
 
 
@@ -272,16 +336,43 @@ def _distinct(choices: Any) -> list[Choice]:
 
 
 def pair_plans(question: Question, method: str) -> list[Plan] | str:
-    """The pair cover, priced; or why it is not."""
+    """Pair covers of all terms and of the short ones, with gadgets for the rest; or the work limit in the way."""
     H = question.H
     if H.locality < 3:
-        return "the model is quadratic"
+        return []
     work = work_of(H)
     if method != PAIR_COVER and question.prefer != "auxiliaries" and work > PAIR_COVER_LIMIT:
-        return (
-            f"{work:,} members to cover; at most {PAIR_COVER_LIMIT:,} are looked at unless auxiliaries are preferred"
+        return f"{work:,} members to cover; at most {PAIR_COVER_LIMIT:,} unless auxiliaries are preferred"
+    longer = {block.locality: np.ones(len(block), bool) for block in H.blocks if block.locality > 4}
+    plans = []
+    for left_out in ({}, longer) if longer else ({},):
+        plans += _covers(question, left_out, work <= PAIR_COVER_LIMIT)
+    return [min(plans, key=lambda plan: plan.price.figure(question.prefer))]
+
+
+def _covers(question: Question, left_out: Taken, every: bool) -> list[Plan]:
+    """The cover of all terms but those left out, and what becomes of it when lonely terms are left out too.
+
+    Where `every` is False only the last is priced.
+    """
+    H = question.H
+    plans: list[Plan] = []
+    for last in (False, False, True):
+        cover = pair_cover_reduction(
+            H,
+            keep=question.keep,
+            auxiliary_gap=question.gap or None,
+            seed=question.seed,
+            only=without(H, left_out),
         )
-    return "not at hand"
+        lonely = lonely_terms(cover)
+        done = last or not any(mask.any() for mask in lonely.values())
+        if done or every:
+            plans += _with_rest(question, [PairPiece(tightened(cover))], dict(cover.covered), PAIR_COVER)
+        if done:
+            break
+        left_out = {k: mask | left_out.get(k, np.zeros(len(mask), bool)) for k, mask in lonely.items()}
+    return plans
 
 
 def plan_table(trail: Trail) -> list[dict[str, Any]]:

@@ -73,13 +73,13 @@ def reduce(
         change = {"from": H.domain, "to": domain, "convention": H.convention}
         steps.append(Step("domain", H.digest, parameters=change))
     plan = planned(Question(working, keep, prefer, gap, seed), method)  # type: ignore[arg-type]
-    model, auxiliaries, rows = plan.chosen.build()
+    model, auxiliaries, made = plan.chosen.build()
     parameters: dict[str, Any] = {
         "keep": keep,
         "prefer": prefer,
         "auxiliary gap": format_fraction(gap),
         "seed": seed,
-        "methods": rows,
+        **made,
         "plan": plan.as_json(),
     }
     steps.append(Step("reduction", working.digest, auxiliaries=auxiliaries, parameters=parameters))

@@ -49,7 +49,7 @@ def test_every_term_is_served_once_and_only_terms_that_exist() -> None:
             terms[tuple(sorted(chance.sample(labels, chance.choice([2, 3, 3, 3, 4]))))] = chance.choice([-2, 1, 3])
         H = Hamiltonian(terms, "spin", labels=labels)
         grouping = gathered(H)
-        if isinstance(grouping, str):
+        if grouping is None or isinstance(grouping, str):
             continue
         found: dict[tuple[str, ...], int] = {}
         for members, function in zip(grouping.members.tolist(), grouping.functions.tolist(), strict=True):

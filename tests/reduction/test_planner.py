@@ -11,7 +11,16 @@ import pytest
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.reduction.gadgets.table import FAMILIES
-from hubokit.reduction.planner import GROUPS, MIX_LIMIT, PAIR_COVER, TERM_BY_TERM, methods, plan_table
+from hubokit.reduction.planner import (
+    GROUPS,
+    MIX_LIMIT,
+    PAIR_COVER,
+    PAIR_COVER_LIMIT,
+    SYMMETRIC,
+    TERM_BY_TERM,
+    methods,
+    plan_table,
+)
 from hubokit.reduction.reduce import PREFERENCES, reduce
 
 
@@ -52,7 +61,7 @@ FIGURES = {"auxiliaries": "auxiliaries", "range": "coefficient_ratio", "couplers
 def test_the_choice_never_costs_more_than_the_best_single_family(case: int | str, prefer: str) -> None:
     H = random_model(case) if isinstance(case, int) else STRUCTURED[case]
     chosen = getattr(reduce(H, prefer=prefer).costs, FIGURES[prefer])
-    for name in (*(one.name for one in FAMILIES), TERM_BY_TERM, GROUPS):
+    for name in (*(one.name for one in FAMILIES), TERM_BY_TERM, GROUPS, SYMMETRIC, PAIR_COVER):
         assert chosen <= getattr(reduce(H, method=name, prefer=prefer).costs, FIGURES[prefer])
 
 
@@ -89,15 +98,18 @@ def test_positive_cubic_terms_get_flipped_literals_when_couplers_are_dear() -> N
 
 def test_what_a_work_limit_kept_from_being_priced_is_named() -> None:
     chance = np.random.default_rng(7)
-    parts = [
-        np.sort(chance.permuted(np.tile(np.arange(40), (20000, 1)), axis=1)[:, :k], axis=1) for k in (5, 6, 7, 8)
-    ]
-    weights = [chance.choice([-1, 1], len(part)) for part in parts]
-    H = Hamiltonian.from_arrays(parts, weights, "boolean")
-    rows = plan_table(reduce(H, prefer="range", method=TERM_BY_TERM).trail)
-    note = next(row for row in rows if row["status"] == "not priced")
-    assert note["plan"] == "every mix of families"
-    assert f"{MIX_LIMIT:,}" in note["reason"]
+    rows = np.unique(np.sort(chance.permuted(np.tile(np.arange(40), (9000, 1)), axis=1)[:, :4], axis=1), axis=0)
+    H = Hamiltonian.from_arrays([rows, [[0, 1, 2, 3, 4]]], [chance.choice([-1, 1], len(rows)), [1]], "boolean")
+    notes = {row["plan"]: row["reason"] for row in plan_table(reduce(H, prefer="range").trail) if row["reason"]}
+    assert f"{PAIR_COVER_LIMIT:,}" in notes[PAIR_COVER]
+
+
+def test_many_mixes_are_not_all_priced_and_the_trail_says_so() -> None:
+    terms = {tuple("abcdefg"[:k]): sign * k for k in range(3, 8) for sign in (1,)}
+    terms |= {tuple("hijklmn"[:k]): -k for k in range(3, 8)}
+    rows = plan_table(reduce(Hamiltonian(terms, "boolean"), prefer="range").trail)
+    note = next(row for row in rows if row["plan"] == "every mix of families")
+    assert f"more than {MIX_LIMIT}" in note["reason"]
 
 
 def test_every_method_name_is_taken_and_others_are_refused() -> None:

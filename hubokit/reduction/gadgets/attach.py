@@ -11,6 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from hubokit.model.numbers import INT64_BOUND, absolute_sum, common_resolution
+from hubokit.model.terms import canonical_blocks
 from hubokit.reduction.gadgets.base import Part, StandIn
 
 
@@ -116,15 +117,15 @@ class TermPiece:
 
     def resolution(self, unit: Fraction, gap: Fraction) -> Fraction:
         """A rational of which every coefficient is a whole multiple."""
-        values = [unit * value for value in self.stand_in.by_weight.values()]
-        return common_resolution([unit, *values, *(gap * value for value in self.stand_in.by_gap.values())])
+        slope, step = self.stand_in.grids
+        return common_resolution([unit, unit * slope, *([gap * step] if self.stand_in.by_gap else [])])
 
     def attach(self, first: int, unit: Fraction, gap: Fraction, resolution: Fraction) -> tuple[list[Part], int]:
         """The quadratic products that stand for the terms; term t gets ``first + a*t`` and the next a - 1."""
         shape, count = self.stand_in, len(self.sizes)
         added = first + shape.auxiliaries * np.arange(count, dtype=np.int64)[:, None] + np.arange(shape.auxiliaries)
         columns = np.concatenate([self.members.astype(np.int64), added], axis=1)
-        slopes, steps = self._whole_coefficients(unit, gap, resolution)
+        slopes, steps = self.stand_in.whole(unit / resolution, gap / resolution)
         sizes = self._safe_sizes(slopes, steps)
         total = absolute_sum(sizes)
         constant = slopes.get((), 0) * total + steps.get((), 0) * count
@@ -138,7 +139,7 @@ class TermPiece:
     def sketch(self, unit: Fraction, gap: Fraction, resolution: Fraction) -> Sketch:
         """What pricing needs to know; the auxiliaries' coefficients are looked at once for each distinct weight."""
         shape = self.stand_in
-        slopes, steps = self._whole_coefficients(unit, gap, resolution)
+        slopes, steps = self.stand_in.whole(unit / resolution, gap / resolution)
         sizes = self._safe_sizes(slopes, steps)
         parts: list[Part] = []
         mixed = []
@@ -162,20 +163,26 @@ class TermPiece:
             couplers -= sum(int((sizes * slopes[item] + steps[item] == 0).sum()) for item in mixed if len(item) == 2)
         return Sketch(parts, couplers, low, high)
 
-    def _whole_coefficients(
-        self, unit: Fraction, gap: Fraction, resolution: Fraction
-    ) -> tuple[dict[tuple[int, ...], int], dict[tuple[int, ...], int]]:
-        """For each product the whole slope in the size and the whole step, in units of `resolution`."""
-        shape = self.stand_in
-        slopes = {item: _whole(unit * shape.by_weight.get(item, Fraction(0)), resolution) for item in shape.products}
-        steps = {item: _whole(gap * shape.by_gap.get(item, Fraction(0)), resolution) for item in shape.products}
-        return slopes, steps
-
     def _safe_sizes(self, slopes: dict[tuple[int, ...], int], steps: dict[tuple[int, ...], int]) -> npt.NDArray[Any]:
         """The sizes as objects where some coefficient might not fit int64."""
         total, count = absolute_sum(self.sizes), len(self.sizes)
         bound = sum(abs(slopes[item]) * total + abs(steps[item]) * count for item in slopes)
         return self.sizes.astype(object) if bound >= INT64_BOUND else self.sizes
+
+
+def sketch_of(parts: list[Part], first: int, domain: str) -> Sketch:
+    """The sketch of written products; positions from `first` on are auxiliaries."""
+    _, blocks = canonical_blocks(parts, domain)
+    own: list[Part] = []
+    couplers, sizes = 0, []
+    for block in blocks:
+        mixed = block.members[:, -1] >= first
+        own.append((block.members[~mixed].astype(np.int64), block.weights[~mixed]))
+        sizes.append(np.abs(block.weights[mixed]))
+        couplers += int(mixed.sum()) * (block.locality - 1)
+    low = min((int(array.min()) for array in sizes if len(array)), default=None)
+    high = max((int(array.max()) for array in sizes if len(array)), default=None)
+    return Sketch(own, couplers, low, high)
 
 
 def shared_resolution(pieces: Iterable[Piece], unit: Fraction, gap: Fraction) -> Fraction:
@@ -203,10 +210,3 @@ def _products(
     members = np.concatenate([columns[:, list(item)] for item in chosen])
     weights = np.concatenate([sizes * slopes[item] + steps[item] for item in chosen])
     return members, weights
-
-
-def _whole(value: Fraction, resolution: Fraction) -> int:
-    ratio = value / resolution
-    if ratio.denominator != 1:
-        raise AssertionError(f"{value} is no multiple of {resolution}")
-    return ratio.numerator

@@ -17,16 +17,23 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import cached_property
 from itertools import product
 from typing import Any, Literal
 
 import numpy as np
 import numpy.typing as npt
 
+from hubokit.model.numbers import common_resolution
+
 Domain = Literal["spin", "boolean"]
 Keep = Literal["ground-states", "energies", "one-to-one"]
 Products = Mapping[tuple[int, ...], Fraction]
 Part = tuple[npt.NDArray[np.int64], npt.NDArray[Any]]
+
+PROVABLE = 16
+"""Largest locality of families whose auxiliaries, projected one cluster at a time, give all 2^k products of their
+members on the way to one: beyond it a reduction could not be proved at any size."""
 
 
 @dataclass(frozen=True)
@@ -62,7 +69,7 @@ class StandIn:
     tie_free: bool
     reach: Fraction | None = None
 
-    @property
+    @cached_property
     def products(self) -> list[tuple[int, ...]]:
         """Every product that has a coefficient, shorter ones first."""
         return sorted({*self.by_weight, *self.by_gap}, key=lambda item: (len(item), item))
@@ -71,6 +78,35 @@ class StandIn:
     def couplers(self) -> int:
         """Number of products of two."""
         return sum(len(item) == 2 for item in self.products)
+
+    @cached_property
+    def grids(self) -> tuple[Fraction, Fraction]:
+        """Common resolutions of `by_weight` and of `by_gap`."""
+        return common_resolution(self.by_weight.values()), common_resolution(self.by_gap.values())
+
+    def whole(self, unit: Fraction, gap: Fraction) -> tuple[dict[tuple[int, ...], int], dict[tuple[int, ...], int]]:
+        """For each product the slope in whole weights of that unit, and the step, in units that `grids` allows.
+
+        ``unit`` and ``gap`` are given in units of the coefficients wanted.
+        """
+        slope, step = self.grids
+        by_weight, by_gap = self._in_grids
+        factor, shift = unit * slope, gap * step if self.by_gap else Fraction(0)
+        if factor.denominator != 1 or shift.denominator != 1:
+            raise AssertionError(f"{unit} and {gap} are no multiples of the grid")
+        return (
+            {item: value * factor.numerator for item, value in by_weight.items()},
+            {item: value * shift.numerator for item, value in by_gap.items()},
+        )
+
+    @cached_property
+    def _in_grids(self) -> tuple[dict[tuple[int, ...], int], dict[tuple[int, ...], int]]:
+        """Both maps over every product, as whole multiples of their grids."""
+        slope, step = self.grids
+        return (
+            {item: int(self.by_weight.get(item, Fraction(0)) / slope) for item in self.products},
+            {item: int(self.by_gap.get(item, Fraction(0)) / step) for item in self.products},
+        )
 
     def coefficients(self, size: Fraction, gap: Fraction) -> dict[tuple[int, ...], Fraction]:
         """Coefficients for a term of weight size |w| and auxiliary gap gamma; zeros left out."""

@@ -21,7 +21,7 @@ from __future__ import annotations
 from fractions import Fraction
 from itertools import combinations
 
-from hubokit.reduction.gadgets.base import Family, Keep, Polynomial, StandIn
+from hubokit.reduction.gadgets.base import PROVABLE, Family, Keep, Polynomial, StandIn
 
 
 def positive_monomial(locality: int, sign: int = 1, keep: Keep = "one-to-one") -> StandIn:
@@ -65,7 +65,7 @@ def positive_monomial(locality: int, sign: int = 1, keep: Keep = "one-to-one") -
 FAMILY = Family(
     "positive-monomial",
     "boolean",
-    lambda locality, sign: locality >= 3 and sign > 0,
+    lambda locality, sign: 3 <= locality <= PROVABLE and sign > 0,
     positive_monomial,
     "Ishikawa 2011",
 )

@@ -17,7 +17,7 @@ from __future__ import annotations
 
 from fractions import Fraction
 
-from hubokit.reduction.gadgets.base import Family, Keep, StandIn, joined, reweighted
+from hubokit.reduction.gadgets.base import PROVABLE, Family, Keep, StandIn, joined, reweighted
 from hubokit.reduction.gadgets.spin_product import spin_product
 
 
@@ -65,7 +65,7 @@ def spin_split(locality: int, sign: int, keep: Keep = "one-to-one") -> StandIn:
 FAMILY = Family(
     "spin-split",
     "spin",
-    lambda locality, sign: locality >= 5,
+    lambda locality, sign: 5 <= locality <= PROVABLE,
     spin_split,
     "derived here; Dattani 2019",
 )
