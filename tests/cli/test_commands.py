@@ -350,3 +350,19 @@ def test_spectrum_looks_around_given_states(hubokit: Any, fixtures: Path) -> Non
     assert document["figures"]["highest-target-energy"] == "0"
     assert "distance" in hubokit(*arguments).out
     assert hubokit(*arguments, "--density").code == 2
+
+
+def test_a_source_that_was_left_out_is_found_beside_or_named(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:
+    source = tmp_path / "design.json"
+    source.write_bytes((fixtures / "elsewhere-source.json").read_bytes())
+    reduced = tmp_path / "reduced.json"
+    assert hubokit("reduce", source, "-o", reduced, "--detached").code == 0
+    assert hubokit("check", reduced).code == 0
+    moved = tmp_path / "elsewhere.json"
+    source.rename(moved)
+    alone = hubokit("check", reduced)
+    assert alone.code == 2
+    assert "--source" in alone.err
+    assert "design.json" in alone.err
+    assert hubokit("check", reduced, "--source", moved).code == 0
+    assert hubokit("check", reduced, "--source", fixtures / "greenhouse.json").code == 2
