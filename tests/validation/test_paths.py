@@ -1,4 +1,4 @@
-"""The same mutants with the small-model paths switched off, so that the paths of large models are held to brute force."""
+"""Mutants with the small-model paths switched off: the paths of large models are held to brute force."""
 
 import importlib.util
 import random
