@@ -17,11 +17,17 @@ from hubokit.exchange.files import refuse_existing
 from hubokit.exchange.formats import JSON, Format, format_of, write
 from hubokit.model.hamiltonian import Hamiltonian
 
+WHOLE_WEIGHTS = ("opb", "wcnf", "cnf")
+"""Formats whose weights are whole numbers without a constant."""
+
 
 def command(
     source: Annotated[Path, typer.Argument(metavar="IN", help="A file in any format that hubokit reads.")],
     out: Annotated[Path, typer.Argument(metavar="OUT", help="The file to write; its suffix says the format.")],
     file_format: options.Format = None,
+    source_format: Annotated[
+        str | None, typer.Option("--from", metavar="NAME", help="Format of IN; by default from its suffix.")
+    ] = None,
     domain: options.DomainOption = None,
     force: options.Force = False,
     as_json: options.Json = False,
@@ -29,10 +35,13 @@ def command(
     """Write a model in another format, or in the other domain, and say what changed on the way."""
     entry = format_of(out, file_format)
     refuse_existing(out, force=force)
-    document = load_document(source)
+    document = load_document(source, file_format=source_format)
     changed, changes = _in_domain(document, domain, source)
+    names = out.with_name(f"{out.name.partition('.')[0]}.names.json")
+    before = _written_at(names)
     write(changed, out, file_format, force=force)
-    changes += [*_remarks(document), *_changes(changed, entry)]
+    beside = None if _written_at(names) == before else names
+    changes += [*_remarks(document), *_changes(changed, entry, beside)]
     if as_json:
         parts = {
             "source": summary.model_part(document.model, str(source), len(document.auxiliaries)),
@@ -45,6 +54,11 @@ def command(
     about = [*describing.model_fields(changed.model, len(changed.auxiliaries)), ("format", entry.name)]
     about += [("size", size_of(out.stat().st_size))] + [("changed", change) for change in changes]
     print(section(f"CONVERTED  {source} to {out}", fields(about)), end="")
+
+
+def _written_at(path: Path) -> int | None:
+    """When a file was written last, in nanoseconds; None where there is none."""
+    return path.stat().st_mtime_ns if path.exists() else None
 
 
 def _in_domain(document: Document, domain: options.Domain | None, file: Path) -> tuple[Document, list[str]]:
@@ -63,7 +77,7 @@ def _remarks(document: Document) -> list[str]:
     return [str(remark) for remark in document.notes.get("reading", ())]
 
 
-def _changes(document: Document, entry: Format) -> list[str]:
+def _changes(document: Document, entry: Format, names: Path | None) -> list[str]:
     """What the format says in another way, or not at all."""
     if entry.name == JSON:
         return []
@@ -72,10 +86,13 @@ def _changes(document: Document, entry: Format) -> list[str]:
     if entry.domain not in ("any", model.domain):
         model = model.in_domain(entry.domain)
         changes.append(f"written in {entry.domain} variables by {describing.rule(model)}; reading undoes it")
-    if model.resolution != 1:
-        changes.append(f"weights are whole multiples of {number(model.resolution)}; a comment says so")
-    if model.constant:
-        changes.append(f"the constant {number(model.constant)} may stand in a comment")
+    if entry.name in WHOLE_WEIGHTS and (model.resolution != 1 or model.constant):
+        changes.append(
+            f"weights stand in units of {number(model.resolution)} and the constant {number(model.constant)} apart; "
+            "comments say both, and reading undoes it"
+        )
+    if names is not None:
+        changes.append(f"variables are numbered; their names stand in {names.name}")
     beside = [name for name in ("intent", "notes", "extensions") if getattr(document, name)]
     if not isinstance(document.thing, Hamiltonian):
         beside = ["the source", "the trail", *beside]

@@ -35,12 +35,12 @@ class Elsewhere:
         return any(part is not None for part in (self.auxiliaries, self.origin, self.scale, self.shift))
 
 
-def load_document(path: Path, source: Hamiltonian | None = None) -> Document:
+def load_document(path: Path, source: Hamiltonian | None = None, file_format: str | None = None) -> Document:
     """What a file holds, with everything beside it where it is a JSON document.
 
     Where a trail names the file of its source and that file lies beside, it is read too; its digest must fit.
     """
-    document = read_document(path, source)
+    document = read_document(path, source, file_format)
     name = document.trail[0].get("file") if document.trail else None
     if source is None and isinstance(name, str) and Path(name).name == name and (path.parent / name).is_file():
         return read_document(path, load_model(path.parent / name))

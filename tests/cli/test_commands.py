@@ -366,3 +366,24 @@ def test_a_source_that_was_left_out_is_found_beside_or_named(hubokit: Any, fixtu
     assert "design.json" in alone.err
     assert hubokit("check", reduced, "--source", moved).code == 0
     assert hubokit("check", reduced, "--source", fixtures / "greenhouse.json").code == 2
+
+
+def test_convert_says_what_changed_on_the_way(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:
+    greenhouse = fixtures / "greenhouse.json"
+    to_opb = of_schema("summary", hubokit("convert", greenhouse, tmp_path / "a.opb", "--json").out)
+    assert any("constant 4" in change for change in to_opb["changes"])
+    assert any("notes" in change for change in to_opb["changes"])
+    as_spins = of_schema(
+        "summary", hubokit("convert", greenhouse, tmp_path / "b.json", "--domain", "spin", "--json").out
+    )
+    assert as_spins["model"]["domain"] == "spin"
+    assert any("boolean became spin" in change for change in as_spins["changes"])
+    assert hk.read(tmp_path / "b.json") == hk.read(greenhouse).in_domain("spin")
+
+
+def test_convert_reads_a_file_whose_suffix_says_nothing(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:
+    bare = tmp_path / "formula.txt"
+    bare.write_bytes((fixtures / "satisfiable-20.cnf").read_bytes())
+    assert hubokit("convert", bare, tmp_path / "a.json").code == 2
+    assert hubokit("convert", bare, tmp_path / "a.json", "--from", "cnf").code == 0
+    assert hk.read(tmp_path / "a.json") == hk.read(fixtures / "satisfiable-20.cnf")
