@@ -15,10 +15,14 @@ from hubokit.errors import InputError
 from hubokit.exchange.documents import Document
 from hubokit.exchange.files import refuse_existing
 from hubokit.exchange.formats import JSON, Format, format_of, write
+from hubokit.exchange.header import sidecar_path
 from hubokit.model.hamiltonian import Hamiltonian
 
 WHOLE_WEIGHTS = ("opb", "wcnf", "cnf")
 """Formats whose weights are whole numbers without a constant."""
+
+NUMBERED = ("mps", "lp")
+"""Formats that number the variables and keep the names in a file beside."""
 
 
 def command(
@@ -37,11 +41,8 @@ def command(
     refuse_existing(out, force=force)
     document = load_document(source, file_format=source_format)
     changed, changes = _in_domain(document, domain, source)
-    names = out.with_name(f"{out.name.partition('.')[0]}.names.json")
-    before = _written_at(names)
     write(changed, out, file_format, force=force)
-    beside = None if _written_at(names) == before else names
-    changes += [*_remarks(document), *_changes(changed, entry, beside)]
+    changes += [*_remarks(document), *_changes(changed, entry, out)]
     if as_json:
         parts = {
             "source": summary.model_part(document.model, str(source), len(document.auxiliaries)),
@@ -54,11 +55,6 @@ def command(
     about = [*describing.model_fields(changed.model, len(changed.auxiliaries)), ("format", entry.name)]
     about += [("size", size_of(out.stat().st_size))] + [("changed", change) for change in changes]
     print(section(f"CONVERTED  {source} to {out}", fields(about)), end="")
-
-
-def _written_at(path: Path) -> int | None:
-    """When a file was written last, in nanoseconds; None where there is none."""
-    return path.stat().st_mtime_ns if path.exists() else None
 
 
 def _in_domain(document: Document, domain: options.Domain | None, file: Path) -> tuple[Document, list[str]]:
@@ -77,7 +73,7 @@ def _remarks(document: Document) -> list[str]:
     return [str(remark) for remark in document.notes.get("reading", ())]
 
 
-def _changes(document: Document, entry: Format, names: Path | None) -> list[str]:
+def _changes(document: Document, entry: Format, out: Path) -> list[str]:
     """What the format says in another way, or not at all."""
     if entry.name == JSON:
         return []
@@ -91,8 +87,8 @@ def _changes(document: Document, entry: Format, names: Path | None) -> list[str]
             f"weights stand in units of {number(model.resolution)} and the constant {number(model.constant)} apart; "
             "comments say both, and reading undoes it"
         )
-    if names is not None:
-        changes.append(f"variables are numbered; their names stand in {names.name}")
+    if entry.name in NUMBERED:
+        changes.append(f"variables are numbered; their names stand in {sidecar_path(out).name}")
     beside = [name for name in ("intent", "notes", "extensions") if getattr(document, name)]
     if not isinstance(document.thing, Hamiltonian):
         beside = ["the source", "the trail", *beside]
