@@ -138,7 +138,7 @@ def _classified(found: Words) -> tuple[NDArray[np.uint8], NDArray[np.int64], dic
         chosen = np.flatnonzero(kind == meaning)
         literals = found.part(chosen)
         if meaning == NEGATIVE and len(chosen):
-            bare = (literals.end - literals.start < 3) | (found.chunk.data[literals.start + 1] != ord("x"))
+            bare = (literals.end - literals.start < 3) | (literals.inside(1).first != ord("x"))
             if bare.any():
                 raise _stranger(found, int(chosen[bare.argmax()]))
         value[chosen] = sign * _variables(literals, skip)

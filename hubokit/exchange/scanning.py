@@ -136,8 +136,8 @@ class Words:
 
     @property
     def first(self) -> NDArray[np.uint8]:
-        """First byte of each word."""
-        return self.chunk.data[self.start]
+        """First byte of each word (of an empty word whatever follows it)."""
+        return self.chunk.data[np.minimum(self.start, len(self.chunk.data) - 1)]
 
     def text(self, index: int) -> str:
         """A word as text; bytes that are not UTF-8 are replaced."""
