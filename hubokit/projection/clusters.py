@@ -235,13 +235,24 @@ def shapes(batch: Batch) -> tuple[Batch, Integers, Positions]:
     factors = np.gcd.reduce(rows, axis=1) if rows.shape[1] else np.ones(len(batch), rows.dtype)
     factors = np.maximum(np.abs(factors), 1)
     rows = rows // factors[:, None]
-    if rows.dtype == object:
-        seen: dict[tuple[int, ...], int] = {}
-        shape = np.array([seen.setdefault(tuple(row), len(seen)) for row in rows.tolist()], np.int64)
-        first = np.zeros(len(seen), np.int64)
-        first[shape[::-1]] = np.arange(len(shape))[::-1]
-    else:
-        raw = np.ascontiguousarray(rows).view(np.dtype((np.void, rows.itemsize * rows.shape[1]))).ravel()
-        _, first, shape = np.unique(raw, return_index=True, return_inverse=True)
+    first, shape = _alike(rows)
     distinct = batch.taken(first).divided(factors[first])
-    return distinct, factors, shape.astype(np.int64)
+    return distinct, factors, shape
+
+
+def _alike(rows: Integers) -> tuple[Positions, Positions]:
+    """First row of each kind, and the kind of each row."""
+    if rows.dtype != object:
+        # Equal rows have equal sums; that unequal ones differ is looked at, not assumed.
+        mix = np.random.default_rng(1).integers(1, 2**63, rows.shape[1], np.uint64) | np.uint64(1)
+        sums = (rows.astype(np.uint64) * mix).sum(axis=1, dtype=np.uint64).view(np.int64)
+        keys, kind = sorted_apart(sums)
+        first = np.empty(len(keys), np.int64)
+        first[kind[::-1]] = np.arange(len(rows))[::-1]
+        if (rows == rows[first[kind]]).all():
+            return first, kind
+    seen: dict[tuple[int, ...], int] = {}
+    kind = np.array([seen.setdefault(tuple(row), len(seen)) for row in rows.tolist()], np.int64)
+    first = np.zeros(len(seen), np.int64)
+    first[kind[::-1]] = np.arange(len(kind))[::-1]
+    return first, kind
