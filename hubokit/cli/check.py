@@ -71,8 +71,8 @@ def command(
 
 
 def _refuse_undone(verdict: Verdict, evidence: options.Evidence, file: Path) -> None:
-    """Raise where a walk that was asked for by name was refused for its size, so that nothing was settled."""
-    if evidence not in (options.Evidence.exhaustion, options.Evidence.elimination):
+    """Raise where a visit to all states, asked for by name, was refused for its size: it settles whatever it visits."""
+    if evidence is not options.Evidence.exhaustion:
         return
     asked = [verdict.claims[name] for name in verdict.asked if name != "quadratic"]
     if asked and all(claim.status == "open" for claim in asked):
