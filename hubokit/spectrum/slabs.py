@@ -60,7 +60,9 @@ def run_slabs(
     run.report()
     try:
         if executor is not None:
-            _spread(run, left, executor, None, max(2 * workers, 8))
+            # only threads can be told to stop in the middle of a slab
+            stop = threading.Event() if isinstance(executor, ThreadPoolExecutor) else None
+            _spread(run, left, executor, stop, max(2 * workers, 8))
         elif workers == 1 or len(left) <= 1:
             for slab in left:
                 run.take(slab, task.run(slab, task.hint(run.total), None))
@@ -118,7 +120,6 @@ def _in_threads(run: _Run, left: list[int], workers: int) -> None:
     try:
         _spread(run, left, pool, stop, 2 * workers)
     finally:
-        stop.set()
         pool.shutdown(wait=True, cancel_futures=True)
 
 
@@ -137,3 +138,5 @@ def _spread(run: _Run, left: list[int], executor: Executor, stop: Stop | None, a
     finally:
         for future in running:
             future.cancel()
+        if isinstance(stop, threading.Event):
+            stop.set()

@@ -159,7 +159,7 @@ def layout_of(polynomial: Polynomial, derivatives: bool = False) -> Layout:
         Every bit above the low ones has a walk of its own (local minima).
     """
     size = polynomial.size
-    fixed = 0 if size <= 22 else 1 if size <= 24 else 3 if size <= 30 else 3 + (2 * (size - 30) + 2) // 3
+    fixed = 0 if size <= 22 else 1 if size <= 24 else 3 if size <= 30 else 3 + (size - 29) // 2
     if derivatives:  # a slab makes many tables, and so is larger
         fixed = 0 if size <= 20 else 1 if size <= 24 else 3 + max(0, size - 30)
     locality = int(np.bitwise_count(polynomial.masks).max(initial=0))
