@@ -71,7 +71,7 @@ def command(
 
 
 def _refuse_undone(verdict: Verdict, evidence: options.Evidence, file: Path) -> None:
-    """Raise where a visit to all states, asked for by name, was refused for its size: it settles whatever it visits."""
+    """Raise where a visit to all states, asked for by name, was refused for its size; made, it settles everything."""
     if evidence is not options.Evidence.exhaustion:
         return
     asked = [verdict.claims[name] for name in verdict.asked if name != "quadratic"]
