@@ -9,7 +9,8 @@ from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import Number, as_fraction, format_fraction
 from hubokit.model.trail import Step, Trail
-from hubokit.reduction.planner import Question, methods, planned
+from hubokit.reduction.planner import methods, planned
+from hubokit.reduction.plans import Question
 from hubokit.reduction.result import Reduction
 
 KEEPS = ("ground-states", "energies", "one-to-one")

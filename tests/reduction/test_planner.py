@@ -11,17 +11,9 @@ import pytest
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.reduction.gadgets.table import FAMILIES
-from hubokit.reduction.planner import (
-    GROUPS,
-    MIX_LIMIT,
-    PAIR_COVER,
-    PAIR_COVER_LIMIT,
-    SYMMETRIC,
-    TERM_BY_TERM,
-    methods,
-    plan_table,
-)
+from hubokit.reduction.planner import methods, plan_table
 from hubokit.reduction.reduce import PREFERENCES, reduce
+from hubokit.reduction.ways import GROUPS, MIX_LIMIT, PAIR_COVER, PAIR_COVER_LIMIT, SYMMETRIC, TERM_BY_TERM
 
 
 def random_model(seed: int) -> Hamiltonian:
@@ -57,7 +49,7 @@ FIGURES = {"auxiliaries": "auxiliaries", "range": "coefficient_ratio", "couplers
 
 
 @pytest.mark.parametrize("prefer", PREFERENCES)
-@pytest.mark.parametrize("case", [*range(25), *STRUCTURED])
+@pytest.mark.parametrize("case", [*range(6), *STRUCTURED])
 def test_the_choice_never_costs_more_than_the_best_single_family(case: int | str, prefer: str) -> None:
     H = random_model(case) if isinstance(case, int) else STRUCTURED[case]
     chosen = getattr(reduce(H, prefer=prefer).costs, FIGURES[prefer])
@@ -67,7 +59,7 @@ def test_the_choice_never_costs_more_than_the_best_single_family(case: int | str
 
 @pytest.mark.parametrize("prefer", PREFERENCES)
 @pytest.mark.parametrize("keep", ["one-to-one", "energies"])
-@pytest.mark.parametrize("seed", range(25))
+@pytest.mark.parametrize("seed", range(12))
 def test_the_price_in_the_trail_is_what_the_model_costs(seed: int, keep: str, prefer: str) -> None:
     R = reduce(random_model(seed), keep=keep, prefer=prefer)
     row = plan_table(R.trail)[0]

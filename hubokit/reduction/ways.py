@@ -1,0 +1,159 @@
+"""The ways of reducing a model, each as priced plans: term by term, groups, symmetric parts, pair covers."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from itertools import product
+from math import ceil, lcm, prod
+
+import numpy as np
+
+from hubokit.reduction.assembly import Choice, term_pieces, work_of
+from hubokit.reduction.covers import pair_cover_reduction
+from hubokit.reduction.gadgets.table import FAMILIES, stand_in
+from hubokit.reduction.groups import METHOD as GROUPS
+from hubokit.reduction.groups import Taken, gathered, group_piece
+from hubokit.reduction.pair_piece import METHOD as PAIR_COVER
+from hubokit.reduction.pair_piece import PairPiece, lonely_terms, without
+from hubokit.reduction.plans import Plan, Question, options_of, plan_of, single_choice, with_rest
+from hubokit.reduction.symmetric import METHOD as SYMMETRIC
+from hubokit.reduction.symmetric import symmetric_pieces
+from hubokit.reduction.tightening import tightened
+
+TERM_BY_TERM = "term-by-term"
+
+MIX_LIMIT = 27
+"""Most mixes of families that are all priced; beyond it the best is improved one locality at a time."""
+
+PAIR_COVER_LIMIT = 2**15
+"""Most members of terms for pricing a pair cover where auxiliaries are not what is preferred."""
+
+
+def term_choices(question: Question, notes: list[dict[str, str]]) -> list[tuple[str, Choice]]:
+    """Single families, the best for one term alone, and every mix where there are few."""
+    options = options_of(question.H)
+    named = {one.name for families in options.values() for one in families}
+    found = [(one.name, single_choice(question, one.name)) for one in FAMILIES if one.name in named]
+    found += [(TERM_BY_TERM, single_choice(question, "", prefer)) for prefer in ("auxiliaries", "range", "couplers")]
+    mixes = prod(len(families) for families in options.values())
+    if mixes > MIX_LIMIT:
+        reason = f"there are {mixes:,}, more than {MIX_LIMIT}; the best was improved one locality at a time instead"
+        notes.append({"method": "every mix of families", "reason": reason})
+        return found
+    for mix in product(*options.values()):
+        names = [one.name for one in mix]
+        found.append((TERM_BY_TERM, dict(zip(options, names, strict=True))))
+    return found
+
+
+def term_plans(question: Question, notes: list[dict[str, str]]) -> list[Plan]:
+    """The single families and the best mix, priced."""
+    prices: dict[tuple[tuple[tuple[int, int], str], ...], Plan] = {}
+    best: dict[str, Plan] = {}
+    for name, choice in term_choices(question, notes):
+        key = tuple(sorted(choice.items()))
+        if key not in prices:
+            prices[key] = best_gap(question, choice, name)
+        plan = Plan(name, prices[key].price, prices[key].build)
+        if name not in best or plan.price.figure(question.prefer) < best[name].price.figure(question.prefer):
+            best[name] = plan
+    options = options_of(question.H)
+    if prod(len(families) for families in options.values()) > MIX_LIMIT:
+        start = min(prices.values(), key=lambda plan: plan.price.figure(question.prefer))
+        choice = dict(next(key for key, plan in prices.items() if plan is start))
+        best[TERM_BY_TERM] = _improved(question, choice, start)
+    # The mix stands first: where it is no better than a single family, the two are the same model.
+    return sorted(best.values(), key=lambda plan: plan.name != TERM_BY_TERM)
+
+
+def _improved(question: Question, choice: dict[tuple[int, int], str], plan: Plan) -> Plan:
+    """The plan after one pass that tries every other family for one (locality, sign) after the other."""
+    for key, families in options_of(question.H).items():
+        for one in families:
+            if one.name != choice[key]:
+                other = best_gap(question, {**choice, key: one.name}, TERM_BY_TERM)
+                if other.price.figure(question.prefer) < plan.price.figure(question.prefer):
+                    choice, plan = {**choice, key: one.name}, other
+    return Plan(TERM_BY_TERM, plan.price, plan.build)
+
+
+def best_gap(question: Question, choice: Choice, name: str) -> Plan:
+    """The plan for the gap asked for; where range is preferred, or for a wider gap that needs no finer resolution.
+
+    A gap that is no multiple of the denominators of its gadgets makes the resolution finer, and with it the smallest
+    coefficient; a slightly wider gap costs less there.
+    """
+    plan = term_plan(question, choice, name)
+    if question.prefer != "range" or not question.gap:
+        return plan
+    shapes = [stand_in(family_name, *key, question.keep) for key, family_name in choice.items()]
+    denominator = lcm(*(value.denominator for shape in shapes for value in shape.by_gap.values()))
+    step = question.H.resolution * denominator
+    wider = step * ceil(question.gap / step)
+    if wider == question.gap:
+        return plan
+    other = term_plan(replace(question, gap=wider), choice, name)
+    return min(plan, other, key=lambda one: one.price.figure(question.prefer))
+
+
+def term_plan(question: Question, choice: Choice, name: str) -> Plan:
+    return plan_of(question, term_pieces(question.H, choice, question.gap, question.keep), name)
+
+
+def group_plans(question: Question) -> list[Plan] | str:
+    """Four-variable groups with the best of three mixes for what is left over; or the work limit in the way."""
+    grouping = gathered(question.H)
+    if grouping is None or isinstance(grouping, str):
+        return grouping or []
+    piece, taken = group_piece(question.H, grouping, question.gap)
+    if not piece.auxiliaries:
+        return []
+    return with_rest(question, [piece], taken, GROUPS)
+
+
+def symmetric_plans(question: Question, largest: int) -> list[Plan]:
+    """Symmetric parts as functions of a count, with the best of three mixes for the rest."""
+    pieces, taken = symmetric_pieces(question.H, question.gap, largest)
+    if not pieces:
+        return []
+    return with_rest(question, pieces, taken, SYMMETRIC)
+
+
+def pair_plans(question: Question, method: str) -> list[Plan] | str:
+    """Pair covers of all terms and of the short ones, with gadgets for the rest; or the work limit in the way."""
+    H = question.H
+    if H.locality < 3:
+        return []
+    work = work_of(H)
+    if method != PAIR_COVER and question.prefer != "auxiliaries" and work > PAIR_COVER_LIMIT:
+        return f"{work:,} members to cover; at most {PAIR_COVER_LIMIT:,} unless auxiliaries are preferred"
+    longer = {block.locality: np.ones(len(block), bool) for block in H.blocks if block.locality > 4}
+    plans = []
+    for left_out in ({}, longer) if longer else ({},):
+        plans += _covers(question, left_out, work <= PAIR_COVER_LIMIT)
+    return [min(plans, key=lambda plan: plan.price.figure(question.prefer))]
+
+
+def _covers(question: Question, left_out: Taken, every: bool) -> list[Plan]:
+    """The cover of all terms but those left out, and what becomes of it when lonely terms are left out too.
+
+    Where `every` is False only the last is priced.
+    """
+    H = question.H
+    plans: list[Plan] = []
+    for last in (False, False, True):
+        cover = pair_cover_reduction(
+            H,
+            keep=question.keep,
+            auxiliary_gap=question.gap or None,
+            seed=question.seed,
+            only=without(H, left_out),
+        )
+        lonely = lonely_terms(cover)
+        done = last or not any(mask.any() for mask in lonely.values())
+        if done or every:
+            plans += with_rest(question, [PairPiece(tightened(cover))], dict(cover.covered), PAIR_COVER)
+        if done:
+            break
+        left_out = {k: mask | left_out.get(k, np.zeros(len(mask), bool)) for k, mask in lonely.items()}
+    return plans
