@@ -199,7 +199,7 @@ class _Audit:
                     raise Rejected("it speaks of other auxiliaries")
                 proof = follow(certificate, self.model.terms, self.model.domain, len(self.model.labels))
                 stated = certificate["multiplicity"]
-                if stated is not None and (proof.uneven or stated != proof.multiplicity):
+                if stated is not None and (proof.uneven or proof.unclear or stated != proof.multiplicity):
                     raise Rejected(f"the multiplicity is not {stated} everywhere")
                 P: Poly = {key: value * self.model.resolution for key, value in proof.gained.items()}
                 add(P, (), self.model.constant)
@@ -240,7 +240,7 @@ class _Audit:
         self.note("scale", good, "sought again" if good else f"{wanted[0]} and {wanted[1]} ({origin}) would be right")
 
     def _multiplicity(self, proof: Any, why: str) -> None:
-        uniform = None if proof.uneven else proof.multiplicity
+        uniform = None if proof.uneven or proof.unclear else proof.multiplicity
         if self.known.get("ground-states") and uniform is not None:
             self.learn("even-multiplicity", True, why)
         if not self.known["energies"]:
@@ -249,7 +249,7 @@ class _Audit:
             self.learn("one-to-one", uniform == 1, why)
         else:
             witness = self.verdict["claims"]["one-to-one"]["witness"]
-            if witness is not None:
+            if witness is not None and not proof.unclear:
                 bits = self._bits(witness["state"])
                 if bits is not None and multiplicity_at(proof, bits) != 1:
                     self.learn("one-to-one", False, f"{why}, at the witness")

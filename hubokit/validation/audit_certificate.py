@@ -13,11 +13,12 @@ from typing import Any
 
 from hubokit.validation.audit_clusters import counting_step, states_step, tables_step
 from hubokit.validation.audit_polynomials import Poly, TooLarge, add, substituted
-from hubokit.validation.audit_proof import Proof, Rejected, binary, function_of, positions_in
-from hubokit.validation.audit_rules import guards_step, shared_step
+from hubokit.validation.audit_proof import Proof, Rejected, function_of, positions_in
+from hubokit.validation.audit_rules import guards_step, shared_step, weak_guards_step
 
 STEPS: Mapping[str, Callable[[Proof, Mapping[str, Any], int], None]] = {
     "guards": guards_step,
+    "weak guards": weak_guards_step,
     "shared": shared_step,
     "tables": tables_step,
     "counting": counting_step,
@@ -76,10 +77,7 @@ def _close(proof: Proof) -> None:
 
 def multiplicity_at(proof: Proof, bits: Mapping[int, int]) -> int:
     """m at a state of the originals, given as bits by position."""
-    at = dict(bits)
-    for position, (guards, function) in proof.known.items():
-        if position not in proof.gone:
-            at[position] = int(function[binary(tuple(at[g] for g in guards))])
+    at = proof.decided(dict(bits))
     total = proof.multiplicity
     for touched, count in proof.uneven:
         total *= count(tuple(at[position] for position in touched))

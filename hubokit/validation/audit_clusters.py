@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Mapping
 from fractions import Fraction
 from itertools import combinations, product
-from math import comb
+from math import comb, prod
 from operator import mul
 from typing import Any
 
@@ -208,30 +208,34 @@ def states_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
     proof.fresh(members)
     if len(touched) > MOST_TOUCHED or len(members) > MOST_BRANCHED:
         raise TooLarge(f"a cluster of {len(members)} auxiliaries and {len(touched)} touched variables")
-    if not proof.settled(touched) or set(touched) & set(members):
-        raise Rejected("a cluster touches a variable that is not settled")
+    if set(touched) & proof.auxiliaries or len(set(touched)) < len(touched):
+        raise Rejected("a cluster minimised state by state is tabulated over originals")
     held: Poly = {}
     for y in members:
         held |= proof.touching(y)
     slot = {y: i for i, y in enumerate(members)}
-    place = {x: j for j, x in enumerate(touched)}
-    if any(len(key) > 2 or not set(key) <= {*members, *touched} for key in held):
-        raise Rejected("a cluster leaves out a variable that it touches")
-    pairs = {key: w for key, w in held.items() if len(key) == 2 and set(key) <= set(slot)}
-    between = [[*sorted((slot[i], slot[k])), w] for (i, k), w in pairs.items()]
-    values = values_of(proof.domain)
-    fields = [0] * len(members)
-    pulls: list[list[tuple[int, int]]] = [[] for _ in members]
+    pulls: list[tuple[int, Key, int]] = []
+    between = []
     for key, weight in held.items():
-        (inside, *others) = sorted(key, key=lambda position: position not in slot)
-        if not others:
-            fields[slot[inside]] += weight
-        elif others[0] in place:
-            pulls[slot[inside]].append((place[others[0]], weight))
+        inside = sorted(slot[position] for position in key if position in slot)
+        others = tuple(position for position in key if position not in slot)
+        if len(inside) > 2 or (len(inside) == 2 and others):
+            raise TooLarge("a cluster whose couplings depend on the state")
+        if len(inside) == 2:
+            between.append([*inside, weight])
+        else:
+            pulls.append((inside[0], others, weight))
+    values = values_of(proof.domain)
     rows = []
     for t in settings(len(touched)):
-        v = [values[bit] for bit in t]
-        rows.append([f + sum(w * v[j] for j, w in pull) for f, pull in zip(fields, pulls, strict=True)])
+        at = proof.decided(dict(zip(touched, t, strict=True)))
+        fields = [0] * len(members)
+        for i, others, weight in pulls:
+            if not all(position in at for position in others):
+                raise Rejected("a cluster leaves out a variable that it touches")
+            fields[i] += weight * prod(values[at[position]] for position in others)
+        proof.spend(len(pulls))
+        rows.append(fields)
     counts = _checked(proof, {**step, "between": between}, rows)
     for key in held:
         del proof.left[key]

@@ -40,6 +40,7 @@ class Proof:
     gone: set[int] = field(default_factory=set)
     uneven: list[tuple[Key, Callable[[Key], int]]] = field(default_factory=list)
     multiplicity: int = 1
+    unclear: bool = False
     work: int = 0
 
     def __post_init__(self) -> None:
@@ -73,6 +74,13 @@ class Proof:
     def settled(self, positions: Sequence[int]) -> bool:
         """Whether variables are originals or have a rule."""
         return all(position not in self.auxiliaries or position in self.known for position in positions)
+
+    def decided(self, bits: dict[int, int]) -> dict[int, int]:
+        """Bits of originals, and of every known auxiliary whose guards they reach."""
+        for position, (guards, function) in self.known.items():
+            if position not in self.gone and all(g in bits for g in guards):
+                bits[position] = int(function[binary(tuple(bits[g] for g in guards))])
+        return bits
 
     def eliminate(self, position: int, by: Poly) -> None:
         """Replace an auxiliary in F' by the polynomial of its function."""

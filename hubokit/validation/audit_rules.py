@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from fractions import Fraction
+from math import ceil
 from typing import Any
 
 from hubokit.validation.audit_polynomials import Key, Poly, TooLarge, least, settings, values_of
@@ -36,14 +37,24 @@ def _rules(proof: Proof, step: Mapping[str, Any], variables: int) -> list[tuple[
 
 
 def guards_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
-    eliminate = step["eliminate"]
+    """Auxiliaries that their guards decide: the field is at least the margin (rounded up) on the right side."""
+    _decide(proof, step, variables, bool(step["eliminate"]), 1)
+
+
+def weak_guards_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
+    """The same with fields that may be 0: the settings are best ones, but maybe not the only ones."""
+    proof.unclear = True
+    _decide(proof, step, variables, True, 0)
+
+
+def _decide(proof: Proof, step: Mapping[str, Any], variables: int, eliminate: bool, least_margin: int) -> None:
     rules = _rules(proof, step, variables)
     margins = step["margins"]
     if len(margins) != len(rules):
         raise Rejected("margins do not match the auxiliaries")
     for (y, guards, function), margin in zip(rules, margins, strict=True):
-        if type(margin) is not int or margin <= 0:
-            raise Rejected(f"the margin of variable {y} is not positive")
+        if type(margin) is not int or margin < least_margin:
+            raise Rejected(f"the margin of variable {y} is less than {least_margin}")
         early = {other for other, _, _ in rules[: [one for one, _, _ in rules].index(y)]} if eliminate else set()
         if proof.gone & set(guards) or proof.done & set(guards) or early & set(guards):
             raise Rejected(f"variable {y} is guarded by a variable that is gone")
@@ -53,7 +64,8 @@ def guards_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
         proof.spend(len(touching) << len(guards))
         for setting, decided in zip(settings(len(guards)), function, strict=True):
             low, high = _interval(touching, dict(zip(guards, setting, strict=True)), proof.domain)
-            if (decided == "1" and high > -margin) or (decided == "0" and low < margin):
+            away = -high if decided == "1" else low
+            if ceil(away) < margin or away < 0 or (least_margin and not away):
                 raise Rejected(f"the guards of variable {y} do not decide it by {margin} at {setting}")
     for y, guards, function in rules:
         proof.known[y] = (guards, function)

@@ -15,6 +15,8 @@ from hubokit.validation.uneven import tied_state
 from hubokit.validation.verdict import Deferred
 
 METHOD = "projection"
+#: Methods of the projection that decide auxiliaries one by one; the others settle whole clusters.
+RULES = ("guards", "chains", "shared bounds")
 
 
 def by_projection(case: Case, options: Options, found: Findings) -> None:
@@ -97,5 +99,12 @@ def _first(case: Case) -> States:
 
 
 def _clusters(case: Case) -> str:
-    count = sum(int(cluster.count) for cluster in case.projection.clusters)
-    return f"{count} cluster{'s' if count != 1 else ''} of auxiliaries"
+    """What the auxiliaries were settled by, in a phrase."""
+    decided = sum(one.count for one in case.projection.clusters if one.method in RULES)
+    tabulated = sum(one.count for one in case.projection.clusters if one.method not in RULES)
+    parts = []
+    if decided:
+        parts.append(f"{decided:,} {'auxiliary' if decided == 1 else 'auxiliaries'} decided by guards")
+    if tabulated or not decided:
+        parts.append(f"{tabulated:,} cluster{'s' if tabulated != 1 else ''} of auxiliaries")
+    return " and ".join(parts)

@@ -15,10 +15,8 @@ from hubokit.validation.claims import CLAIMS, asked_claims
 from hubokit.validation.evidence import EVIDENCE, Options, kinds_for
 from hubokit.validation.figures import add_figures
 from hubokit.validation.findings import Findings
+from hubokit.validation.tables import MODEL_LIMIT, STATES_LIMIT
 from hubokit.validation.verdict import Verdict
-
-#: Claims nobody asked for are settled too while the model has at most this many variables.
-UNASKED_LIMIT = 20
 
 
 def check(
@@ -106,8 +104,9 @@ def _inspect(case: Case, found: Findings) -> None:
 
 
 def _enough(case: Case, options: Options, found: Findings) -> bool:
-    """Whether every claim that matters is settled: the asked ones, and on a small model the others too."""
-    wanted = CLAIMS if case.model.size <= UNASKED_LIMIT else options.asked
+    """Whether every claim that matters is settled: the asked ones, and where all states are few the others too."""
+    few = len(case.originals) <= STATES_LIMIT and (found.used("projection") or case.model.size <= MODEL_LIMIT)
+    wanted = CLAIMS if few else options.asked
     return all(found.settled(name) for name in wanted)
 
 

@@ -14,7 +14,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hubokit.errors import LimitError
-from hubokit.model.states import from_bits, unpack
 from hubokit.validation.case import Case, States
 
 Floats = NDArray[np.float64]
@@ -22,7 +21,7 @@ Floats = NDArray[np.float64]
 #: beta_T times the gap, at which evenness is given.
 TEMPERATURES = (1.0, 3.0, 10.0)
 #: Largest cluster whose settings are summed one by one, and clusters of more than one auxiliary at most.
-LARGEST_CLUSTER, CLUSTERS = 14, 5000
+LARGEST_CLUSTER, CLUSTERS = 20, 5000
 #: Entries (ground states times auxiliaries or settings) held at most.
 ENTRIES = 2**25
 
@@ -126,14 +125,30 @@ def _cluster_sum(
     size = len(members)
     if len(fields) << size > ENTRIES:
         raise LimitError(f"{len(fields)} ground states times 2^{size} settings of one cluster")
-    settings = from_bits(unpack(np.arange(2**size), size), domain).astype(np.float64)
     column = {int(member): place for place, member in enumerate(members)}
-    energy = fields @ settings.T
+    matrix = np.zeros((size, size))
     for row in np.flatnonzero(np.isin(pairs[:, 0], members)):
-        first, second = column[int(pairs[row, 0])], column[int(pairs[row, 1])]
-        energy += couplings[row] * (settings[:, first] * settings[:, second])[None, :]
-    energy -= energy.min(axis=1, keepdims=True)
-    return np.array([np.log(np.exp(-beta * energy).sum(axis=1)) for beta in betas])
+        first, second = sorted((column[int(pairs[row, 0])], column[int(pairs[row, 1])]))
+        matrix[second, first] += couplings[row]
+    low, high = (1.0, -1.0) if domain == "spin" else (0.0, 1.0)
+    inner = np.zeros(1)
+    for place in range(size):
+        pull = _doubled(matrix[place, :place], low, high)
+        inner = np.concatenate([inner + low * pull, inner + high * pull])
+    logs = np.empty((len(betas), len(fields)))
+    for state, field in enumerate(fields):
+        energy = inner + _doubled(field, low, high)
+        energy -= energy.min()
+        logs[:, state] = [np.log(np.exp(-beta * energy).sum()) for beta in betas]
+    return logs
+
+
+def _doubled(weights: Floats, low: float, high: float) -> Floats:
+    """Sum of weight * value for every setting of the variables, one doubling for each variable."""
+    total = np.zeros(1)
+    for weight in weights:
+        total = np.concatenate([total + low * weight, total + high * weight])
+    return total
 
 
 def largest_ratio(log_weights_at: Floats) -> float:
