@@ -8,8 +8,9 @@ from __future__ import annotations
 import os
 import secrets
 import zlib
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from contextlib import contextmanager
+from contextvars import ContextVar
 from pathlib import Path
 
 from hubokit.errors import InputError, LimitError
@@ -22,6 +23,11 @@ INFLATE_LIMIT = 2**30
 
 PIECE = 2**20
 """Bytes read at a time."""
+
+Progress = Callable[[int, int], None]
+"""Called with the bytes done and the bytes in all."""
+
+_progress: ContextVar[Progress | None] = ContextVar("progress", default=None)
 
 _BOM = b"\xef\xbb\xbf"
 
@@ -48,7 +54,7 @@ def pieces(path: str | os.PathLike[str], *, limit: int | None = None) -> Iterato
     bound = (INFLATE_LIMIT if zipped else READ_LIMIT) if limit is None else limit
     try:
         with open(name, "rb") as stream:
-            source = iter(lambda: stream.read(PIECE), b"")
+            source = _reported(iter(lambda: stream.read(PIECE), b""), os.fstat(stream.fileno()).st_size)
             total = 0
             for piece in _inflated(source, name) if zipped else source:
                 total += len(piece)
@@ -64,6 +70,34 @@ def pieces(path: str | os.PathLike[str], *, limit: int | None = None) -> Iterato
         if isinstance(error, InputError):
             raise
         raise InputError(f"the file cannot be read: {error}", file=name) from None
+
+
+@contextmanager
+def reporting(progress: Progress | None) -> Iterator[None]:
+    """While the block lasts, reading calls ``progress(done, total)`` with bytes of the file, at most once a piece.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> with tempfile.NamedTemporaryFile() as file, reporting(print):
+    ...     _ = file.write(b"some text"), file.flush()
+    ...     _ = read_bytes(file.name)
+    9 9
+    """
+    token = _progress.set(progress)
+    try:
+        yield
+    finally:
+        _progress.reset(token)
+
+
+def _reported(source: Iterator[bytes], total: int) -> Iterator[bytes]:
+    progress, done = _progress.get(), 0
+    for piece in source:
+        done += len(piece)
+        if progress is not None:
+            progress(done, max(done, total))
+        yield piece
 
 
 def _inflated(source: Iterator[bytes], name: str) -> Iterator[bytes]:

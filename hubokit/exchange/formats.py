@@ -12,6 +12,7 @@ from hubokit.exchange import documents
 from hubokit.exchange.arrays import load_arrays, write_arrays
 from hubokit.exchange.cnf import load_cnf, write_cnf
 from hubokit.exchange.documents import Document, as_document, write_document
+from hubokit.exchange.files import Progress, reporting
 from hubokit.exchange.linear_programs import load_program, write_program
 from hubokit.exchange.matrix_market import load_matrix_market, write_matrix_market
 from hubokit.exchange.opb import load_opb, write_opb
@@ -116,7 +117,10 @@ def format_of(path: str | os.PathLike[str], name: str | None = None) -> Format:
 
 
 def read_document(
-    path: str | os.PathLike[str], source: Hamiltonian | None = None, format: str | None = None
+    path: str | os.PathLike[str],
+    source: Hamiltonian | None = None,
+    format: str | None = None,
+    progress: Progress | None = None,
 ) -> Document:
     """Read a file with everything it holds beside the model.
 
@@ -127,6 +131,8 @@ def read_document(
         The source of a reduced model whose trail does not embed it.
     format : str, optional
         Name of the format, where the suffix does not say it.
+    progress : callable, optional
+        Called with the bytes read and the bytes in all.
 
     Returns
     -------
@@ -138,7 +144,11 @@ def read_document(
     InputError, LimitError
         Bad input, with file and place.
     """
-    entry = format_of(path, format)
+    with reporting(progress):
+        return _document(path, source, format_of(path, format))
+
+
+def _document(path: str | os.PathLike[str], source: Hamiltonian | None, entry: Format) -> Document:
     if entry.name == JSON:
         return documents.read_document(path, source)
     if entry.load is None:
@@ -161,8 +171,13 @@ def _reduced(model: Hamiltonian, source: Hamiltonian, notes: dict[str, object]) 
     return Document(Reduction(source, model, auxiliaries), auxiliaries, notes=notes)
 
 
-def read(path: str | os.PathLike[str], source: Hamiltonian | None = None, format: str | None = None) -> Thing:
-    """Read a file.
+def read(
+    path: str | os.PathLike[str],
+    source: Hamiltonian | None = None,
+    format: str | None = None,
+    progress: Progress | None = None,
+) -> Thing:
+    """Read a file; the parameters are those of `read_document`.
 
     Returns
     -------
@@ -174,7 +189,7 @@ def read(path: str | os.PathLike[str], source: Hamiltonian | None = None, format
     InputError, LimitError
         Bad input, with file and place.
     """
-    return read_document(path, source, format).thing
+    return read_document(path, source, format, progress).thing
 
 
 def write(

@@ -69,6 +69,20 @@ def test_chunks_end_at_line_ends_and_add_up_to_the_file(tmp_path: Path) -> None:
     assert all(text.split("\n")[chunk.line - 1].encode() in chunk.data.tobytes() for chunk in found)
 
 
+def test_progress_is_told_in_bytes_of_the_file(tmp_path: Path) -> None:
+    path = tmp_path / "m.opb"
+    write(large_model(60_000), path)
+    told: list[tuple[int, int]] = []
+    read(path, progress=lambda done, total: told.append((done, total)))
+    size = path.stat().st_size
+    assert told[-1] == (size, size)
+    assert [done for done, _ in told] == sorted({done for done, _ in told})
+    assert len(told) == -(-size // 2**20)
+    told.clear()
+    read(path)
+    assert told == []
+
+
 def test_errors_in_late_chunks_name_the_right_line(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(scanning.chunks, "__kwdefaults__", {"size": 50})
     path = tmp_path / "m.cnf"
