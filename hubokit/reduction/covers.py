@@ -30,7 +30,7 @@ from hubokit.model.terms import Part, canonical_blocks
 from hubokit.reduction.cover_joins import most_common_pairs
 from hubokit.reduction.cover_problem import cover_problem
 from hubokit.reduction.cover_search import find_cover
-from hubokit.reduction.pairs import PairVariables, factors_of, factors_where_covered, rewritten, shortened
+from hubokit.reduction.pairs import PairVariables, balanced, factors_of, factors_where_covered, rewritten, shortened
 from hubokit.reduction.penalties import SPIN_DIVISOR, BooleanForm, Strengths, interval_strengths, penalty_parts
 
 JOIN_WORK = 50_000
@@ -345,6 +345,12 @@ def pair_cover_reduction(
             factors[4] = found[reached]
         else:
             factors[locality] = factors_of(rows, chosen.pairs, H.domain)
+    reached_terms = [
+        (block.members[covered[block.locality]], block.weights[covered[block.locality]])
+        for block in H.blocks
+        if block.locality >= 3
+    ]
+    factors = dict(zip(factors, balanced(reached_terms, list(factors.values()), chosen.pairs, H.domain), strict=True))
     gap = auxiliary_gap if auxiliary_gap else H.resolution
     resolution = common_resolution([H.resolution, gap])
     form = covered_form(H, covered, factors, chosen.pairs, resolution)

@@ -32,6 +32,9 @@ from numpy.typing import NDArray
 from hubokit.errors import InputError
 from hubokit.model.terms import ABSENT, Part
 
+BALANCE_WORK = 50_000
+"""Terms with a choice of pairs up to which the choice is made term by term."""
+
 CUBIC_SPLITS = np.array([[0, 1, 2], [0, 2, 1], [1, 2, 0]])
 """Each row: the two positions that form the pair, then the position left over."""
 
@@ -260,6 +263,68 @@ def factors_where_covered(members: NDArray[Any], pairs: PairVariables, domain: s
         factors[line, 0] = first[line, choice]
         factors[line, 1] = second[line, choice]
     return factors
+
+
+def balanced(
+    blocks: Sequence[tuple[NDArray[Any], NDArray[Any]]],
+    factors: Sequence[NDArray[np.int64]],
+    pairs: PairVariables,
+    domain: str,
+    most: int = BALANCE_WORK,
+) -> list[NDArray[np.int64]]:
+    """Factors chosen anew where a term of three or four can be split in several ways, so that no pair bears too much.
+
+    What a pair bears is the sum of the absolute weights of the terms that use it: its penalty grows with that. Heavy
+    terms choose first, each the way whose heavier pair is lightest.
+
+    Parameters
+    ----------
+    blocks : sequence of (members (m, k), weights (m,))
+    factors : sequence of int64 arrays (m, 2)
+        As `factors_of` gives them; kept for longer terms.
+    pairs : PairVariables
+    domain : "spin" or "boolean"
+    most : int
+        Nothing is changed when more terms than these have a choice.
+
+    Returns
+    -------
+    list of int64 arrays (m, 2)
+
+    Examples
+    --------
+    >>> pairs = PairVariables.of(4, [(0, 1), (0, 2)])
+    >>> rows, weights = np.array([[0, 1, 2], [0, 1, 3]]), np.array([1, 5])
+    >>> balanced([(rows, weights)], [np.array([[4, 2], [4, 3]])], pairs, "boolean")[0].tolist()
+    [[5, 1], [4, 3]]
+    """
+    chosen = [one.copy() for one in factors]
+    load = [0] * (pairs.size + pairs.count)
+    choices: list[tuple[int, int, int, list[list[int]]]] = []
+    for place, (members, weights) in enumerate(blocks):
+        several = np.zeros(len(members), bool)
+        if members.shape[1] <= 4 and len(members):
+            first, second = _options(np.asarray(members, dtype=np.int64), pairs, domain)[0]
+            usable = (first >= 0) & (second >= 0)
+            several = usable.sum(axis=1) > 1
+            ways = np.stack([first, second], axis=2)
+            choices += [
+                (-abs(int(weights[row])), place, row, ways[row, usable[row]].tolist())
+                for row in np.flatnonzero(several).tolist()
+            ]
+        for (u, v), weight in zip(chosen[place][~several].tolist(), np.abs(weights[~several]).tolist(), strict=True):
+            load[u] += weight
+            load[v] += weight
+    if len(choices) > most:
+        return chosen
+    for weight, place, row, options in sorted(choices):
+        # An original variable has no penalty and bears nothing.
+        borne = [sorted((load[u] if u >= pairs.size else 0 for u in way), reverse=True) for way in options]
+        way = options[borne.index(min(borne))]
+        chosen[place][row] = way
+        for u in way:
+            load[u] -= weight
+    return chosen
 
 
 def _options(

@@ -19,17 +19,17 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 from fractions import Fraction
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from hubokit.model.numbers import INT64_BOUND, format_fraction
+from hubokit.model.numbers import format_fraction
 from hubokit.projection.shared_bounds import PARTS, Candidate, FlipProblem, Slacks, equal_shares, slacks
 from hubokit.reduction.covers import PairCoverPlan, covered_form
 from hubokit.reduction.pairs import PairVariables
-from hubokit.reduction.penalties import SPIN_DIVISOR, BooleanForm, Strengths, penalty_parts
-from hubokit.reduction.tightening_program import Coefficients, Group, SharesProgram
+from hubokit.reduction.penalties import BooleanForm, Strengths
+from hubokit.reduction.tightening_ledger import Coefficients, Ledger, both_readings
+from hubokit.reduction.tightening_program import Group, SharesProgram
 
 LARGEST_GROUP = 400
 """Auxiliaries that hang together up to which shared bounds are evaluated, for `work` = 1."""
@@ -42,6 +42,9 @@ PROGRAM_GROUP = 40
 
 SHARED_WORK = 200_000
 """Sum of squared group sizes over which shared bounds are evaluated, heaviest penalties first, for `work` = 1."""
+
+GROUP_WORK = 200
+"""What a group counts beside its squared size."""
 
 PROGRAM_WORK = 3_000
 """Sum of squared group sizes over which linear programs are solved, for `work` = 1."""
@@ -84,106 +87,46 @@ def tightened(plan: PairCoverPlan, work: int = 1) -> PairCoverPlan:
     """
     form = covered_form(plan.source, plan.covered, plan.factors, plan.pairs, plan.resolution)
     gap = int(plan.gap / plan.resolution)
-    better = plan
+    found = heaviest_first(groups(form, plan.pairs, LARGEST_GROUP * work), plan.strengths)
+    if not found:
+        return plan
+    ledgers = [Ledger(plan, domain) for domain in dict.fromkeys((plan.source.domain, "boolean"))]
+    one, both = plan.strengths.one.copy(), plan.strengths.both.copy()
     proofs: set[str] = set()
     shared, programmed = SHARED_WORK * work, PROGRAM_WORK * work
-    for group in heaviest_first(groups(form, plan.pairs, LARGEST_GROUP * work), plan.strengths):
-        size = len(group.numbers)
-        shared -= size**2
+    for numbers in found:
+        shared -= len(numbers) ** 2 + GROUP_WORK
+        programmed -= len(numbers) ** 2 + GROUP_WORK
         if shared < 0:
             break
-        programmed -= size**2
-        table = coefficients(better, group)
-        rounds = MOST_ROUNDS * work if size <= PROGRAM_GROUP * work and programmed >= 0 else 0
-        one, both = better.strengths.one.copy(), better.strengths.both.copy()
-        before = Strengths(one[group.numbers], both[group.numbers])
+        before = Strengths(one[numbers], both[numbers])
+        tables = [ledger.table(numbers) for ledger in ledgers]
+        table = tables[0] if len(tables) == 1 else both_readings(tables[0], tables[1], before)
+        rounds = MOST_ROUNDS * work if len(numbers) <= PROGRAM_GROUP * work and programmed >= 0 else 0
         enough = int(ENOUGH * table.figure(before)[0]) if work == 1 else 0
-        found, proof = least_strengths(group, table, gap, rounds, enough)
+        strengths, proof = least_strengths(group_of(form, plan.pairs, numbers), table, gap, rounds, enough)
         # A group is proved whole: either all its penalties are the new ones, or none.
-        if table.figure(found) < table.figure(before):
-            one[group.numbers], both[group.numbers] = found.one, found.both
-            better = replace(better, strengths=Strengths(one, both))
+        if table.figure(strengths) < table.figure(before):
+            one[numbers], both[numbers] = strengths.one, strengths.both
+            for ledger in ledgers:
+                ledger.change(numbers, strengths)
             proofs.add(proof)
     if not proofs:
         return plan
+    better = replace(plan, strengths=Strengths(one, both))
     scale = Fraction(better.price()["largest"]) / plan.price()["largest"]
     record = {"scale": format_fraction(scale), "proved by": "; ".join(sorted(proofs))}
     return replace(better, tightening=record)
 
 
-def heaviest_first(found: Sequence[Group], strengths: Strengths) -> list[Group]:
+def heaviest_first(found: Sequence[NDArray[np.int64]], strengths: Strengths) -> list[NDArray[np.int64]]:
     """Groups by their largest penalty, the largest first."""
     weight = 2 * strengths.one + strengths.both
-    return sorted(found, key=lambda group: -int(weight[group.numbers].max()))
+    return sorted(found, key=lambda numbers: -int(weight[numbers].max()))
 
 
-def coefficients(plan: PairCoverPlan, group: Group) -> Coefficients:
-    """The coefficients of the reduced model that the group's penalties enter.
-
-    For spins these are the coefficients of the model over spins and over booleans, each multiplied by the largest of
-    the other, so that what is made small is the larger of the two ratios to what was there before.
-    """
-    domain = plan.source.domain
-    own = _entries(plan, group, domain)
-    if domain == "boolean":
-        return own
-    other = _entries(plan, group, "boolean")
-    before = Strengths(plan.strengths.one[group.numbers], plan.strengths.both[group.numbers])
-    here, there = own.figure(before)[0], other.figure(before)[0]
-    kind = object if here * there * 8 >= INT64_BOUND else own.base.dtype
-    return Coefficients(
-        np.concatenate([own.base.astype(kind) * there, other.base.astype(kind) * here]),
-        np.concatenate([own.row, other.row + len(own.base)]),
-        np.concatenate([own.column, other.column]),
-        np.concatenate([own.factor.astype(kind) * there, other.factor.astype(kind) * here]),
-    )
-
-
-def _entries(plan: PairCoverPlan, group: Group, domain: str) -> Coefficients:
-    """The coefficients that the group's penalties enter, in units of `unit`, with the model read in `domain`."""
-    pairs, source = plan.pairs, plan.source.domain
-    total = pairs.size + pairs.count
-    parts = plan.all_parts()
-    quarters = 1
-    if domain != source:
-        parts, quarters = BooleanForm.of(parts, source, total).parts(), SPIN_DIVISOR
-    held = np.zeros(pairs.count, bool)
-    held[group.numbers] = True
-    count = len(group.numbers)
-    found = [
-        (key_of(members, total), end * count + np.arange(count), weights * quarters)
-        for end, strengths in enumerate(_unit_strengths(pairs.count))
-        for members, weights in penalty_parts(pairs, strengths, domain, held)
-        if members.shape[1] and len(weights)
-    ]
-    keys, columns, factors = zip(*found, strict=True)
-    unique, row = np.unique(np.concatenate(keys), return_inverse=True)
-    base = np.zeros(len(unique), plan.strengths.one.dtype)
-    for members, weights in parts:
-        if members.shape[1]:
-            key = key_of(members, total)
-            place = np.minimum(np.searchsorted(unique, key), len(unique) - 1)
-            here = unique[place] == key
-            np.add.at(base, place[here], weights[here])
-    table = Coefficients(base, row, np.concatenate(columns), np.concatenate(factors))
-    own = Strengths(plan.strengths.one[group.numbers], plan.strengths.both[group.numbers])
-    return replace(table, base=2 * base - table.values(own))
-
-
-def key_of(members: NDArray[Any], total: int) -> NDArray[np.int64]:
-    """One number for each product of one or two of `total` variables, in any order."""
-    ordered = np.sort(members.astype(np.int64), axis=1)
-    return ordered[:, -1] * (total + 1) + (ordered[:, 0] + 1 if ordered.shape[1] == 2 else 0)
-
-
-def _unit_strengths(count: int) -> tuple[Strengths, Strengths]:
-    """A = 1 alone, and B = 1 alone: penalties are linear in both."""
-    one, none = np.ones(count, np.int64), np.zeros(count, np.int64)
-    return Strengths(one, none), Strengths(none, one)
-
-
-def groups(form: BooleanForm, pairs: PairVariables, most: int) -> list[Group]:
-    """The groups of two to `most` coupled pair variables of original variables.
+def groups(form: BooleanForm, pairs: PairVariables, most: int) -> list[NDArray[np.int64]]:
+    """The groups of two to `most` coupled pair variables of original variables, as numbers of auxiliaries.
 
     Parameters
     ----------
@@ -192,19 +135,12 @@ def groups(form: BooleanForm, pairs: PairVariables, most: int) -> list[Group]:
     pairs : PairVariables
     most : int
     """
-    size = pairs.size
-    inner = (form.members >= size).all(axis=1)
-    ends, weights = form.members[inner] - size, form.couplers[inner]
-    flat = (pairs.operands < size).all(axis=1) & ~pairs.is_product
+    ends = form.members[(form.members >= pairs.size).all(axis=1)] - pairs.size
+    flat = (pairs.operands < pairs.size).all(axis=1) & ~pairs.is_product
     label = _labels(pairs, ends)
     order = np.argsort(label, kind="stable")
-    cuts = np.flatnonzero(np.diff(label[order])) + 1
-    together = (np.sort(numbers) for numbers in np.split(order, cuts))
-    return [
-        _group(form, pairs, numbers, ends, weights)
-        for numbers in together
-        if 2 <= len(numbers) <= most and flat[numbers].all()
-    ]
+    together = np.split(order, np.flatnonzero(np.diff(label[order])) + 1)
+    return [np.sort(numbers) for numbers in together if 2 <= len(numbers) <= most and flat[numbers].all()]
 
 
 def _labels(pairs: PairVariables, ends: NDArray[np.int64]) -> NDArray[np.int64]:
@@ -224,31 +160,26 @@ def _labels(pairs: PairVariables, ends: NDArray[np.int64]) -> NDArray[np.int64]:
         label = fresh
 
 
-def _group(
-    form: BooleanForm,
-    pairs: PairVariables,
-    numbers: NDArray[np.int64],
-    ends: NDArray[np.int64],
-    weights: NDArray[Any],
-) -> Group:
+def group_of(form: BooleanForm, pairs: PairVariables, numbers: NDArray[np.int64]) -> Group:
+    """The flip problem of a group, without penalties, and its right settings."""
     place = np.full(pairs.size + pairs.count, -1)
     place[pairs.size + numbers] = np.arange(len(numbers))
     kind = form.fields.dtype
     own = place[form.members[:, 1]] >= 0
-    outer = own & (form.members[:, 0] < pairs.size)
-    known = np.union1d(form.members[outer, 0], pairs.operands[numbers])
+    members, couplers = form.members[own], form.couplers[own]
+    outer = members[:, 0] < pairs.size
+    known = np.union1d(members[outer, 0], pairs.operands[numbers])
     column = np.full(pairs.size, -1)
     column[known] = np.arange(len(known))
     linear = np.zeros((len(numbers), len(known)), kind)
-    linear[place[form.members[outer, 1]], column[form.members[outer, 0]]] = form.couplers[outer]
-    inside = place[pairs.size + ends[:, 0]] >= 0
-    first, second = place[pairs.size + ends[inside]].T
+    linear[place[members[outer, 1]], column[members[outer, 0]]] = couplers[outer]
+    first, second = place[members[~outer]].T
     pair = np.zeros((len(numbers), len(numbers)), kind)
-    pair[first, second] = weights[inside]
-    pair[second, first] = weights[inside]
+    pair[first, second] = couplers[~outer]
+    pair[second, first] = couplers[~outer]
     problem = FlipProblem(pairs.size + numbers, known, form.fields[pairs.size + numbers], linear, pair)
     guards = tuple((int(column[u]), int(column[v])) for u, v in pairs.operands[numbers].tolist())
-    return Group(numbers, problem, Candidate(guards, (BOTH_DOWN,) * len(numbers)))
+    return Group(problem, Candidate(guards, (BOTH_DOWN,) * len(numbers)))
 
 
 def least_strengths(group: Group, table: Coefficients, gap: int, rounds: int, enough: int) -> tuple[Strengths, str]:

@@ -18,39 +18,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hubokit.projection.shared_bounds import PARTS, Candidate, FlipProblem, Slacks, equal_shares
-from hubokit.reduction.penalties import Strengths
+from hubokit.reduction.tightening_ledger import Coefficients
 
 SUM_WEIGHT = 0.001
 """What the sum of all penalties counts beside the largest coefficient."""
-
-
-@dataclass(frozen=True)
-class Coefficients:
-    """The coefficients of the reduced model that penalties of a group enter: ``base + matrix @ (A, B)``.
-
-    Parameters
-    ----------
-    base : int64 or object array, shape (r,)
-    row, column, factor : int64 arrays, shape (e,)
-        Entries of the matrix; column i is A of the group's auxiliary i, column u + i its B.
-    """
-
-    base: NDArray[Any]
-    row: NDArray[np.int64]
-    column: NDArray[np.int64]
-    factor: NDArray[np.int64]
-
-    def values(self, strengths: Strengths) -> NDArray[Any]:
-        """The coefficients under given penalties, shape (r,)."""
-        penalty = np.concatenate([strengths.one, strengths.both])
-        total = self.base.copy()
-        np.add.at(total, self.row, self.factor * penalty[self.column])
-        return total
-
-    def figure(self, strengths: Strengths) -> tuple[int, int]:
-        """What is made small: the largest absolute coefficient, then the sum of them all."""
-        sizes = np.abs(self.values(strengths))
-        return int(sizes.max(initial=0)), int(sizes.sum())
 
 
 @dataclass(frozen=True)
@@ -59,15 +30,12 @@ class Group:
 
     Parameters
     ----------
-    numbers : int64 array, shape (u,)
-        The auxiliaries.
     problem : FlipProblem
         Their costs and couplers without penalties, over booleans.
     candidate : Candidate
         Their right settings.
     """
 
-    numbers: NDArray[np.int64]
     problem: FlipProblem
     candidate: Candidate
 

@@ -11,7 +11,7 @@ import pytest
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.terms import canonical_blocks
-from hubokit.reduction.pairs import PairVariables, factors_of, rewritten
+from hubokit.reduction.pairs import PairVariables, balanced, factors_of, rewritten
 
 
 def all_states(size: int, domain: str) -> np.ndarray:
@@ -114,3 +114,27 @@ def test_pairs_that_define_nothing_are_refused(pairs: list[tuple[int, int]], tex
 def test_a_term_that_the_pairs_do_not_cover_is_named(size: int) -> None:
     with pytest.raises(InputError, match=r"\[0, 1, 2"):
         factors_of(np.arange(size)[None, :], PairVariables.of(9, [(7, 8)]), "boolean")
+
+
+@pytest.mark.parametrize("domain", ["boolean", "spin"])
+def test_terms_that_have_a_choice_spread_over_the_pairs_and_keep_their_value(domain: str) -> None:
+    pairs = PairVariables.of(4, list(itertools.combinations(range(4), 2)))
+    rows, weights = np.array([[0, 1, 2], [0, 1, 3], [0, 2, 3], [1, 2, 3]]), np.array([7, -5, 3, 2])
+    quartic, weight = np.array([[0, 1, 2, 3]]), np.array([4])
+    before = [factors_of(rows, pairs, domain), factors_of(quartic, pairs, domain)]
+    after = balanced([(rows, weights), (quartic, weight)], before, pairs, domain)
+
+    def heaviest(factors: list[np.ndarray]) -> int:
+        load = np.zeros(4 + pairs.count, int)
+        for one, many in zip(factors, (weights, weight), strict=True):
+            np.add.at(load, one.ravel(), np.repeat(np.abs(many), 2))
+        return int(load[4:].max())
+
+    assert heaviest(after) < heaviest(before)
+    states = all_states(4, domain)
+    full = np.hstack([states, pairs.values(states, domain)])
+    for members, many, factors in zip((rows, quartic), (weights, weight), after, strict=True):
+        _, blocks = canonical_blocks(rewritten(many, factors, pairs, domain), domain)
+        constant, _ = canonical_blocks(rewritten(many, factors, pairs, domain), domain)
+        value = constant + sum((np.prod(full[:, b.members], axis=2) * b.weights).sum(axis=1) for b in blocks)
+        assert np.array_equal(value, np.prod(states[:, members].astype(int), axis=2) @ many)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import itertools
+from dataclasses import replace
 from fractions import Fraction
 
 import numpy as np
@@ -12,7 +13,8 @@ from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.projection.project import project
 from hubokit.reduction.covers import PairCoverPlan, covered_form, pair_cover_reduction
 from hubokit.reduction.penalties import Strengths
-from hubokit.reduction.tightening import coefficients, groups, least_strengths, tightened
+from hubokit.reduction.tightening import group_of, groups, least_strengths, tightened
+from hubokit.reduction.tightening_ledger import Ledger
 
 
 def low_autocorrelation(size: int) -> Hamiltonian:
@@ -124,8 +126,8 @@ def test_pairs_of_pairs_keep_their_interval_bounds() -> None:
 def test_better_shares_never_grow_what_is_made_small() -> None:
     plan = pair_cover_reduction(low_autocorrelation(8))
     form = covered_form(plan.source, plan.covered, plan.factors, plan.pairs, plan.resolution)
-    [group] = groups(form, plan.pairs, 100)
-    table = coefficients(plan, group)
+    [numbers] = groups(form, plan.pairs, 100)
+    group, table = group_of(form, plan.pairs, numbers), Ledger(plan, "spin").table(numbers)
     figures = [table.figure(least_strengths(group, table, 1, rounds, 0)[0]) for rounds in (0, 4, 12)]
     assert figures == sorted(figures, reverse=True)
     assert figures[0] > figures[-1]
@@ -138,3 +140,17 @@ def test_the_trail_says_how_far_the_largest_coefficient_came_down() -> None:
     record = better.record(tuple(f"y{i}" for i in range(better.auxiliaries)))
     assert record["penalties"] == better.tightening
     assert Fraction(better.tightening["scale"]) == largest(built(better)) / largest(built(plan))
+
+
+@pytest.mark.parametrize("domain", ["spin", "boolean"])
+def test_the_ledger_holds_the_coefficients_of_the_model_built(domain: str) -> None:
+    plan = pair_cover_reduction(quartic_model(2, "spin"))
+    ledger = Ledger(plan, domain)
+    numbers = np.arange(plan.auxiliaries)
+    changed = Strengths(plan.strengths.one + 3, plan.strengths.both + 8)
+    ledger.change(numbers, changed)
+    after = replace(plan, strengths=changed)
+    table = ledger.table(numbers)
+    written = [value / after.unit for key, value in built(after).in_domain(domain).terms() if key]
+    assert set(table.values(changed).tolist()) - {0} <= {int(value) for value in written}
+    assert table.figure(changed)[0] == max(abs(value) for value in written)
