@@ -117,6 +117,7 @@ def plan_table(trail: Trail) -> list[dict[str, Any]]:
 
     Examples
     --------
+    >>> from hubokit.model.hamiltonian import Hamiltonian
     >>> from hubokit.reduction.reduce import reduce
     >>> H = Hamiltonian({("a", "b", "c"): 1, ("b", "c", "d"): 1}, "spin")
     >>> rows = plan_table(reduce(H, prefer="auxiliaries").trail)
