@@ -84,12 +84,12 @@ def predicted_cost(H: Hamiltonian, count: int = 1) -> EliminationCost:
     if isinstance(found, int):
         return EliminationCost(found, None, 0, 2 ** (found + 5), float("inf"))
     entries, largest = found.entries, 2 << found.width
-    sweeps = 4 + max(0, H.size - 61) // 30
+    primes = 1 + max(0, H.size - 61) // 31
     if count == 1:
-        memory, seconds = 12 * entries + 40 * largest, 8e-9 * sweeps * entries
+        memory, seconds = 12 * entries + 40 * largest, 8e-9 * (3 + primes) * entries
     else:
         memory = (6 + 8 * count) * entries + 40 * count * largest
-        seconds = 8e-9 * (2 + count * count * max(1, sweeps - 3)) * entries
+        seconds = 9e-9 * (2 + (count + 1) ** 2 * primes) * entries
     return EliminationCost(found.width, found, entries, memory, seconds + 1e-4 * H.size)
 
 

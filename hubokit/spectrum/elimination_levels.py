@@ -47,28 +47,48 @@ def lowest_levels(elimination: Elimination, count: int) -> list[tuple[int, int]]
     [(0, 6), (4, 2)]
     """
     size = len(elimination.order.variables)
-    primes = (0,) if size <= MACHINE_BITS else primes_beyond(2**size)
+    if size <= MACHINE_BITS:
+        return _sweep(elimination, count, 0)
+    primes = primes_beyond(_bound(elimination, count))
     sweeps = [_sweep(elimination, count, prime) for prime in primes]
     excesses = [excess for excess, _ in sweeps[0]]
-    if size <= MACHINE_BITS:
-        return sweeps[0]
     numbers = [from_residues([sweep[k][1] for sweep in sweeps], primes) for k in range(len(excesses))]
     return list(zip(excesses, numbers, strict=True))
 
 
-def _sweep(elimination: Elimination, count: int, prime: int) -> list[tuple[int, int]]:
+def _bound(elimination: Elimination, count: int) -> int:
+    """A number that no degeneracy exceeds: 2**n, or less by a sweep in floats.
+
+    All numbers are positive, so every one of the fewer than 2**40 operations behind a degeneracy adds at most 2**-53
+    to its relative error: twice the float is a proven bound.
+    """
+    size = len(elimination.order.variables)
+    if size > 1000:
+        return 1 << size
+    largest = max(number for _, number in _sweep(elimination, count, 0, np.float64))
+    return min(1 << size, 2 * largest)
+
+
+def _sweep(
+    elimination: Elimination, count: int, prime: int, number_kind: type[Any] = np.int64
+) -> list[tuple[int, int]]:
     separators = elimination.order.separators
     wide = any(difference.dtype == object for difference in elimination.differences)
     kind = object if wide else np.int64
     waiting: list[list[tuple[tuple[int, ...], Table, Table]]] = [[] for _ in separators]
-    excess, number = _identity(1, count, kind)
+    excess, number = _identity(1, count, kind, number_kind)
     here = np.zeros(1, np.int64)
     combine, merge = _loops(elimination.order.entries * count >= COMPILED_FROM and not wide)
     for rank, separator in enumerate(separators):
         entries = 2 << len(separator)
-        table, numbers = _identity(entries, count, kind)
-        for scope, other, other_numbers in waiting[rank]:
+        table, numbers = _identity(entries, count, kind, number_kind)
+        for place, (scope, other, other_numbers) in enumerate(waiting[rank]):
             high, low = partner_index(scope, (rank, *separator))
+            if place == 0:
+                partners = (high[:, None] + low).ravel()
+                np.take(other, partners, axis=0, out=table)
+                np.take(other_numbers, partners, axis=0, out=numbers)
+                continue
             combine(table, numbers, other, other_numbers, high, low, prime)
         waiting[rank] = []
         difference = elimination.differences[rank].astype(kind, copy=False)
@@ -81,10 +101,10 @@ def _sweep(elimination: Elimination, count: int, prime: int) -> list[tuple[int, 
     return [(int(e), int(k)) for e, k in zip(excess[0], number[0], strict=True) if e >= 0]
 
 
-def _identity(entries: int, count: int, kind: type[Any]) -> tuple[Table, Table]:
+def _identity(entries: int, count: int, kind: type[Any], number_kind: type[Any]) -> tuple[Table, Table]:
     """Lists with one completion at excess 0; an excess of -1 means that the list has ended."""
     excess: Table = np.full((entries, count), -1, dtype=kind)
-    number: Table = np.zeros((entries, count), dtype=np.int64)
+    number: Table = np.zeros((entries, count), dtype=number_kind)
     excess[:, 0] = 0
     number[:, 0] = 1
     return excess, number
@@ -107,7 +127,7 @@ def _combine(
     The sum of the a-th and the b-th element has at least a + b smaller ones: pairs with a + b >= count are skipped.
     """
     count = table.shape[1]
-    sums, products = np.empty(count, table.dtype), np.empty(count, np.int64)
+    sums, products = np.empty(count, table.dtype), np.empty(count, numbers.dtype)
     for row in range(len(high)):
         for column in range(len(low)):
             i, j = row * len(low) + column, high[row] + low[column]
@@ -142,7 +162,7 @@ def _combine(
 def _merge(table: Table, numbers: Table, difference: Table, prime: int) -> None:
     """The first half of `table` becomes the merged lists of both values of the variable, excesses added."""
     count, half = table.shape[1], len(difference)
-    sums, totals = np.empty(count, table.dtype), np.empty(count, np.int64)
+    sums, totals = np.empty(count, table.dtype), np.empty(count, numbers.dtype)
     for i in range(half):
         first, second = max(0, -difference[i]), max(0, difference[i])
         a = b = filled = 0

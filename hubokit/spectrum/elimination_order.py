@@ -29,8 +29,8 @@ from hubokit.model.terms import Block
 ATTEMPTS = 24
 """Orders tried by min-fill with ties broken at random (seeded), beside one of min-degree."""
 
-EASY_WIDTH = 10
-"""A first order at most this wide is good enough: no further attempts."""
+EASY_ENTRIES = 1 << 20
+"""An order with so few table entries is good enough: no further attempts."""
 
 
 @dataclass(frozen=True)
@@ -155,7 +155,7 @@ def elimination_order(
         found = _greedy(neighbours, score, widest, random.Random(attempt) if attempt > 1 else None)
         if found is not None and (best is None or found.entries < best.entries):
             best = found
-        if best is not None and best.width <= max(EASY_WIDTH, bound):
+        if best is not None and (best.entries <= EASY_ENTRIES or best.width == bound):
             break
         if attempt * size > 20_000:
             break
