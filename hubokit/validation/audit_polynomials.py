@@ -87,6 +87,27 @@ def interpolated(table: Sequence[Any], variables: Sequence[int], domain: str) ->
     return found
 
 
+def tabulated(poly: Poly, variables: Sequence[int], domain: str) -> list[Any]:
+    """All values of a polynomial, the first variable most significant; the inverse of `interpolated`.
+
+    Examples
+    --------
+    >>> tabulated({(4, 7): -1, (): 2}, [4, 7], "boolean")
+    [2, 2, 2, 1]
+    """
+    place = {variable: len(variables) - 1 - number for number, variable in enumerate(variables)}
+    work: list[Any] = [0] * (1 << len(variables))
+    for key, value in poly.items():
+        work[sum(1 << place[position] for position in key)] = value
+    for bit in range(len(variables)):
+        step = 1 << bit
+        for low in range(len(work)):
+            if not low & step:
+                a, b = work[low], work[low | step]
+                work[low], work[low | step] = (a + b, a - b) if domain == "spin" else (a, a + b)
+    return work
+
+
 def substituted(poly: Poly, position: int, by: Poly, domain: str) -> Poly:
     """The polynomial with one variable replaced by a polynomial."""
     found: Poly = {}
