@@ -158,7 +158,7 @@ class Header:
         """
         if self.domain is not None:
             model = model.in_domain(self.domain, self.convention)
-        if self.digest not in (None, model.digest):
+        if self.digest is not None and self.digest != model.digest:
             raise InputError(
                 "the file and its sidecar .names.json do not belong together: the digest is another; "
                 "take the digest out of the sidecar to accept the change"

@@ -82,6 +82,8 @@ def grouped(literals: NDArray[np.int64], lengths: NDArray[np.int64], weights: ND
     >>> [a.tolist() for a, _ in grouped(np.array([1, 2, 3]), np.array([1, 2]), np.array([5, 6]))]
     [[[1]], [[2, 3]]]
     """
+    if len(lengths) and (lengths == lengths[0]).all():
+        return [(literals.reshape(len(lengths), int(lengths[0])), weights)]
     starts = np.cumsum(lengths) - lengths
     parts = []
     for length in np.unique(lengths).tolist():

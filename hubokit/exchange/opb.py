@@ -60,20 +60,20 @@ def load_opb(path: str | os.PathLike[str]) -> Reading:
         labels = header.labels(max(header.count(largest), header.said.get("variable", 0)), default_name)
         products, weights = _products(found, *objective)
         penalties = [(penalty(c, labels), c) for c in (_constraint(found, *place) for place in constraints)]
-        model = literal_model(products, labels)
+        del found  # the words take more memory than the model
+        model = literal_model(
+            products, labels, scale=header.scale, constant=header.constant, convention=header.convention
+        )
         remarks: tuple[str, ...] = ()
         if penalties:
             factor = 1 + sum(abs(weight) for weight in weights.tolist())
             for made, _ in penalties:
                 if made is not None:
-                    model = model + made * factor
+                    model = model + made * (factor * header.scale)
             remarks = (
                 f"{len(penalties)} constraint{'s' if len(penalties) > 1 else ''} became penalties of weight {factor} "
                 "(1 + the sum of absolute weights of the objective)",
             )
-        model = model * header.scale + header.constant
-        if header.convention != model.convention:
-            model = model.in_domain("boolean", header.convention)
         return Reading(header.restored(model), remarks)
     except HubokitError as error:
         raise error.located(file=os.fspath(path)) from None

@@ -30,7 +30,7 @@ class OpbWords:
     ----------
     kinds : uint8 array, shape (w,)
         WIDE numbers are shown as NUMBER; their values stand in `wide`.
-    values : int64 array, shape (w,)
+    values : int32 or int64 array, shape (w,)
         Numbers, and literals as +-1 .. +-n.
     wide : dict of int to int
         Word to a number of more than 18 digits.
@@ -39,7 +39,7 @@ class OpbWords:
     """
 
     kinds: NDArray[np.uint8]
-    values: NDArray[np.int64]
+    values: NDArray[Any]
     wide: dict[int, int]
     end_lines: NDArray[np.int64]
 
@@ -72,7 +72,7 @@ def opb_words(path: str | os.PathLike[str], take: Callable[[str, int], None]) ->
         A word that does not belong into an OPB file, with its line.
     """
     kinds: list[NDArray[np.uint8]] = []
-    values: list[NDArray[np.int64]] = []
+    values: list[NDArray[Any]] = []
     end_lines: list[NDArray[np.int64]] = []
     wide: dict[int, int] = {}
     total = 0
@@ -86,7 +86,7 @@ def opb_words(path: str | os.PathLike[str], take: Callable[[str, int], None]) ->
         if len(ends):
             end_lines.append(found.lines()[ends])
         kinds.append(kind)
-        values.append(value)
+        values.append(value.astype(np.int32) if int(np.abs(value).max()) < 2**31 else value)
         total += len(kind)
     return OpbWords(
         np.concatenate(kinds) if kinds else np.zeros(0, np.uint8),
