@@ -1,4 +1,4 @@
-"""Bucket elimination: table entries per second beside the bare rate of adding two tables; predicted beside spent time.
+"""Bucket elimination: table entries per second beside the bare rate of adding tables; predicted beside spent time.
 
 Run from the top of the repository: ``python -m tests.benchmarks.bench_elimination``.
 The models are parity equations with a planted solution (3-local, sparse) and square strips.

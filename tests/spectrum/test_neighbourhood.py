@@ -104,6 +104,19 @@ def test_weights_beyond_machine_integers_are_looked_at_exactly(look: tuple[Hamil
     assert as_rows(neighbourhood(H, centres, 3)) == enumerated(H, centres, min(3, H.size), False)
 
 
+NEAR_THE_BOUNDS = st.sampled_from([1, 2**26 - 1, -(2**26), 2**29 - 1, -(2**29), 2**57 - 1, -(2**57)])
+
+
+@given(looks(values=NEAR_THE_BOUNDS))
+def test_the_walk_is_exact_up_to_the_bounds_of_its_integers(look: tuple[Hamiltonian, NDArray[np.int8]]) -> None:
+    H, centres = look
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(module, "SMALL", -1)
+        for radius in (2, H.size):
+            found = as_rows(neighbourhood(H, centres, radius, limit=200))
+            assert found == enumerated(H, centres, min(radius, H.size), False)
+
+
 @settings(max_examples=40)
 @given(looks(), st.integers(1, 4), st.integers(1, 5))
 def test_a_list_cut_at_a_limit_keeps_the_lowest_and_of_equals_the_first(
@@ -268,3 +281,34 @@ def test_all_flips_of_a_product_of_thirty_four_spins_wrap_around_without_reachin
     assert int(recentring._wrapped((-2) ** 34, np.int64)) == 2**34
     total = sum(comb(34, d) * int(recentring._wrapped((-2) ** d, np.int32)) for d in range(35))
     assert (total - 1) % 2**32 == 0
+
+
+def test_a_reduced_model_measured_on_its_minimum_over_auxiliaries_looks_like_its_source() -> None:
+    """P equals E for a one-to-one reduction: through the projected polynomial and through minima of single states."""
+    from hubokit.reduction.reduce import reduce
+
+    chance = np.random.default_rng(5)
+    triples = np.array([chance.choice(12, 3, replace=False) for _ in range(14)])
+    H = Hamiltonian.from_arrays([triples], [chance.choice([-2, -1, 1], 14)], domain="spin", size=12)
+    R = reduce(H)
+    projection = R.projection
+    assert projection.originals == H.labels
+    assert projection.polynomial is not None
+    centres = from_bits(chance.integers(0, 2, (2, 12)), "spin")
+    source = neighbourhood(H, centres, 2)
+    on_polynomial = neighbourhood(projection.polynomial, centres, 2)
+    on_minima = neighbourhood_of(
+        lambda states: projection.minimum(states)[0],
+        centres,
+        2,
+        domain="spin",
+        constant=R.model.constant,
+        resolution=R.model.resolution,
+    )
+    scale, shift = R.trail.scale, R.trail.shift
+    for look in (on_polynomial, on_minima):
+        assert look.highest == scale * source.highest + shift
+        assert [[s.at_or_below for s in ball.shells] for ball in look.balls] == [
+            [s.at_or_below for s in ball.shells] for ball in source.balls
+        ]
+        assert as_rows(look) == as_rows(on_polynomial)
