@@ -150,7 +150,8 @@ def _written(step: Step, domain: str) -> dict[str, Any]:
     if isinstance(step, RuleStep):
         return {"step": _name(step), "eliminate": step.at_once, **rows, "margins": margins}
     shares = [[i, k, r, s, format_fraction(Fraction(part, PARTS))] for i, k, r, s, part in step.shares]
-    return {"step": "shared", **rows, "shares": shares or "equal", "slacks": margins}
+    slacks = [format_fraction(slack) for slack in step.slacks]
+    return {"step": "shared", **rows, "shares": shares or "equal", "slacks": slacks}
 
 
 def _rules(all_rules: list[Rules]) -> dict[str, Any]:

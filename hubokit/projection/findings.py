@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from fractions import Fraction
 
 import numpy as np
 from numpy.typing import NDArray
@@ -47,10 +48,13 @@ class SharedStep:
     rules : list of Rules, one for each auxiliary
     shares : list of (i, k, right bit of i, right bit of k, numerator)
         Shares that differ from one half, as numerators over `hubokit.projection.shared_bounds.PARTS`.
+    slacks : list of Fraction
+        Least slack of each auxiliary, in units of the resolution.
     """
 
     rules: list[Rules]
     shares: list[tuple[int, int, int, int, int]]
+    slacks: list[Fraction]
     name: str = "shared bounds"
 
 

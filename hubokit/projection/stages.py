@@ -32,6 +32,7 @@ from hubokit.projection.shared_bounds import (
     SHARED_MOST,
     Candidate,
     FlipProblem,
+    as_fractions,
     better_shares,
     flip_problem,
     slacks,
@@ -156,8 +157,9 @@ def _by_shared_bounds(findings: Findings, auxiliaries: Positions) -> bool:
         shares, found = better_shares(problem, candidate)
     if found.least <= 0:
         return False
+    least = [min(as_fractions(table)) for table in found.tables]
     rules = [_as_rules(problem, candidate, i, int(table.min())) for i, table in enumerate(found.tables)]
-    findings.decide(SharedStep(rules, _unequal(problem, shares)), rules)
+    findings.decide(SharedStep(rules, _unequal(problem, shares), least), rules)
     return True
 
 
