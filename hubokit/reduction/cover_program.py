@@ -7,7 +7,6 @@ split with u <= z of both its pairs, and asks the three to add up to 1 at least;
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -57,6 +56,45 @@ def least_cover(problem: CoverProblem, start: NDArray[np.bool_], nodes: int) -> 
     >>> answer.chosen.tolist(), answer.proven
     ([True, False, False, False, False], True)
     """
+    program = _program(problem)
+    answer = solved(program, nodes, _columns(problem, start | problem.given))
+    found, bound = start | problem.given, 0
+    if answer is not None:
+        bound = answer[1]
+        better = problem.given | (answer[0][: problem.pairs] > 0.5)
+        if problem.is_covered(better).all() and problem.count(better) <= problem.count(found):
+            found = better
+    bound = min(bound, problem.count(found))
+    return ProgramAnswer(found, bound, bound == problem.count(found))
+
+
+@dataclass(frozen=True)
+class Program:
+    """Minimise cost @ z with every row of the matrix at least `least`, 0 <= z <= 1, the first `whole` columns whole.
+
+    Parameters
+    ----------
+    cost, lower : float64 arrays, shape (c,)
+        Costs are whole numbers; `lower` is 1 for columns that are chosen already.
+    whole : int
+    starts, index, value : arrays
+        The matrix, row by row: row r has ``index[starts[r]:starts[r + 1]]``.
+    least : float64 array, shape (r,)
+    """
+
+    cost: NDArray[np.float64]
+    lower: NDArray[np.float64]
+    whole: int
+    starts: NDArray[np.int32]
+    index: NDArray[np.int32]
+    value: NDArray[np.float64]
+    least: NDArray[np.float64]
+
+
+def solved(
+    program: Program, nodes: int, start: NDArray[np.float64] | None = None
+) -> tuple[NDArray[np.float64], int] | None:
+    """Column values and a lower bound of the cost, as far as `nodes` branch and bound nodes go; None without any."""
     import highspy
 
     class Quiet(highspy.Highs):
@@ -67,23 +105,30 @@ def least_cover(problem: CoverProblem, start: NDArray[np.bool_], nodes: int) -> 
             super().enableCallbacks()  # type: ignore[no-untyped-call]
 
     solver = Quiet()  # type: ignore[no-untyped-call]
-    solver.setOptionValue("threads", 1)
-    solver.setOptionValue("mip_max_nodes", nodes)
-    solver.setOptionValue("mip_rel_gap", 0.0)
-    solver.setOptionValue("mip_abs_gap", 0.999)
-    solver.passModel(_program(problem))
-    solution = highspy.HighsSolution()
-    solution.col_value = _columns(problem, start | problem.given).tolist()
-    solver.setSolution(solution)
+    settings = {"threads": 1, "mip_max_nodes": nodes, "mip_rel_gap": 0.0, "mip_abs_gap": 0.999}
+    for name, value in settings.items():
+        solver.setOptionValue(name, value)
+    columns = len(program.cost)
+    model = highspy.HighsLp()
+    model.num_col_, model.num_row_ = columns, len(program.least)
+    model.col_cost_, model.col_lower_, model.col_upper_ = program.cost, program.lower, np.ones(columns)
+    model.row_lower_, model.row_upper_ = program.least, np.full(len(program.least), highspy.kHighsInf)
+    model.a_matrix_.format_ = highspy.MatrixFormat.kRowwise
+    model.a_matrix_.start_, model.a_matrix_.index_ = program.starts, program.index
+    model.a_matrix_.value_ = program.value
+    kinds = highspy.HighsVarType
+    model.integrality_ = [kinds.kInteger] * program.whole + [kinds.kContinuous] * (columns - program.whole)
+    solver.passModel(model)
+    if start is not None:
+        solution = highspy.HighsSolution()
+        solution.col_value = start.tolist()
+        solver.setSolution(solution)
     solver.run()
-    values = np.array(solver.getSolution().col_value[: problem.pairs])
-    found = problem.given | (values > 0.5) if len(values) == problem.pairs else start | problem.given
-    if not problem.is_covered(found).all() or problem.count(found) > problem.count(start):
-        found = start | problem.given
+    values = np.array(solver.getSolution().col_value)
     dual = float(solver.getInfo().mip_dual_bound)
-    bound = int(np.ceil(dual - 1e-6)) if np.isfinite(dual) else 0
-    bound = min(max(bound, 0), problem.count(found))
-    return ProgramAnswer(found, bound, bound == problem.count(found))
+    if len(values) != columns or not np.isfinite(dual):
+        return None
+    return values, max(0, int(np.ceil(dual - 1e-6)))
 
 
 def _columns(problem: CoverProblem, chosen: NDArray[np.bool_]) -> NDArray[np.float64]:
@@ -93,9 +138,7 @@ def _columns(problem: CoverProblem, chosen: NDArray[np.bool_]) -> NDArray[np.flo
     return np.concatenate([chosen, splits]).astype(np.float64)
 
 
-def _program(problem: CoverProblem) -> Any:
-    import highspy
-
+def _program(problem: CoverProblem) -> Program:
     pairs = problem.pairs
     cubic, quartic = problem.rows[problem.is_cubic][:, :3], problem.rows[~problem.is_cubic]
     split = pairs + np.arange(4 * len(quartic)).reshape(-1, 4)
@@ -108,16 +151,13 @@ def _program(problem: CoverProblem) -> Any:
     value = np.ones(len(index))
     if len(links):
         value[len(index) - 2 * len(links) :: 2] = -1.0
-    columns = pairs + split.size
-    model = highspy.HighsLp()
-    model.num_col_, model.num_row_ = columns, len(lengths)
-    model.col_cost_ = np.concatenate([~problem.given, np.zeros(split.size)]).astype(float)
-    model.col_lower_ = np.concatenate([problem.given, np.zeros(split.size)]).astype(float)
-    model.col_upper_ = np.ones(columns)
-    model.row_lower_ = np.concatenate([np.ones(len(cover_rows)), np.zeros(len(links))])
-    model.row_upper_ = np.full(len(lengths), highspy.kHighsInf)
-    model.a_matrix_.format_ = highspy.MatrixFormat.kRowwise
-    model.a_matrix_.start_ = np.concatenate([[0], np.cumsum(lengths)]).astype(np.int32)
-    model.a_matrix_.index_, model.a_matrix_.value_ = index, value
-    model.integrality_ = [highspy.HighsVarType.kInteger] * pairs + [highspy.HighsVarType.kContinuous] * split.size
-    return model
+    none = np.zeros(split.size)
+    return Program(
+        np.concatenate([~problem.given, none]).astype(float),
+        np.concatenate([problem.given, none]).astype(float),
+        pairs,
+        np.concatenate([[0], np.cumsum(lengths)]).astype(np.int32),
+        index,
+        value,
+        np.concatenate([np.ones(len(cover_rows)), np.zeros(len(links))]),
+    )

@@ -11,11 +11,14 @@ import pytest
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.projection.project import project
+from hubokit.reduction.cover_choice import choose_pairs
 from hubokit.reduction.cover_kernels import compiled, exchange_loop, greedy_loop
+from hubokit.reduction.cover_nests import nested_cover
 from hubokit.reduction.cover_problem import CoverProblem, cover_problem
 from hubokit.reduction.cover_program import least_cover
 from hubokit.reduction.cover_search import components, exchanged, find_cover, greedy_cover, pruned, sides, simplified
-from hubokit.reduction.covers import PairCoverPlan, choose_pairs, pair_cover_reduction
+from hubokit.reduction.covers import PairCoverPlan, pair_cover_reduction
+from hubokit.reduction.pairs import factors_of
 
 
 def low_autocorrelation(size: int) -> Hamiltonian:
@@ -48,8 +51,8 @@ def random_problem(seed: int, size: int = 7, cubic: int = 12, quartic: int = 6) 
     return cover_problem(blocks, size, np.array([[0, 1]]))
 
 
-def plain_rule(rows: list[tuple[int, ...]], size: int, domain: str) -> int:
-    """The most-common-pair rule spelled out over sets: how many auxiliaries it takes."""
+def plain_rule(rows: list[tuple[int, ...]], size: int, domain: str, sign: int = 1) -> int:
+    """The most-common-pair rule spelled out over sets: how many auxiliaries it takes; equal pairs in either order."""
     terms = [frozenset(row) for row in rows]
     due: set[frozenset[int]] = set()
     used: set[frozenset[int]] = set()
@@ -64,7 +67,7 @@ def plain_rule(rows: list[tuple[int, ...]], size: int, domain: str) -> int:
             counts[pair] = counts.get(pair, 0) + 1
         if not counts:
             return len(used)
-        best = min(counts, key=lambda pair: (-counts[pair], sorted(pair)))
+        best = min(counts, key=lambda pair: (-counts[pair], [sign * v for v in sorted(pair)]))
         used.add(best)
         due.discard(best)
         after = []
@@ -307,3 +310,24 @@ def test_terms_left_alone_are_not_covered_and_the_others_are() -> None:
     plan = pair_cover_reduction(H, alone=np.ones(6, bool))
     assert plan.covered[4].tolist() == [True, True, True, True, True, False]
     assert (plan.auxiliaries, plan.chosen.alone) == (4, 1)
+
+
+def test_few_boolean_quartics_take_no_more_than_the_rule_in_either_order() -> None:
+    for seed in range(6):
+        blocks = {3: random_rows(seed, 6, 3, 3), 4: random_rows(seed + 50, 6, 7, 4)}
+        rows = [tuple(row) for members in blocks.values() for row in members.tolist()]
+        count = choose_pairs(blocks, 6, "boolean").pairs.count
+        assert count <= min(plain_rule(rows, 6, "boolean", 1), plain_rule(rows, 6, "boolean", -1))
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_splits_and_nests_together_make_every_term_quadratic(seed: int) -> None:
+    cubics, quartics = random_rows(seed, 6, 3, 3), random_rows(seed + 9, 6, 6, 4)
+    found = nested_cover(cubics, quartics, 6, 50)
+    assert found is not None
+    pairs, proven = found
+    assert proven
+    assert (factors_of(cubics, pairs, "boolean") >= 0).all()
+    assert (factors_of(quartics, pairs, "boolean") >= 0).all()
+    apart = choose_pairs({3: cubics, 4: quartics}, 6, "spin").pairs.count
+    assert pairs.count <= apart
