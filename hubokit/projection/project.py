@@ -21,9 +21,10 @@ from hubokit.errors import LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.states import States, from_bits, unpack
 from hubokit.projection.findings import Findings, Listed
+from hubokit.projection.gaps import gap_everywhere
 from hubokit.projection.minimum import Minimiser
 from hubokit.projection.polynomial import Gathered
-from hubokit.projection.result import ClusterSummary, GapBound, least
+from hubokit.projection.result import ClusterSummary, GapBound
 from hubokit.projection.settle import Settled
 from hubokit.projection.stages import settle
 from hubokit.projection.structure import Structure, structure_of
@@ -181,16 +182,6 @@ def _projection(findings: Findings) -> Projection:
             polynomial = _over_originals(structure, gathered)
         except LimitError as refused:
             too_large = (f"P as a polynomial: {refused.message}",)
-    bounds = [_gap(settled, model, consistent) for settled, consistent in findings.settled()]
-    for rules in findings.rounds:
-        for one in rules:
-            margin = one.margin.min()
-            attained = bool(one.attained[one.margin == margin].any())
-            bounds.append(GapBound(int(margin) * model.resolution, attained))
-    # Nothing but wholeness is known of the gap of a cluster that was searched state by state.
-    bounds.extend(GapBound(model.resolution, False) for _ in findings.listed())
-    if not findings.is_tie_free_or_counted:
-        bounds.append(GapBound(model.resolution, False))
     is_settled = not findings.undecided
     return Projection(
         model,
@@ -199,15 +190,10 @@ def _projection(findings: Findings) -> Projection:
         polynomial,
         (*findings.undecided, *too_large),
         _uniform(findings) if is_settled and findings.is_tie_free_or_counted else None,
-        least(bounds) if is_settled else None,
+        gap_everywhere(findings) if is_settled else None,
         _summaries(findings),
         findings,
     )
-
-
-def _gap(settled: Settled, model: Hamiltonian, consistent: bool) -> GapBound:
-    value = settled.least_gap()
-    return GapBound(None if value is None else value * model.resolution, consistent)
 
 
 def _uniform(findings: Findings) -> int | None:
