@@ -1,11 +1,10 @@
 """Levels of a model whose weights exceed int64: a rounded walk that gathers every state that may matter.
 
-The weights are divided by 2**q and rounded to whole numbers whose absolute sum stays below 2**62. Each term is
-then off by at most 1/2, so that with T terms a state's exact energy lies within T/2 (in units of 2**q) of its
-rounded one. Two states whose rounded energies differ by more than T differ in exact energy. Hence, with c1 the
-least rounded energy and c(i+1) the least one above c(i) + T, there are at least K exact levels up to c(K) + T/2,
-and all states of the K lowest exact levels have rounded energies up to c(K) + T. Those are gathered and evaluated
-exactly. No float takes part.
+The weights w are divided by 2**q and rounded to whole numbers r whose absolute sum stays below 2**62. A state's exact
+energy then lies within d/2 (in units of 2**q) of its rounded one, with d = 2 * sum |w / 2**q - r|. Two states whose
+rounded energies differ by more than d differ in exact energy. Hence, with c1 the least rounded energy and c(i+1) the
+least one above c(i) + d, there are at least K exact levels up to c(K) + d/2, and all states of the K lowest exact
+levels have rounded energies up to c(K) + d. Those are gathered and evaluated exactly. No float takes part.
 """
 
 from __future__ import annotations
@@ -28,12 +27,14 @@ _NOTES = 2**16
 _HIGHEST = 2**63 - 1
 
 
-def rounded(polynomial: Polynomial) -> Polynomial:
-    """Weights divided by a power of two and rounded (halves upwards), absolute sum below 2**62."""
-    excess = max(0, polynomial.bound.bit_length() - 60)
-    half = (1 << excess) >> 1
-    weights = [(int(weight) + half) >> excess for weight in polynomial.weights]
-    return Polynomial(polynomial.size, polynomial.spin, polynomial.masks, np.array(weights, np.int64))
+def rounded(polynomial: Polynomial) -> tuple[Polynomial, int]:
+    """Weights divided by a power of two and rounded (halves upwards), absolute sum below 2**62; and d, rounded up."""
+    bits = max(0, polynomial.bound.bit_length() - 60)
+    half = (1 << bits) >> 1
+    weights = [(int(weight) + half) >> bits for weight in polynomial.weights]
+    deviation = sum(abs(int(w) - (r << bits)) for w, r in zip(polynomial.weights, weights, strict=True))
+    coarse = Polynomial(polynomial.size, polynomial.spin, polynomial.masks, np.array(weights, np.int64))
+    return coarse, -(-2 * deviation >> bits)
 
 
 @dataclass(frozen=True)
@@ -66,7 +67,7 @@ class Candidates:
         return None if total is None else self.ceiling(total["energies"])
 
     def ceiling(self, energies: npt.NDArray[np.int64]) -> int | None:
-        """c(K) + T; None while fewer than K values lie far enough apart."""
+        """c(K) + d; None while fewer than K values lie far enough apart."""
         values = np.unique(energies)
         place, last = 0, 0
         for _ in range(self.most):

@@ -159,8 +159,8 @@ def low_levels(
         found = _tabulated_levels(reduced, count + 1, limit)
         _report_whole(progress)
     elif wide:
-        coarse = rounded(reduced)
-        candidates = Candidates(coarse, layout_of(coarse), count + 1, len(coarse.masks))
+        coarse, window = rounded(reduced)
+        candidates = Candidates(coarse, layout_of(coarse), count + 1, window)
         total = run_slabs(candidates, executor=executor, progress=progress, checkpoint=checkpoint, time=time)
         found = exact_levels(reduced, total, count + 1, limit)
     else:

@@ -10,7 +10,7 @@ import pytest
 
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
-from hubokit.spectrum import exhaustive
+from hubokit.spectrum import exhaustive, level_walk
 from hubokit.spectrum.count_walk import DistinctEnergies, EnergyCounts, LocalMinima
 from hubokit.spectrum.derivatives import Layout
 from hubokit.spectrum.level_walk import LowestLevels
@@ -56,6 +56,18 @@ def assert_levels(
     for level in range(listed):
         states = found["states"][found["bounds"][level] : found["bounds"][level + 1]]
         assert states.tolist() == np.flatnonzero(table == energies[level])[:limit].tolist()
+
+
+def test_little_room_for_states_changes_no_list(monkeypatch: pytest.MonkeyPatch) -> None:
+    """The room is used up again and again, in the middle of blocks and of levels that are later forgotten."""
+    monkeypatch.setattr(level_walk, "_NOTES", 8)
+    rng = np.random.default_rng(50)
+    for _ in range(300):
+        size, low = int(rng.integers(5, 10)), int(rng.integers(0, 4))
+        masks = np.unique(rng.integers(1, 1 << size, int(rng.integers(1, 4))))
+        polynomial = Polynomial(size, bool(rng.integers(2)), masks, rng.choice([-2, -1, 1], len(masks)))
+        most, limit = int(rng.integers(2, 5)), int(rng.integers(0, 12))
+        assert_levels(polynomial, Layout(low, size - low, 0), most, limit, tabulated(polynomial))
 
 
 @pytest.mark.parametrize("seed", range(4))

@@ -84,7 +84,7 @@ def wide_model(rng: np.random.Generator, spread: int) -> Hamiltonian:
 
 
 @pytest.mark.usefixtures("_walk_everything")
-@pytest.mark.parametrize("spread", [0, 1, 1000, 2**60])
+@pytest.mark.parametrize("spread", [0, 1, 1000, 2**13, 2**15, 2**60])
 def test_weights_beyond_int64_give_exact_levels_by_the_rounded_walk(spread: int) -> None:
     rng = np.random.default_rng(spread % 97)
     for _ in range(100):
@@ -103,11 +103,11 @@ def test_the_rounding_separates_no_equal_energies_and_loses_no_candidate() -> No
     for _ in range(100):
         polynomial = polynomial_of(wide_model(rng, 5))
         size = polynomial.size
-        coarse = rounded(polynomial)
+        coarse, window = rounded(polynomial)
         assert coarse.weights.dtype == np.int64
         assert coarse.bound < 2**62
         fixed = int(rng.integers(0, min(4, size)))
-        task = Candidates(coarse, Layout(1, size - 1 - fixed, fixed), 3, len(coarse.masks))
+        task = Candidates(coarse, Layout(1, size - 1 - fixed, fixed), 3, window)
         found = exact_levels(polynomial, run_slabs(task), 3, 1000)
         table = tabulated(polynomial)
         energies = sorted(set(table.tolist()))
@@ -115,6 +115,30 @@ def test_the_rounding_separates_no_equal_energies_and_loses_no_candidate() -> No
         for level, energy in enumerate(energies[:2]):
             states = found["states"][found["bounds"][level] : found["bounds"][level + 1]]
             assert states.tolist() == [state for state, value in enumerate(table) if value == energy]
+
+
+@pytest.mark.usefixtures("_walk_everything")
+def test_states_that_rounding_puts_in_the_wrong_order_are_put_right() -> None:
+    """Ten booleans of -1.49 units each (rounded to -1), or nine of -1.51 (rounded to -2), or one of -40: never two
+    kinds."""
+    unit = 2**41
+    few = {(f"x{i}",): -149 * unit // 100 for i in range(10)}
+    many = {(f"y{i}",): -151 * unit // 100 for i in range(9)}
+    apart = {(x, y): 2**94 for (x,) in few for (y,) in many}
+    H = Hamiltonian(few | many | apart | {("x0", "x1", "y0"): 1}, domain="boolean")
+    polynomial = polynomial_of(H)
+    coarse, window = rounded(polynomial)
+    energies = tabulated(coarse)
+    best = int(np.argmin(tabulated(polynomial)))
+    assert energies[best] > energies.min() + window // 4
+    level = exhaustive.ground_states(H)
+    assert level.energy == sum(few.values())
+    assert level.degeneracy == 1
+
+    alone = {(x, "z"): 2**94 for (x,) in (few | many)}
+    second = exhaustive.ground_states(H + Hamiltonian({("z",): -40 * unit} | alone, domain="boolean"))
+    assert second.energy == -40 * unit
+    assert second.gap == level.energy - second.energy
 
 
 def test_float_weights_of_a_large_model_are_answered_exactly() -> None:

@@ -32,10 +32,10 @@ def dense(size: int, locality: int, seed: int = 0, domain: str = "boolean", weig
     return Hamiltonian.from_arrays(members, weights, domain=domain)
 
 
-def chain(size: int) -> Hamiltonian:
+def chain(size: int, weight: int = 1) -> Hamiltonian:
     """Levels of very many states, so that lists are cut."""
     pairs = [[i, i + 1] for i in range(size - 1)]
-    return Hamiltonian.from_arrays([[[0]], pairs], [[1], [-1] * len(pairs)], domain="boolean", size=size)
+    return Hamiltonian.from_arrays([[[0]], pairs], [[weight], [-1] * len(pairs)], domain="boolean", size=size)
 
 
 def plain(levels: list[Level]) -> list[tuple[object, ...]]:
@@ -111,6 +111,7 @@ def test_the_checkpoint_of_another_model_or_question_is_refused(tmp_path: Path) 
     for question in (
         lambda: ground_states(chain(26), checkpoint=path),
         lambda: ground_states(dense(25, 2), checkpoint=path),
+        lambda: ground_states(chain(25, weight=2), checkpoint=path),
         lambda: low_levels(chain(25), 2, checkpoint=path),
         lambda: ground_states(chain(25), 7, checkpoint=path),
         lambda: density_of_states(chain(25), checkpoint=path),
