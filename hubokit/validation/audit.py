@@ -211,7 +211,8 @@ class _Audit:
 
     def _scale(self, found: tuple[Fraction, Fraction] | None, constant: bool) -> None:
         """A scale that was not declared is the one that holds everywhere, or 1 and 0."""
-        if self.verdict["scale_from"] == "declared":
+        sought = any(piece["kind"] in ("projection", "exhaustion") for piece in self.verdict["evidence"])
+        if self.verdict["scale_from"] == "declared" or not sought:
             return
         wanted = (Fraction(1), Fraction(0)) if found is None else found
         origin = "default" if found is None else "found"

@@ -83,7 +83,7 @@ def _by_levels(case: Case, options: Options, found: Findings, ground: Ground, me
         for name in options.asked:
             found.leave_open(name, f"{method}: {refusal}")
         return
-    found.evidence.append({"kind": method, "account": f"ground levels by {source.method}"})
+    found.evidence.append({"kind": "ground levels", "method": method, "account": f"ground levels by {source.method}"})
 
 
 class Levels:

@@ -114,6 +114,8 @@ def _verdict(case: Case, options: Options, found: Findings) -> Verdict:
     if not found.scale_known and case.declared is not None:
         found.scale, found.shift = case.declared
         found.scale_from = "declared"
+    elif not found.scale_known:
+        found.note("scale and shift were not sought over all states: 1 and 0 are taken")
     return Verdict(
         claims=found.in_order(options.asked),
         asked=options.asked,

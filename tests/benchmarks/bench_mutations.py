@@ -185,7 +185,7 @@ def random_source(rng: random.Random) -> Hamiltonian:
     domain = rng.choice(("spin", "boolean"))
     labels = tuple("abcde"[: rng.randint(2, 5)])
     terms: dict[tuple[str, ...], Fraction] = {}
-    unit = rng.choice((Fraction(1), Fraction(1), Fraction(1, 2), Fraction(2, 3)))
+    unit = rng.choice((Fraction(1), Fraction(1), Fraction(1, 2), Fraction(2, 3), Fraction(10**21, 7)))
     for _ in range(rng.randint(1, 6)):
         size = rng.choice((1, 2, 3, 3, 3, 4, 5))
         key = tuple(sorted(rng.sample(labels, min(size, len(labels)))))

@@ -65,3 +65,18 @@ def test_the_oracle_agrees_with_a_reduction_worked_out_by_hand():
     assert known.counts[1, 1, 0] == 2
     assert known.counts[1, 1, 1] == 1
     assert known.model_gap == 1
+
+
+def test_what_is_tested_on_a_neighbourhood_of_all_states_is_true():
+    rng = random.Random(22)
+    tested = 0
+    for _ in range(12):
+        for mutant in trial_program.mutants_of(trial_program.random_reduction(rng), rng, 8):
+            source, known = mutant.reduction.source, trial_program.truth(mutant.reduction)
+            first = [trial_program.values(source.domain)[0]] * source.size
+            verdict = check(mutant.reduction, evidence="neighbourhood", radius=source.size, around=[first])
+            for name in CLAIMS:
+                if verdict.claims[name].status == "tested":
+                    assert known.claims[name], (name, mutant)
+                    tested += 1
+    assert tested > 100
