@@ -149,15 +149,9 @@ def assembled(H: Hamiltonian, pieces: Sequence[Piece], gap: Fraction) -> tuple[H
         constant += offset
         first += piece.auxiliaries
     auxiliaries = fresh_labels(H.labels, first - H.size)
-    model = Hamiltonian.from_arrays(
-        [members for members, _ in parts],
-        [weights for _, weights in parts],
-        H.domain,
-        labels=(*H.labels, *auxiliaries),
-        resolution=resolution,
-        constant=H.constant + constant * resolution,
-        convention=H.convention,
-    )
+    # The labels are known to be good and the parts to fit, so the model is filled without reading them again.
+    labels = (*H.labels, *auxiliaries)
+    model = H._like(parts, resolution, H.constant + constant * resolution, labels=labels)
     return model, auxiliaries
 
 

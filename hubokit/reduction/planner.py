@@ -79,7 +79,7 @@ def planned(question: Question, method: str = "auto") -> Planned:
     if method in ("auto", TERM_BY_TERM):
         plans += term_plans(question, others)
     if method in ("auto", GROUPS):
-        plans += _noted(group_plans(question), GROUPS, others)
+        plans += _noted(group_plans(question, method), GROUPS, others)
     if method in ("auto", SYMMETRIC):
         largest = LARGEST if method == "auto" else question.H.size
         plans += symmetric_plans(question, largest)

@@ -71,18 +71,16 @@ class Reduction:
 
     def __post_init__(self) -> None:
         added = set(self.auxiliaries)
-        count = len(self.auxiliaries)
-        in_order = tuple(self.model.labels[self.model.size - count :]) == tuple(self.auxiliaries)
-        if len(added) < count:
+        if len(added) < len(self.auxiliaries):
             twice = next(label for label in self.auxiliaries if list(self.auxiliaries).count(label) > 1)
             raise InputError(f"{twice!a} is named twice", "auxiliaries")
-        if not in_order:
+        ordered = tuple(self.auxiliaries)
+        if self.model.labels[self.model.size - len(ordered) :] != ordered:
             for label in self.auxiliaries:
                 if label not in self.model.positions:
                     raise InputError(f"{label!a} is no variable of the reduced model", "auxiliaries")
-            object.__setattr__(self, "auxiliaries", tuple(v for v in self.model.labels if v in added))
-        else:
-            object.__setattr__(self, "auxiliaries", tuple(self.auxiliaries))
+            ordered = tuple(label for label in self.model.labels if label in added)
+        object.__setattr__(self, "auxiliaries", ordered)
         for name in ("scale", "shift"):
             value = getattr(self, name)
             if value is not None:
@@ -139,6 +137,9 @@ class Reduction:
     @cached_property
     def originals(self) -> tuple[str, ...]:
         """Variables of the model that are no auxiliaries, in model order."""
+        split = self.model.size - len(self.auxiliaries)
+        if self.model.labels[split:] == self.auxiliaries:
+            return self.model.labels[:split]
         added = set(self.auxiliaries)
         return tuple(label for label in self.model.labels if label not in added)
 

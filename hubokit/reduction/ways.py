@@ -28,6 +28,9 @@ MIX_LIMIT = 27
 PAIR_COVER_LIMIT = 2**15
 """Most members of terms for pricing a pair cover where auxiliaries are not what is preferred."""
 
+GROUPS_LIMIT = 2**19
+"""The same for four-variable groups."""
+
 
 def term_choices(question: Question, notes: list[dict[str, str]]) -> list[tuple[str, Choice]]:
     """Single families, the best for one term alone, and every mix where there are few."""
@@ -100,8 +103,11 @@ def term_plan(question: Question, choice: Choice, name: str) -> Plan:
     return plan_of(question, term_pieces(question.H, choice, question.gap, question.keep), name)
 
 
-def group_plans(question: Question) -> list[Plan] | str:
+def group_plans(question: Question, method: str) -> list[Plan] | str:
     """Four-variable groups with the best of three mixes for what is left over; or the work limit in the way."""
+    work = work_of(question.H)
+    if method != GROUPS and question.prefer != "auxiliaries" and work > GROUPS_LIMIT:
+        return f"{work:,} members to gather; at most {GROUPS_LIMIT:,} unless auxiliaries are preferred"
     grouping = gathered(question.H)
     if grouping is None or isinstance(grouping, str):
         return grouping or []
