@@ -188,8 +188,10 @@ def least_strengths(group: Group, table: Coefficients, gap: int, rounds: int, en
     The search for shares ends when the largest coefficient in the table is at most `enough`.
     """
     best_shares = equal_shares(group.problem)
-    found = slacks(group.problem, group.candidate, best_shares)
+    found = slacks(group.problem, group.candidate)
     best, proof = strengths_for(found, gap), "shared bounds, equal shares"
+    if group.problem.start.dtype == object:
+        return best, proof  # beyond 64 bits floats propose nothing of use
     program = SharesProgram(group, table, gap)
     for _ in range(rounds):
         if table.figure(best)[0] <= enough or not program.learn(found):

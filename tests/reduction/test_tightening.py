@@ -154,3 +154,14 @@ def test_the_ledger_holds_the_coefficients_of_the_model_built(domain: str) -> No
     written = [value / after.unit for key, value in built(after).in_domain(domain).terms() if key]
     assert set(table.values(changed).tolist()) - {0} <= {int(value) for value in written}
     assert table.figure(changed)[0] == max(abs(value) for value in written)
+
+
+@pytest.mark.parametrize("scale", [10**30, Fraction(1, 7)])
+def test_huge_and_fractional_weights_stay_exact(scale: Fraction | int) -> None:
+    terms = {("a", "b", "c", "d"): 3, ("a", "b", "e", "f"): -2, ("c", "d", "e", "f"): 5, ("a", "c", "e"): 1}
+    H = Hamiltonian({key: value * scale for key, value in terms.items()}, "spin")
+    better = tightened(pair_cover_reduction(H, auxiliary_gap=Fraction(1, 3)))
+    assert Fraction(better.tightening["scale"]) < 1
+    projection = project(built(better), [f"y{i}" for i in range(better.auxiliaries)])
+    assert projection.polynomial == H
+    assert projection.uniform_multiplicity == 1
