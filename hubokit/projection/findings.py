@@ -69,12 +69,18 @@ class Listed:
     minimum : integer array, shape (2**d,)
         Least energy of the terms that hold the auxiliaries, in lift order of the touched originals.
     multiplicity : object array, shape (2**d,)
+    gap : int
+        Least strictly positive excess, -1 where there is none.
+    is_gap_exact : bool
+        Whether `gap` is the true one; otherwise a lower bound.
     """
 
     auxiliaries: Positions
     touched: Positions
     minimum: Integers
     multiplicity: Integers
+    gap: int
+    is_gap_exact: bool
 
 
 Step = Settled | RuleStep | SharedStep | Listed

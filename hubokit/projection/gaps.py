@@ -16,6 +16,7 @@ from hubokit.projection.result import GapBound, least
 from hubokit.projection.settle import Settled
 from hubokit.projection.shared_bounds import PARTS, Candidate, FlipProblem, flip_problem, slacks
 from hubokit.projection.structure import Integers, Positions
+from hubokit.projection.tables import NONE
 
 MOST = 400
 """Auxiliaries whose bounds are sharpened, all clusters together."""
@@ -25,9 +26,12 @@ def gap_everywhere(findings: Findings) -> GapBound:
     """Least strictly positive F - P over all states, when every cluster is settled."""
     unit = findings.structure.model.resolution
     bounds = [_of_tables(settled, findings, consistent) for settled, consistent in findings.settled()]
-    # Nothing but wholeness is known of clusters that were searched state by state, or that may have ties.
-    whole_only = any(True for _ in findings.listed()) or not findings.is_tie_free_or_counted
-    if whole_only:
+    bounds.extend(
+        GapBound(None if listed.gap == NONE else listed.gap * unit, listed.is_gap_exact)
+        for listed in findings.listed()
+    )
+    # Nothing but wholeness is known of clusters that may have ties.
+    if not findings.is_tie_free_or_counted:
         bounds.append(GapBound(unit, False))
     coupled: list[Positions] = []
     for rules in findings.rounds:

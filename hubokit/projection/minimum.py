@@ -18,7 +18,7 @@ from hubokit.model.states import States, from_bits, to_bits
 from hubokit.projection.clusters import Batch, Components, batches, components
 from hubokit.projection.elimination import WIDTH_LIMIT, Best, elimination_order, minimise
 from hubokit.projection.guards import Rules
-from hubokit.projection.search import search
+from hubokit.projection.search import gap_above, search
 from hubokit.projection.structure import Integers, Positions, Structure
 from hubokit.projection.tables import NONE, fold, least_positive, settings
 
@@ -179,8 +179,8 @@ def _wide(fields: Integers, between: Integers, bound: int) -> Best:
         if width > WIDTH_LIMIT:
             raise
         return minimise(fields, between, bound)
-    # The search tells nothing of what lies above, but F - P is a whole multiple of the resolution.
-    return Best(found.energy, found.multiplicity, np.ones(len(fields), fields.dtype), found.bits, False)
+    gap, is_exact = gap_above(fields, between + between.T, found)
+    return Best(found.energy, found.multiplicity, gap, found.bits, is_exact)
 
 
 def in_bits(fields: Integers, between: Integers, domain: str) -> tuple[Integers, Integers]:

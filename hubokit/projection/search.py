@@ -110,6 +110,77 @@ def search(fields: Integers, pair: Integers, limit: int | None = None) -> Found:
     return Found(best, number, first)
 
 
+def next_level(fields: Integers, pair: Integers, found: Found, limit: int | None = None) -> Integers:
+    """Least strictly positive excess over the minimum at every state, -1 where there is none.
+
+    From the minimum no set of flips loses, so a flip that costs at least the nearest excess known, joint gains taken off, is in
+    no set that is nearer.
+
+    Parameters
+    ----------
+    fields, pair, limit
+        As in `search`.
+    found : Found
+        Its answer.
+
+    Returns
+    -------
+    integer array, shape (m,)
+
+    Raises
+    ------
+    LimitError
+        More branches are needed.
+
+    Examples
+    --------
+    >>> fields, pair = np.array([[1, -2], [-1, -1]]), np.array([[0, 1], [1, 0]])
+    >>> next_level(fields, pair, search(fields, pair)).tolist()
+    [2, 1]
+    """
+    count, size = fields.shape
+    limit = min(BRANCHES, WORK // max(1, size * size)) if limit is None else limit
+    bits = found.bits
+    change = (1 - 2 * bits.astype(pair.dtype)) * (fields + bits.astype(pair.dtype) @ pair)
+    none = 4 * (int(np.abs(fields).sum(axis=1).max(initial=0)) + int(np.abs(pair).sum())) + 4
+    above = np.where(change > 0, change, none).min(axis=1) if size else np.full(count, none, fields.dtype)
+    opened = 0
+    for start in range(0, count, ROWS):
+        states = np.arange(start, min(start + ROWS, count))
+        zero = np.zeros(len(states), fields.dtype)
+        stack = [_Branches(states, zero, change[states], np.ones((len(states), size), bool), bits[states].copy())]
+        while stack:
+            branches = stack.pop()
+            if len(branches) > ROWS:
+                stack.append(branches.taken(np.arange(ROWS, len(branches))))
+                branches = branches.taken(np.arange(ROWS))
+            opened += len(branches)
+            if opened > limit + count:
+                raise LimitError(f"the next level of {size} coupled auxiliaries needs more than {limit:,} branches")
+            gains, _ = _joint_costs(branches, pair)
+            branches.is_open &= branches.change - gains < above[branches.state][:, None]
+            twice = _halved(branches, pair)
+            losses = np.minimum(0, twice).sum(axis=1)
+            cheapest = np.where(branches.is_open, twice, 2 * none).min(axis=1)
+            bound = 2 * branches.energy + np.where(cheapest < 0, losses, cheapest)
+            kept = branches.is_open.any(axis=1) & (bound < 2 * above[branches.state])
+            branches = branches.taken(kept)
+            if len(branches):
+                both = _split(branches, pair)
+                energy, state = both.energy[len(branches) :], both.state[len(branches) :]
+                np.minimum.at(above, state[energy > 0], energy[energy > 0])
+                stack.append(both)
+    return np.where(above == none, -1, above)
+
+
+def gap_above(fields: Integers, pair: Integers, found: Found) -> tuple[Integers, bool]:
+    """The next level where it is within reach; else 1, because F - P is a whole multiple of the resolution."""
+    try:
+        return next_level(fields, pair, found), True
+    except LimitError:
+        return np.ones(len(fields), fields.dtype), False
+
+
 def local_minima(fields: Integers, pair: Integers) -> tuple[NDArray[np.int8], Integers, Integers]:
     """Bits, cost of each flip and energy at local minima under single flips."""
     bits = (2 * fields + pair.sum(axis=1) < 0).astype(np.int64)

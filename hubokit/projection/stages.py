@@ -24,7 +24,7 @@ from hubokit.projection.clusters import Components, batches, components
 from hubokit.projection.findings import Findings, Listed, RuleStep, SharedStep
 from hubokit.projection.guards import Rules, decide
 from hubokit.projection.polynomial import Gathered
-from hubokit.projection.search import search
+from hubokit.projection.search import gap_above, search
 from hubokit.projection.settle import TABLE_WORK, by_counting, by_tables
 from hubokit.projection.shared_bounds import (
     PARTS,
@@ -38,7 +38,7 @@ from hubokit.projection.shared_bounds import (
     slacks,
 )
 from hubokit.projection.structure import Integers, Positions, Structure
-from hubokit.projection.tables import coefficients, written
+from hubokit.projection.tables import coefficients, least_positive, written
 
 SMALL = 12
 """Auxiliaries plus touched variables up to which a cluster is tabulated without looking for guards."""
@@ -203,12 +203,14 @@ def _by_states(findings: Findings, auxiliaries: Positions, table_bits: int) -> b
             )
     known_bits = to_bits(states[:, problem.known], structure.domain).astype(problem.linear.dtype)
     try:
-        found = search(problem.start + known_bits @ problem.linear.T, problem.pair)
+        fields = problem.start + known_bits @ problem.linear.T
+        found = search(fields, problem.pair)
     except LimitError:
         return False
+    gap, is_exact = gap_above(fields, problem.pair, found)
     states[:, auxiliaries] = from_bits(found.bits, structure.domain)
     minimum = _cluster_energies(structure, auxiliaries, states)
-    findings.settle(Listed(auxiliaries, touched, minimum, found.multiplicity))
+    findings.settle(Listed(auxiliaries, touched, minimum, found.multiplicity, int(least_positive(gap)), is_exact))
     coefficient, shift = coefficients(minimum[None, :], structure.domain)
     findings.gathered.add(written(coefficient, touched[None, :]), shift)
     return True

@@ -10,7 +10,7 @@ from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.projection import elimination, minimum
 from hubokit.projection.elimination import elimination_order, minimise
 from hubokit.projection.minimum import Minimiser
-from hubokit.projection.search import search
+from hubokit.projection.search import next_level, search
 from hubokit.projection.structure import structure_of
 
 ENGINES = {
@@ -54,6 +54,7 @@ def test_elimination_and_search_agree_on_wide_clusters_with_many_ties():
         assert eliminated.energy.tolist() == searched.energy.tolist()
         assert eliminated.multiplicity.tolist() == searched.multiplicity.tolist()
         assert eliminated.bits.tolist() == searched.bits.tolist()
+        assert eliminated.gap.tolist() == next_level(fields, pair + pair.T, searched).tolist()
 
 
 def test_a_long_chain_of_auxiliaries_keeps_every_bit_in_lift_order():
