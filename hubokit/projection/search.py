@@ -113,8 +113,8 @@ def search(fields: Integers, pair: Integers, limit: int | None = None) -> Found:
 def next_level(fields: Integers, pair: Integers, found: Found, limit: int | None = None) -> Integers:
     """Least strictly positive excess over the minimum at every state, -1 where there is none.
 
-    From the minimum no set of flips loses, so a flip that costs at least the nearest excess known, joint gains taken off, is in
-    no set that is nearer.
+    From the minimum no set of flips loses, so a flip that costs at least the nearest excess known, joint gains
+    taken off, is in no set that is nearer.
 
     Parameters
     ----------

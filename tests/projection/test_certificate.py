@@ -24,7 +24,8 @@ def assert_certificate_is_enough(projection):
         for block in model.blocks
         for row, weight in zip(block.members.tolist(), block.weights.tolist(), strict=True)
     }
-    proof = follow(document, terms, model.domain, model.size)
+    auxiliaries = [model.positions[label] for label in projection.auxiliaries]
+    proof = follow(document, terms, model.domain, model.size, auxiliaries)
     reached = {
         tuple(model.labels[i] for i in key): Fraction(value) * model.resolution for key, value in proof.gained.items()
     }
