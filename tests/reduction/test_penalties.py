@@ -48,11 +48,20 @@ def energies_of_reduced(source: Hamiltonian, pairs: PairVariables, gap: int, wea
     divisor = SPIN_DIVISOR if source.domain == "spin" else 1
     parts = [(members, weights * divisor) for members, weights in parts]
     constant, blocks = canonical_blocks([*parts, *penalty_parts(pairs, strengths, source.domain)], source.domain)
-    full = all_states(pairs.size + pairs.count, source.domain)
-    energy = np.full(len(full), constant, np.int64)
+    originals, settings = all_states(pairs.size, source.domain), all_states(pairs.count, source.domain)
+    table = np.full((len(originals), len(settings)), constant, np.int64)
+    slopes = np.zeros((len(originals), pairs.count), np.int64)
     for block in blocks:
-        energy += np.prod(full[:, block.members], axis=2) @ block.weights
-    return energy.reshape(2**pairs.size, 2**pairs.count)
+        for members, weight in zip(block.members.tolist(), block.weights.tolist(), strict=True):
+            outer = [v for v in members if v < pairs.size]
+            inner = [v - pairs.size for v in members if v >= pairs.size]
+            if len(inner) == 1:
+                slopes[:, inner[0]] += weight * np.prod(originals[:, outer], axis=1)
+            elif outer:
+                table += (weight * np.prod(originals[:, outer], axis=1))[:, None]
+            else:
+                table += weight * np.prod(settings[:, inner], axis=1)
+    return table + slopes @ settings.T
 
 
 def assert_one_to_one(source: Hamiltonian, pairs: PairVariables, gap: int) -> None:

@@ -93,12 +93,14 @@ def test_random_quartic_models_keep_every_energy_the_gap_and_one_setting(domain:
         gap = Fraction(1 + seed % 3, 2)
         plan = pair_cover_reduction(H, auxiliary_gap=gap)
         better = tightened(plan, work)
-        gained += better is not plan
+        gained += largest(built(better)) < largest(built(plan))
+        assert largest(built(better)) <= largest(built(plan))
         if better.auxiliaries <= 9:
             table = np.sort(excesses(better), axis=1)
             assert (table[:, 0] == 0).all()
             assert (table[:, 1] >= gap).all()
-    assert gained > 0
+    # Two boolean pairs in one product: the other can be rightly 1, so a wrong 1 costs the whole weight.
+    assert gained > 6 or domain == "boolean"
 
 
 def test_a_penalty_below_the_tightened_one_can_lose_a_state() -> None:
