@@ -11,6 +11,7 @@ from hubokit.exchange.documents import Document
 from hubokit.exchange.files import Progress
 from hubokit.exchange.formats import JSON, Format, format_of, read_document, write
 from hubokit.exchange.header import sidecar_path
+from hubokit.exchange.programs import EXACT, largest
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import format_fraction
 
@@ -22,6 +23,9 @@ COUNTED = ("opb", "wcnf", "cnf", "mps", "lp", "matrix-market")
 
 NUMBERED = ("opb", "wcnf", "cnf", "matrix-market", "pauli")
 """Formats that number the variables and hold their names in comment lines."""
+
+SOLVED = ("opb", "wcnf", "matrix-market")
+"""Formats with whole weights of any size, whose readers may compute in floats."""
 
 CONVENTIONS = {"1-2x": "s = 1 - 2x", "2x-1": "s = 2x - 1"}
 
@@ -145,6 +149,8 @@ def changed(document: Document, entry: Format, path: str | os.PathLike[str]) -> 
     if entry.name in (*NUMBERED, *SIDECAR):
         holder = f"the sidecar {sidecar_path(path).name} holds" if entry.name in SIDECAR else "comment lines hold"
         said.append(f"variables are numbered from 1 in the order of the model; {holder} their names")
+    if entry.name in SOLVED and any(largest(block.weights) > EXACT for block in model.blocks):
+        said.append("weights exceed 2**53: a solver that computes in floats rounds them")
     if entry.name in SIDECAR and model.locality > 1:
         count = sum(len(block) for block in model.blocks if block.locality > 1)
         said.append(f"{count} products became columns with the rows that tie them to their members")

@@ -123,7 +123,7 @@ def highs_write(program: Program, path: Path) -> None:
 
 def _in_child(script: str, source: str, target: str) -> None:
     try:
-        command = [sys.executable, "-c", script, source, target]
+        command = [sys.executable, "-P", "-c", script, source, target]
         done = subprocess.run(command, capture_output=True, timeout=TIME_LIMIT, check=False)
     except subprocess.TimeoutExpired:
         raise InputError(f"HiGHS did not come to an end within {TIME_LIMIT} seconds") from None

@@ -10,6 +10,7 @@ Variables are binary columns x1 .. xn. A product of columns gets a column p_i_j.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -58,6 +59,17 @@ class Program:
     offset: float = 0.0
 
 
+def largest(weights: NDArray[Any]) -> int:
+    """Largest absolute weight, as a Python integer.
+
+    Examples
+    --------
+    >>> largest(np.array([3, -7]))
+    7
+    """
+    return max(abs(int(weights.max())), abs(int(weights.min())))
+
+
 def linearised(model: Hamiltonian) -> Program:
     """The integer program of a boolean model: minimise the sum of weights times products.
 
@@ -78,7 +90,7 @@ def linearised(model: Hamiltonian) -> Program:
     lower, upper, lengths = [np.zeros(0)], [np.zeros(0)], [np.zeros(0, np.int64)]
     columns, values = [np.zeros(0, np.int64)], [np.zeros(0)]
     for block in model.blocks:
-        if max(map(abs, block.weights.tolist())) > EXACT:
+        if largest(block.weights) > EXACT:
             raise LimitError("a weight exceeds 2**53, which a float does not hold exactly; round the model first")
         members, count, k = block.members.astype(np.int64), len(block), block.locality
         if k == 1:

@@ -52,6 +52,13 @@ def test_a_conversion_says_what_it_changed(suffix: str, sentences: list[str], tm
     assert all(part in change for part, change in zip(sentences, changes, strict=True))
 
 
+@pytest.mark.parametrize(("weight", "said"), [(2**53, 0), (2**53 + 1, 1), (10**30, 1)])
+def test_weights_that_floats_do_not_hold_are_said_so(weight: int, said: int, tmp_path: Path) -> None:
+    write(Hamiltonian({("a", "b"): weight, ("a",): 1}, "boolean"), tmp_path / "m.json")
+    changes = convert(tmp_path / "m.json", tmp_path / "m.opb").changes
+    assert sum("a solver that computes in floats rounds them" in change for change in changes) == said
+
+
 def test_the_domain_can_be_changed_on_the_way(tmp_path: Path) -> None:
     write(MODEL, tmp_path / "m.json")
     done = convert(tmp_path / "m.json", tmp_path / "b.json", domain="boolean")

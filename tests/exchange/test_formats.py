@@ -199,6 +199,14 @@ def test_weights_beyond_a_float_are_refused_where_the_format_has_floats(tmp_path
             write(model, tmp_path / f"m.{suffix}")
 
 
+@pytest.mark.parametrize("suffix", ["mps", "lp"])
+def test_weights_up_to_two_to_the_53_are_written_to_the_last_digit(suffix: str, tmp_path: Path) -> None:
+    model = Hamiltonian({("a", "b"): 2**53 - 1, ("a",): -(2**53), ("b",): 1}, "boolean")
+    write(model, tmp_path / f"m.{suffix}")
+    assert "9007199254740991" in (tmp_path / f"m.{suffix}").read_text()
+    assert read(tmp_path / f"m.{suffix}") == model
+
+
 def test_a_sidecar_of_another_model_is_noticed(tmp_path: Path) -> None:
     write(Hamiltonian({("a", "b"): 1}, "boolean"), tmp_path / "one.mps")
     write(Hamiltonian({("a", "b"): 1, ("b",): 3}, "boolean"), tmp_path / "two.mps")
