@@ -58,6 +58,8 @@ def audit(verdict: Mapping[str, Any], source: Mapping[str, Any], model: Mapping[
     """
     try:
         return _Audit(verdict, read_model(source), read_model(model), model.get("trail") or []).report()
+    except TooLarge as limit:
+        return AuditReport((Item("models", "not re-checked", str(limit)),))
     except (KeyError, IndexError, TypeError, ValueError, AttributeError, ZeroDivisionError, RecursionError) as fault:
         if isinstance(fault, InputError):
             raise
@@ -152,6 +154,9 @@ class _Audit:
     def _energy(self) -> Poly:
         """E over the originals of the model, as a polynomial in positions of the model."""
         E: Poly = {}
+        split = {i for i, label in enumerate(self.source.labels) if self.link[label][1] and self.link[label][2]}
+        if sum(1 << min(len(split.intersection(key)), 60) for key in self.source.terms) > MOST_WORK:
+            raise TooLarge("a source whose change of variables would expand too far")
         for key, weight in self.source.terms.items():
             term: Poly = {(): weight * self.source.resolution}
             for position in key:
@@ -173,9 +178,10 @@ class _Audit:
                 continue
             certificate = piece["certificate"]
             try:
-                if list(certificate["auxiliaries"]) != self.auxiliaries:
+                if list(certificate.get("auxiliaries", self.auxiliaries)) != self.auxiliaries:
                     raise Rejected("it speaks of other auxiliaries")
-                proof = follow(certificate, self.model.terms, self.model.domain, len(self.model.labels))
+                size = len(self.model.labels)
+                proof = follow(certificate, self.model.terms, self.model.domain, size, self.auxiliaries)
                 stated = certificate["multiplicity"]
                 if stated is not None and (proof.uneven or proof.unclear or stated != proof.multiplicity):
                     raise Rejected(f"the multiplicity is not {stated} everywhere")
@@ -262,8 +268,9 @@ class _Audit:
         m: dict[Key, int] = {}
         if not proof.unclear:
             low_E, low_P = min(E_all), min(P_all)
-            for x, e, p in zip(states, E_all, P_all, strict=True):
-                if e == low_E or p == low_P:
+            ground = [x for x, e, p in zip(states, E_all, P_all, strict=True) if e == low_E or p == low_P]
+            if len(ground) * (len(proof.uneven) + len(proof.known)) <= MOST_WORK // 8:
+                for x in ground:
                     m[x] = multiplicity_at(proof, dict(zip(self.originals, x, strict=True)))
         self._define(dict(zip(states, E_all, strict=True)), dict(zip(states, P_all, strict=True)), m)
 

@@ -8,13 +8,14 @@ step is wrong (`Rejected`), or that a step is beyond what this checker re-checks
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
 from hubokit.validation.audit_clusters import counting_step, states_step, tables_step
 from hubokit.validation.audit_polynomials import Poly, TooLarge, add, substituted
-from hubokit.validation.audit_proof import Proof, Rejected, function_of, positions_in
+from hubokit.validation.audit_proof import Proof, Rejected, function_of
 from hubokit.validation.audit_rules import guards_step, shared_step, weak_guards_step
+from hubokit.validation.audit_tables import own_tables
 
 STEPS: Mapping[str, Callable[[Proof, Mapping[str, Any], int], None]] = {
     "guards": guards_step,
@@ -26,7 +27,9 @@ STEPS: Mapping[str, Callable[[Proof, Mapping[str, Any], int], None]] = {
 }
 
 
-def follow(certificate: Mapping[str, Any], model: Poly, domain: str, variables: int) -> Proof:
+def follow(
+    certificate: Mapping[str, Any], model: Poly, domain: str, variables: int, auxiliaries: Sequence[int]
+) -> Proof:
     """Repeat a certificate; afterwards `Proof.gained` is P over the originals (without the model's constant).
 
     Parameters
@@ -36,6 +39,8 @@ def follow(certificate: Mapping[str, Any], model: Poly, domain: str, variables: 
         The model's terms in units of its resolution, without its constant.
     variables : int
         Number of variables of the model.
+    auxiliaries : sequence of int
+        The variables to minimise over.
 
     Raises
     ------
@@ -44,11 +49,9 @@ def follow(certificate: Mapping[str, Any], model: Poly, domain: str, variables: 
     TooLarge
         A step, or the whole, is beyond this checker.
     """
-    if "steps" not in certificate:
-        raise TooLarge(f"a certificate of {certificate.get('entries', 'many')} entries, which the verdict leaves out")
-    auxiliaries = positions_in(certificate["auxiliaries"], variables)
     proof = Proof(domain, dict(model), frozenset(auxiliaries))
-    for number, step in enumerate(certificate["steps"]):
+    steps = certificate["steps"] if "steps" in certificate else [own_tables(proof)]
+    for number, step in enumerate(steps):
         kind = step.get("step")
         if kind not in STEPS:
             raise TooLarge(f"a step of the kind {kind!r}")

@@ -16,6 +16,8 @@ from hubokit.validation.audit_proof import MOST_BITS, Proof, Rejected, binary, p
 #: Auxiliaries of one cluster whose settings are all listed, those that branch and bound is tried on, touched
 #: variables.
 ENUMERATED, MOST_BRANCHED, MOST_TOUCHED = 6, 64, 16
+#: Touched variables of a cluster that is settled by counting.
+MOST_COUNTED = 256
 
 
 def _clusters(proof: Proof, step: Mapping[str, Any], variables: int) -> list[tuple[int, int, Key, Key]]:
@@ -105,18 +107,27 @@ def _gain(proof: Proof, touched: Key, counts: list[int], number: Callable[[Key],
         proof.uneven.append((touched, lambda bits: counts[number(bits)]))
 
 
-def tables_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
+def _rows(proof: Proof, shape: Mapping[str, Any], d: int) -> list[list[int]]:
+    """Fields that the auxiliaries of a shape feel at every setting of its touched variables."""
     values = values_of(proof.domain)
+    pairs = list(zip(shape["field"], shape["coupling"], strict=True))
+    proof.spend((len(pairs) * d) << d)
+    return [[f + sum(c * values[b] for c, b in zip(row, t, strict=True)) for f, row in pairs] for t in settings(d)]
+
+
+def table_of(proof: Proof, shape: Mapping[str, Any], d: int) -> dict[str, list[int]]:
+    """Minima and multiplicities of a shape over its d touched variables."""
+    found = list(_minima(proof, _rows(proof, shape, d), shape["between"], len(shape["field"])))
+    return {"minimum": [low for low, _ in found], "multiplicity": [count for _, count in found]}
+
+
+def tables_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
     checked = []
     for shape in step["shapes"]:
         a, d = len(shape["field"]), len(shape["coupling"][0]) if shape["coupling"] else 0
         if d > MOST_TOUCHED or a > MOST_BRANCHED:
             raise TooLarge(f"a table of {a} auxiliaries over {d} variables")
-        pairs = list(zip(shape["field"], shape["coupling"], strict=True))
-        rows = [
-            [f + sum(c * values[b] for c, b in zip(row, t, strict=True)) for f, row in pairs] for t in settings(d)
-        ]
-        proof.spend(len(rows) * a * d)
+        rows = _rows(proof, shape, d)
         counts = _checked(proof, shape, rows)
         checked.append((counts, interpolated(shape["minimum"], range(d), proof.domain)))
     for number, factor, members, touched in _clusters(proof, step, variables):
@@ -132,9 +143,10 @@ def counting_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None
     checked = []
     for shape in step["shapes"]:
         sizes = [len(columns) for columns in shape["classes"]]
+        kinds = prod(size + 1 for size in sizes)
+        if kinds > 2**MOST_BITS or sum(sizes) > MOST_COUNTED or len(shape["field"]) > MOST_BRANCHED:
+            raise TooLarge(f"counts of {kinds} kinds over {sum(sizes)} variables")
         grid = list(product(*(range(size + 1) for size in sizes)))
-        if len(grid) > 2**MOST_BITS or len(shape["field"]) > MOST_BRANCHED:
-            raise TooLarge(f"counts of {len(grid)} kinds")
         if sorted(j for columns in shape["classes"] for j in columns) != list(range(len(shape["signs"]))):
             raise Rejected("the classes do not part the columns")
         if any(sign not in ((1, -1) if proof.domain == "spin" else (1,)) for sign in shape["signs"]):

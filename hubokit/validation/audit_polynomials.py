@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from fractions import Fraction
 from itertools import product
 from typing import Any
@@ -142,19 +142,21 @@ def field(touching: Poly, position: int, domain: str) -> Poly:
     return {tuple(i for i in key if i != position): weight * (high - low) for key, weight in touching.items()}
 
 
-def least(functions: list[tuple[Key, list[Any]]], limit: int = 16) -> Any:
+def least(functions: list[tuple[Key, list[Any]]], spend: Callable[[int], None], limit: int = 16) -> Any:
     """The least value of a sum of functions of few bits each, by eliminating one bit after the other.
 
     Parameters
     ----------
     functions : list of (bits, table)
         The first bit of a table's index is most significant.
+    spend : callable
+        Told of the operations of every table; raises when they are too many.
     limit : int
         Bits that one table may come to.
 
     Examples
     --------
-    >>> least([((0, 1), [0, 1, 2, 3]), ((1,), [5, 0])])
+    >>> least([((0, 1), [0, 1, 2, 3]), ((1,), [5, 0])], lambda operations: None)
     1
     """
     work = list(functions)
@@ -174,6 +176,7 @@ def least(functions: list[tuple[Key, list[Any]]], limit: int = 16) -> Any:
         work = [one for one in work if bit not in one[0]]
         place = {other: number for number, other in enumerate((bit, *scope))}
         table = []
+        spend((2 << len(scope)) * len(mine))
         for setting in settings(len(scope)):
             both = []
             for value in (0, 1):

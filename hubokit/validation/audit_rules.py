@@ -123,7 +123,7 @@ def shared_step(proof: Proof, step: Mapping[str, Any], variables: int) -> None:
             other = rules[partner[0]] if partner else None
             functions.append(_share(proof, (guards, right), key, weight, other, (number, partner), shares, per_bit))
         proof.spend(sum(len(table) for _, table in functions))
-        excess = least(functions) if functions else 0
+        excess = least(functions, proof.spend) if functions else 0
         if excess < slack:
             raise Rejected(f"the shared bound of variable {y} is {excess}, not {slack}")
     for y, guards, function in rules:

@@ -118,6 +118,25 @@ class TestHonestVerdicts:
         assert not report.rejected
         assert report.exit_code == 3
 
+    def test_a_certificate_left_out_for_its_size_is_made_again(self, by_hand, audited):
+        rng = np.random.default_rng(2)
+        triples, weights = rng.integers(0, 300, (600, 3)), rng.integers(-4, 5, 600)
+        reduction = reduce(Hamiltonian.from_arrays([triples], [weights], "spin", size=300), method="term-by-term")
+
+        def leave_out(fields):
+            certificate = projection_piece(fields)["certificate"]
+            certificate.update(omitted="size", counts={})
+            for name in ("steps", "auxiliaries"):
+                certificate.pop(name, None)
+
+        assert audited(reduction, leave_out).accepted
+
+        def raise_multiplicity(fields):
+            leave_out(fields)
+            projection_piece(fields)["certificate"]["multiplicity"] = 2
+
+        assert audited(reduction, raise_multiplicity).rejected
+
     def test_tested_claims_are_not_accepted(self, by_hand, audited):
         made = by_hand["cubic"](strict=True)
         report = audited(made, verdict=check(made, evidence="neighbourhood", radius=1))
@@ -268,7 +287,11 @@ class TestForgedVerdicts:
             steps = [{"step": "tables", "shapes": [shape], "clusters": []}]
             projection_piece(fields)["certificate"]["steps"] = steps
 
-        for change in (many, wide):
+        def classes(fields):
+            shape = first_step(fields, "counting")["shapes"][0]
+            shape["classes"] = [list(range(1000))] * 60
+
+        for change in (many, wide, classes):
             report = audited(symmetric(24), change)
             assert not report.rejected
             assert "not re-checked" in str(report)
@@ -325,7 +348,7 @@ def test_the_least_value_of_a_sum_is_found_bit_by_bit():
         ]
         states = [[n >> (5 - i) & 1 for i in range(6)] for n in range(64)]
         sums = [sum(table[int("".join(str(x[b]) for b in bits), 2)] for bits, table in functions) for x in states]
-        assert least(functions) == min(sums)
+        assert least(functions, lambda _: None) == min(sums)
 
 
 def test_the_audit_imports_nothing_of_hubokit_but_itself_and_the_errors():
