@@ -12,7 +12,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cache, cached_property
 from itertools import islice
 
 import numpy as np
@@ -219,15 +219,19 @@ def _is_prime(number: int) -> bool:
 
 
 def from_residues(residues: Sequence[int], primes: Sequence[int]) -> int:
-    """The number below the product of the primes that leaves these residues (Garner 1959).
+    """The number below the product of the primes that leaves these residues (Chinese remainder theorem).
 
     Examples
     --------
     >>> from_residues([2, 3], [3, 5])
     8
     """
-    value, product = 0, 1
-    for residue, prime in zip(residues, primes, strict=True):
-        value += product * ((residue - value) * pow(product, -1, prime) % prime)
-        product *= prime
-    return value
+    product, units = _units(tuple(primes))
+    return sum(residue * unit for residue, unit in zip(residues, units, strict=True)) % product
+
+
+@cache
+def _units(primes: tuple[int, ...]) -> tuple[int, tuple[int, ...]]:
+    """Product of the primes, and for each prime the number that is 1 modulo it and 0 modulo the others."""
+    product = math.prod(primes)
+    return product, tuple(product // p * pow(product // p, -1, p) for p in primes)

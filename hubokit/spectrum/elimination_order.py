@@ -17,6 +17,7 @@ Bodlaender, Koster 2010, "Treewidth computations I. Upper bounds".
 
 from __future__ import annotations
 
+import heapq
 import itertools
 import random
 from collections.abc import Callable, Iterator, Sequence
@@ -27,7 +28,10 @@ import numpy as np
 from hubokit.model.terms import Block
 
 ATTEMPTS = 24
-"""Orders tried by min-fill with ties broken at random (seeded), beside one of min-degree."""
+"""Orders tried by min-fill with ties broken at random (seeded), after one of min-degree."""
+
+HOPELESS = 100
+"""Where min-degree is stuck with more variables than this, every one with too many neighbours, no other is tried."""
 
 EASY_ENTRIES = 1 << 20
 """An order with so few table entries is good enough: no further attempts."""
@@ -151,10 +155,13 @@ def elimination_order(
         return bound
     best: EliminationOrder | None = None
     for attempt in range(attempts + 1):
-        score = _neighbour_count if attempt == 1 else _new_edges
+        score = _new_edges if attempt else _neighbour_count
         found = _greedy(neighbours, score, widest, random.Random(attempt) if attempt > 1 else None)
-        if found is not None and (best is None or found.entries < best.entries):
-            best = found
+        if isinstance(found, EliminationOrder):
+            if best is None or found.entries < best.entries:
+                best = found
+        elif attempt == 0 and found > HOPELESS:
+            break
         if best is not None and (best.entries <= EASY_ENTRIES or best.width == bound):
             break
         if attempt * size > 20_000:
@@ -201,18 +208,26 @@ def _greedy(
     score: Callable[[list[int], int], int],
     widest: int,
     chance: random.Random | None,
-) -> EliminationOrder | None:
-    """Eliminate the variable of least score until none is left; None when one has too many neighbours."""
+) -> EliminationOrder | int:
+    """Eliminate the variable of least score until none is left.
+
+    Where the next has more than `widest` neighbours the number of variables that are left is returned.
+    """
     neighbours = list(start)
     size = len(neighbours)
     tie = [chance.random() if chance else 0.0 for _ in range(size)]
     scores = {v: (score(neighbours, v), neighbours[v].bit_count(), tie[v], v) for v in range(size)}
+    queue = list(scores.values())
+    heapq.heapify(queue)
     variables, separators = [], []
     while scores:
-        variable = min(scores, key=scores.__getitem__)
+        entry = heapq.heappop(queue)
+        variable = entry[3]
+        if scores.get(variable) != entry:  # outdated: a newer entry of the variable is in the queue, or it is gone
+            continue
         around = neighbours[variable]
         if around.bit_count() > widest:
-            return None
+            return len(scores)
         del scores[variable]
         changed, grown = around, 0
         for other in members(around):
@@ -223,7 +238,10 @@ def _greedy(
         for other in members(grown):
             changed |= neighbours[other]
         for other in members(changed):
-            scores[other] = (score(neighbours, other), neighbours[other].bit_count(), tie[other], other)
+            entry = (score(neighbours, other), neighbours[other].bit_count(), tie[other], other)
+            if scores[other] != entry:
+                scores[other] = entry
+                heapq.heappush(queue, entry)
         variables.append(variable)
         separators.append(around)
     ranks = {variable: rank for rank, variable in enumerate(variables)}

@@ -211,5 +211,10 @@ def walk(  # type: ignore[no-untyped-def]
             overlap[depth, b] = overlap[depth - 1, b] + near[b, i]
         if not settled:
             least = _least(here, i + 1, size)
+        bottom = energy[depth] + np.int64(least)
+        if bottom > threshold and len(sizes) == 0:  # by far the most frequent case, settled without a call
+            kept[depth + 1] += size - i - 1
+            lowest[depth + 1] = min(lowest[depth + 1], bottom)
+            continue
         scan(here, least, energy[depth], i + 1, size, depth, flips, overlap, near, sizes, cuts, threshold, bits, kept,
              lowest, below, energies, sets, filled)  # fmt: skip

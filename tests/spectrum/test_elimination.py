@@ -279,3 +279,26 @@ def test_work_beyond_the_memory_or_the_time_is_refused_with_both_figures() -> No
 def test_fewer_than_one_level_is_an_error() -> None:
     with pytest.raises(InputError, match="at least 1"):
         low_levels(dense(3), 0)
+
+
+def test_a_sparse_model_of_large_width_is_refused_after_one_order(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Random triples at 1.2 a variable: every order gets stuck in a large core, and one attempt says so."""
+    from hubokit.spectrum import elimination_order as orders
+
+    chance = np.random.default_rng(2)
+    triples = np.array([chance.choice(500, 3, replace=False) for _ in range(600)])
+    H = Hamiltonian.from_arrays([triples], [np.ones(600, int)], domain="spin", size=500)
+    made = []
+    greedy = orders._greedy
+    monkeypatch.setattr(orders, "_greedy", lambda *given: made.append(greedy(*given)) or made[-1])
+    with pytest.raises(LimitError, match="500 variables with an elimination width of 28 or more"):
+        ground_states(H)
+    assert len(made) == 1
+    assert made[0] > orders.HOPELESS
+
+
+def test_a_chain_of_three_thousand_spins_is_short_work() -> None:
+    bonds = {(f"s{i:04}", f"s{i + 1:04}"): 1 - 2 * (i % 3 == 0) for i in range(2999)}
+    level = ground_states(Hamiltonian(bonds, "spin"), limit=2)
+    assert (level.energy, level.degeneracy, level.gap) == (-2999, 2, 2)
+    assert np.array_equal(level.states[0], -level.states[1])
