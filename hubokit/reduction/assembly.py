@@ -11,8 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from hubokit.model.hamiltonian import Hamiltonian
-from hubokit.model.numbers import format_fraction, times
-from hubokit.model.terms import canonical_blocks
+from hubokit.model.numbers import INT64_BOUND, absolute_sum, format_fraction, times
 from hubokit.reduction.costs import extremes
 from hubokit.reduction.gadgets.attach import Piece, TermPiece, shared_resolution
 from hubokit.reduction.gadgets.base import Keep, Part
@@ -111,13 +110,49 @@ def priced(H: Hamiltonian, pieces: Sequence[Piece], gap: Fraction) -> Price:
     parts = short_parts(H, int(H.resolution / resolution))
     for sketch in sketches:
         parts += sketch.parts
-    _, blocks = canonical_blocks(parts, H.domain)
+    fields, pairs = merged_weights(parts, H.size)
     bounds = [value for sketch in sketches for value in (sketch.smallest, sketch.largest) if value is not None]
-    if any(len(block) for block in blocks):
-        bounds += extremes(block.weights for block in blocks)
-    couplers = sum(sketch.couplers for sketch in sketches) + sum(len(b) for b in blocks if b.locality == 2)
+    if len(fields) or len(pairs):
+        bounds += extremes([fields, pairs])
+    couplers = sum(sketch.couplers for sketch in sketches) + len(pairs)
     ratio = Fraction(max(bounds), min(bounds)) if bounds else Fraction(1)
     return Price(sum(piece.auxiliaries for piece in pieces), couplers, ratio)
+
+
+def merged_weights(parts: Sequence[Part], size: int) -> tuple[npt.NDArray[Any], npt.NDArray[Any]]:
+    """Nonzero weights of fields and of couplers after equal products are added up.
+
+    Parameters
+    ----------
+    parts : sequence of (members (m, 1 or 2), weights (m,))
+        Rows increasing.
+    size : int
+        Number of variables.
+
+    Examples
+    --------
+    >>> pair, other = np.array([[0, 1]]), np.array([[0, 1], [1, 2]])
+    >>> [found.tolist() for found in merged_weights([(pair, np.array([2])), (other, np.array([-2, 5]))], 3)]
+    [[], [5]]
+    """
+    wide = sum(absolute_sum(weights) for _, weights in parts) >= INT64_BOUND
+    kind: Any = object if wide else np.int64
+    found = []
+    for length in (1, 2):
+        own = [(members, weights) for members, weights in parts if members.shape[1] == length and len(weights)]
+        if not own:
+            found.append(np.zeros(0, kind))
+            continue
+        ends = [members.astype(np.int64) for members, _ in own]
+        keys = np.concatenate([m[:, 0] if length == 1 else m[:, 0] * size + m[:, 1] for m in ends])
+        weights = np.concatenate([weights.astype(kind) for _, weights in own])
+        # Order within equal keys does not matter for a sum, so the faster unstable sort does.
+        order = np.argsort(keys)
+        keys, weights = keys[order], weights[order]
+        starts = np.flatnonzero(np.append(True, keys[1:] != keys[:-1]))
+        sums = np.add.reduceat(weights, starts)
+        found.append(sums[sums != 0])
+    return found[0], found[1]
 
 
 def fresh_labels(labels: Sequence[str], count: int) -> tuple[str, ...]:

@@ -18,7 +18,7 @@ import numpy.typing as npt
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import INT64_BOUND, common_resolution
 from hubokit.model.rewriting import spin_parts
-from hubokit.model.terms import canonical_blocks
+from hubokit.model.terms import Block, canonical_blocks
 from hubokit.reduction.gadgets.attach import Sketch, sketch_of
 from hubokit.reduction.gadgets.base import Part
 from hubokit.reduction.gadgets.symmetric import SymmetricForm, symmetric_form
@@ -162,6 +162,14 @@ def components(H: Hamiltonian) -> npt.NDArray[np.int64]:
 Taken = dict[int, npt.NDArray[np.bool_]]
 
 
+def _possible(block: Block, size: int, largest: int) -> npt.NDArray[np.bool_]:
+    """Terms whose members all stand in as many terms of the block as members of a symmetric part would."""
+    k = block.locality
+    counts = [count for n in range(max(SMALLEST, k), largest + 1) if (count := comb(n - 1, k - 1)) <= len(block)]
+    degrees = np.bincount(block.members.ravel(), minlength=size)
+    return np.asarray(np.isin(degrees, np.array(counts, np.int64))[block.members].all(axis=1))
+
+
 def symmetric_pieces(H: Hamiltonian, gap: Fraction, largest: int = LARGEST) -> tuple[list[SymmetricPiece], Taken]:
     """The symmetric parts of at most `largest` variables, and for each locality which terms they take.
 
@@ -174,6 +182,8 @@ def symmetric_pieces(H: Hamiltonian, gap: Fraction, largest: int = LARGEST) -> t
     ([2], 20)
     """
     blocks = [block for block in H.blocks if block.locality > 2]
+    if not any(_possible(block, H.size, largest).any() for block in blocks):
+        return [], {}
     labels = components(H)
     sizes = np.bincount(labels, minlength=H.size)
     good = (sizes >= SMALLEST) & (sizes <= largest)
