@@ -142,6 +142,7 @@ def _model_from_json(document: Json, source: Hamiltonian | None) -> Document:
         refuse_unplain(document.get(key, {}), pointer=f"/{key}")
     for place, entry in enumerate(document.get("trail", ())):
         refuse_unplain({k: v for k, v in entry.items() if k != "model"}, pointer=f"/trail/{place}")
+    _refuse_ragged(document.get("intent", {}), arrays)
     model, fields = read_model(document, arrays)
     auxiliaries = as_labels(document.get("auxiliaries", ()), "/auxiliaries")
     refuse_strangers(model, auxiliaries)
@@ -164,6 +165,18 @@ def _model_from_json(document: Json, source: Hamiltonian | None) -> Document:
         digests=digests,
         trail=tuple(entries) if reduction is None else (),
     )
+
+
+def _refuse_ragged(intent: Json, arrays: Mapping[str, Any]) -> None:
+    """Raise for a target state that has not one value for each of its variables."""
+    if "target_states" not in intent:
+        return
+    pointer = "/intent/target_states"
+    lengths, _ = arrays[f"{pointer}/states"]
+    wanted = len(intent["target_states"]["variables"])
+    for row, length in enumerate(lengths.tolist()):
+        if length != wanted:
+            raise InputError(f"{length} values for {wanted} variables", f"{pointer}/states/{row}")
 
 
 def _verify(name: str, digests: Mapping[str, str], computed: str) -> None:

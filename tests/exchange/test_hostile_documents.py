@@ -117,6 +117,13 @@ PLACES: list[tuple[str, Any, str]] = [
     ("/intent", {"aim": 1}, "/intent/aim: there is no field of this name"),
     ("/intent", {"ground_energy": 3}, "/intent/ground_energy: must be a string"),
     ("/intent", {"target_states": {"variables": ["a"], "states": [[2]]}}, "/intent/target_states/states/0/0"),
+    (
+        "/intent",
+        {"target_states": {"variables": ["a", "b"], "states": [[1, 1], [1]]}},
+        "/intent/target_states/states/1: 1 values for 2 variables",
+    ),
+    ("/intent", {"target_states": {"variables": ["a", "a"], "states": []}}, "/intent/target_states/variables/1"),
+    ("/intent", {"target_states": {"states": []}}, 'the field "variables" is missing from this object'),
     ("/digests", {"function": "md5:1"}, "/digests/function"),
     ("/digests", {"function": DIGEST}, "/digests/function: the function was changed"),
     ("/digests", {"document": DIGEST}, "/digests/document: a field was changed"),
