@@ -38,7 +38,7 @@ class ClauseFile:
     ----------
     head : tuple of str
         The words of the ``p`` line; empty where there is none.
-    numbers : int64 or object array, shape (w,)
+    numbers : int32, int64 or object array, shape (w,)
         All numbers after it; -1 where ``hard``.
     hard : bool array, shape (w,)
         Words ``h`` in the place of a weight.
@@ -79,7 +79,8 @@ def scanned(path: str | os.PathLike[str], take: Callable[[str, int], None]) -> C
         if plain.dtype == object:
             values = values.astype(object)
         values[~flag] = plain
-        numbers.append(values)
+        small = values.dtype != object and (not len(values) or int(np.abs(values).max()) < 2**31)
+        numbers.append(values.astype(np.int32) if small else values)
         hard.append(flag)
     empty = np.zeros(0, np.int64)
     return ClauseFile(
@@ -125,7 +126,7 @@ def split_clauses(found: ClauseFile) -> tuple[NDArray[np.int64], NDArray[np.int6
     return starts.astype(np.int64), ends.astype(np.int64)
 
 
-def as_literals(numbers: NDArray[Any], count: int | None) -> NDArray[np.int64]:
+def as_literals(numbers: NDArray[Any], count: int | None) -> NDArray[np.int32]:
     """Numbers as literals of variables 1 to `count` (or to the largest possible).
 
     Raises
@@ -138,10 +139,10 @@ def as_literals(numbers: NDArray[Any], count: int | None) -> NDArray[np.int64]:
         largest = int(np.abs(numbers).max())
         if largest > bound:
             raise InputError(f"literal {quoted(largest)} is out of range; there are {bound} variables", "p line")
-    return numbers.astype(np.int64)
+    return numbers.astype(np.int32)
 
 
-def broken_products(numbers: NDArray[np.int64], lengths: NDArray[np.int64], weights: NDArray[Any]) -> list[Products]:
+def broken_products(numbers: NDArray[np.int32], lengths: NDArray[np.int64], weights: NDArray[Any]) -> list[Products]:
     """Clauses, laid end to end, as products that are 1 where the clause is broken."""
     return grouped(-numbers, lengths, weights)
 

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.trail import Origin
 
-Products = tuple[NDArray[np.int64], NDArray[Any]]
+Products = tuple[NDArray[Any], NDArray[Any]]
 """Literals of shape (m, k) and weights of shape (m,)."""
 
 
@@ -74,7 +74,7 @@ def literal_model(
     return wide.substituted(origin)
 
 
-def grouped(literals: NDArray[np.int64], lengths: NDArray[np.int64], weights: NDArray[Any]) -> list[Products]:
+def grouped(literals: NDArray[Any], lengths: NDArray[np.int64], weights: NDArray[Any]) -> list[Products]:
     """Products of mixed length, laid end to end, as one array for each length.
 
     Examples

@@ -59,9 +59,10 @@ def load_wcnf(path: str | os.PathLike[str]) -> Reading:
         found = scanned(path, header.take)
         starts, ends = split_clauses(found)
         weights, hard, count = _weighted(found, starts, ends)
-        literals = found.numbers.copy()
-        literals[starts] = 0
-        literals = as_literals(literals[literals != 0], count)
+        numbers = found.numbers
+        numbers[starts] = 0  # the weights are read; only literals are left
+        literals = as_literals(numbers[numbers != 0], count)
+        del found, numbers
         if not header.touched:
             read_sidecar(path, header)
         count = header.count(int(np.abs(literals).max(initial=0))) if count is None else count
