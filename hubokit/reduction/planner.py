@@ -17,6 +17,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import Any
 
+from hubokit.errors import LimitError
 from hubokit.model.trail import Trail
 from hubokit.reduction.gadgets.table import FAMILIES, family
 from hubokit.reduction.groups import METHOD as GROUPS
@@ -85,6 +86,8 @@ def planned(question: Question, method: str = "auto") -> Planned:
         plans += symmetric_plans(question, largest)
     if method in ("auto", PAIR_COVER):
         plans += _noted(pair_plans(question, method), PAIR_COVER, others)
+    if others and method in (GROUPS, PAIR_COVER):
+        raise LimitError(f'{others[0]["reason"]}; method "auto" takes another way', "method")
     if not plans:
         name = method if method not in (GROUPS, SYMMETRIC, PAIR_COVER) else ""
         if name:

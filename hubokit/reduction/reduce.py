@@ -32,15 +32,16 @@ def reduce(
     ----------
     H : Hamiltonian
     method : str
-        ``"auto"``, or the name of a family, which then serves every term that it can; other terms get what ``"auto"``
-        would give them.
+        ``"auto"``, or one of ``planner.methods()``. A family of gadgets serves every term that it can, and other
+        terms get the gadget that is best for one term alone.
     keep : {"one-to-one", "energies", "ground-states"}
         What must survive: every energy with exactly one best auxiliary setting a state, every energy, or the set of
         ground states.
     prefer : {"auxiliaries", "range", "couplers"}
         What to have least of: auxiliaries, coefficient ratio, couplers.
     domain : {"spin", "boolean"}, optional
-        Domain of the reduced model; default the source's.
+        Domain of the reduced model; default the source's. The model is reduced in the source's domain and then
+        rewritten, so the prices of the plan are those before the change.
     auxiliary_gap : number, optional
         Least auxiliary gap asked for, in energy units. Default: the source's resolution for one-to-one, else 0 (ties
         between auxiliary settings are allowed).
@@ -56,7 +57,7 @@ def reduce(
     InputError
         An unknown word, a negative gap, a gap of 0 with one-to-one.
     LimitError
-        A change of domain that would expand too far.
+        A method that was named is beyond its work limit.
 
     Examples
     --------
@@ -67,13 +68,7 @@ def reduce(
     gap = _checked(H, keep, prefer, domain, auxiliary_gap)
     if method not in methods():
         raise InputError(f"no such reduction method: {method!r}; the methods are {', '.join(methods())}", "method")
-    steps: list[Step] = []
-    working = H
-    if domain is not None and domain != H.domain:
-        working = H.in_domain(domain)
-        change = {"from": H.domain, "to": domain, "convention": H.convention}
-        steps.append(Step("domain", H.digest, parameters=change))
-    plan = planned(Question(working, keep, prefer, gap, seed), method)  # type: ignore[arg-type]
+    plan = planned(Question(H, keep, prefer, gap, seed), method)  # type: ignore[arg-type]
     model, auxiliaries, made = plan.chosen.build()
     parameters: dict[str, Any] = {
         "keep": keep,
@@ -83,7 +78,12 @@ def reduce(
         **made,
         "plan": plan.as_json(),
     }
-    steps.append(Step("reduction", working.digest, auxiliaries=auxiliaries, parameters=parameters))
+    steps = [Step("reduction", H.digest, auxiliaries=auxiliaries, parameters=parameters)]
+    if domain is not None and domain != H.domain:
+        # After the reduction, because a long product of one domain is 2^k products of the other.
+        change = {"from": H.domain, "to": domain, "convention": H.convention}
+        steps.append(Step("domain", model.digest, parameters=change))
+        model = model.in_domain(domain)
     trail = Trail(tuple(steps), source=H, source_digest=H.digest, keep=keep)
     return Reduction(H, model, auxiliaries, trail=trail)
 

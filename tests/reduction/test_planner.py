@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import random
-from itertools import combinations
+from itertools import combinations, product
 
 import numpy as np
 import pytest
 
-from hubokit.errors import InputError
+from hubokit.errors import InputError, LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.reduction.gadgets.table import FAMILIES
 from hubokit.reduction.planner import methods, plan_table
@@ -110,3 +110,43 @@ def test_every_method_name_is_taken_and_others_are_refused() -> None:
         assert reduce(H, method=name).model.locality <= 2
     with pytest.raises(InputError, match=PAIR_COVER):
         reduce(H, method="pairs")
+
+
+def test_a_method_beyond_its_work_limit_is_refused() -> None:
+    members = np.stack([np.zeros(1500, int), np.ones(1500, int), np.arange(2, 1502)], axis=1)
+    H = Hamiltonian.from_arrays([members], [np.ones(1500, int)], "spin")
+    with pytest.raises(LimitError, match="sets of four variables"):
+        reduce(H, method=GROUPS)
+
+
+@pytest.mark.parametrize(("size", "most"), [(10, 20), (16, 56)])
+def test_pulses_take_no_more_auxiliaries_than_the_known_covers(size: int, most: int) -> None:
+    R = reduce(pulses(size))
+    assert len(R.auxiliaries) <= most
+    assert plan_table(R.trail)[0]["plan"] == PAIR_COVER
+
+
+def test_a_pair_cover_keeps_every_energy_once_and_the_trail_says_what_each_pair_is() -> None:
+    H = pulses(7)
+    R = reduce(H, method=PAIR_COVER)
+    states = np.array(list(product((1, -1), repeat=R.model.size)), np.int8)
+    energies = R.model.integer_energies(states).reshape(2**H.size, -1)
+    least = energies.min(axis=1)
+    assert ((energies == least[:, None]).sum(axis=1) == 1).all()
+    found = [R.model.constant + int(value) * R.model.resolution for value in least]
+    assert found == [H.energy(state) for state in product((1, -1), repeat=H.size)]
+    listed = R.trail.steps[0].parameters["pair cover"]["pairs"]
+    best = states.reshape(2**H.size, -1, R.model.size)[np.arange(2**H.size), energies.argmin(axis=1)]
+    for entry in listed:
+        down = [best[:, R.model.positions[label]] < 0 for label in (entry["auxiliary"], *entry["of"])]
+        assert np.array_equal(down[0], down[1] & down[2])
+
+
+def test_terms_that_share_no_pair_get_gadgets_of_their_own_beside_a_cover() -> None:
+    shared = {("a", "b", other): 1 for other in "cdefg"}
+    H = Hamiltonian({**shared, ("p", "q", "r"): -1, ("s", "t", "u", "v"): 1}, "boolean")
+    R = reduce(H, method=PAIR_COVER)
+    rows = {(row["locality"], row["method"]): row["terms"] for row in R.trail.steps[0].parameters["methods"]}
+    assert rows[3, PAIR_COVER] == 5
+    assert sum(rows.values()) == 7
+    assert len(R.auxiliaries) == 3

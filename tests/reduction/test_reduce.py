@@ -122,12 +122,19 @@ def test_the_trail_says_where_it_started_what_was_kept_and_what_served() -> None
     assert R.trail.source is H
 
 
-def test_a_change_of_domain_is_a_step_of_its_own() -> None:
+def test_a_change_of_domain_is_a_step_of_its_own_after_the_reduction() -> None:
     H = Hamiltonian({("a", "b", "c"): -1}, "boolean", convention="2x-1")
     R = reduce(H, domain="spin")
-    assert [step.name for step in R.trail.steps] == ["domain", "reduction"]
-    assert R.trail.steps[0].parameters == {"from": "boolean", "to": "spin", "convention": "2x-1"}
-    assert R.trail.steps[1].start == H.in_domain("spin").digest
+    assert [step.name for step in R.trail.steps] == ["reduction", "domain"]
+    assert R.trail.steps[1].parameters == {"from": "boolean", "to": "spin", "convention": "2x-1"}
+    assert R.trail.steps[1].start == reduce(H).model.digest
+    assert R.trail.auxiliaries == R.auxiliaries
+
+
+def test_a_product_too_long_for_the_other_domain_is_reduced_before_the_change() -> None:
+    H = Hamiltonian({tuple(f"v{i}" for i in range(60)): 1}, "spin")
+    R = reduce(H, domain="boolean")
+    assert (R.model.domain, R.model.locality, len(R.auxiliaries)) == ("boolean", 2, 5)
 
 
 def test_the_same_call_gives_the_same_model() -> None:
