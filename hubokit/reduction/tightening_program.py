@@ -124,11 +124,11 @@ class SharesProgram:
             shape=(len(self.rows), width),
         )
         table = self.coefficients
-        count = len(table.base)
+        count, factor = len(table.base), table.factor.astype(float)
         row = np.concatenate([table.row, np.arange(count)])
         column = np.concatenate([cases + table.column, np.full(count, width - 1)])
-        above = csr_array((np.append(table.factor, -np.ones(count)), (row, column)), shape=(count, width))
-        below = csr_array((np.append(-table.factor, -np.ones(count)), (row, column)), shape=(count, width))
+        above = csr_array((np.append(factor, -np.ones(count)), (row, column)), shape=(count, width))
+        below = csr_array((np.append(-factor, -np.ones(count)), (row, column)), shape=(count, width))
         base = table.base.astype(float)
         goal = np.zeros(width)
         goal[cases:-1], goal[-1] = SUM_WEIGHT, 1
