@@ -32,7 +32,9 @@ def command(
     evidence: options.EvidenceOption = options.Evidence.auto,
     around: Annotated[
         Path | None,
-        typer.Option("--around", metavar="STATES.csv", help="Centres of the neighbourhood, source states."),
+        typer.Option(
+            "--around", "--targets", metavar="STATES.csv", help="Centres of the neighbourhood, source states."
+        ),
     ] = None,
     radius: Annotated[int | None, typer.Option("--radius", min=0, help="Radius of the neighbourhood.")] = None,
     time: options.Time = 600.0,

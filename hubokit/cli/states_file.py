@@ -62,6 +62,22 @@ def read_states(path: Path, labels: Sequence[str], domain: str) -> NDArray[np.in
     return np.array(states, dtype=np.int8).reshape(len(states), len(labels))
 
 
+def states_text(labels: Sequence[str], states: NDArray[np.int8]) -> str:
+    """A table of states as `read_states` reads it.
+
+    Examples
+    --------
+    >>> print(states_text(["a", "b"], np.array([[1, -1]], np.int8)), end="")
+    a,b
+    1,-1
+    """
+    text = io.StringIO()
+    rows = csv.writer(text, lineterminator="\n")
+    rows.writerow(labels)
+    rows.writerows(states.tolist())
+    return text.getvalue()
+
+
 def _named(header: list[str], labels: Sequence[str]) -> list[str]:
     """The header with numbered columns under the names of the variables."""
     numbered = {f"x{i + 1}": label for i, label in enumerate(labels)}

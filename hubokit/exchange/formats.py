@@ -87,8 +87,8 @@ FORMATS: dict[str, Format] = {
 """Every format by its name."""
 
 
-def format_of(path: str | os.PathLike[str], name: str | None = None) -> Format:
-    """The format of a file by its suffix, or the one of that name.
+def format_of(path: str | os.PathLike[str], name: str | None = None, option: str = "--format") -> Format:
+    """The format of a file by its suffix, or the one of that name; `option` is what would name it.
 
     Raises
     ------
@@ -113,7 +113,7 @@ def format_of(path: str | os.PathLike[str], name: str | None = None) -> Format:
                 raise InputError(f"{entry.name} files are not read or written as .gz", file=file)
             return entry
     known = ", ".join(suffix for entry in FORMATS.values() for suffix in entry.suffixes)
-    raise InputError(f"the suffix says no format; use one of {known}, or name it with --format", file=file)
+    raise InputError(f"the suffix says no format; use one of {known}, or name it with {option}", file=file)
 
 
 def read_document(
@@ -145,7 +145,7 @@ def read_document(
         Bad input, with file and place.
     """
     with reporting(progress):
-        return _document(path, source, format_of(path, format))
+        return _document(path, source, format_of(path, format, "hubokit convert --from"))
 
 
 def _document(path: str | os.PathLike[str], source: Hamiltonian | None, entry: Format) -> Document:

@@ -1,0 +1,230 @@
+"""A design and its reduced model measured alike: the engines called once for each of the two.
+
+A reduced model is measured on P, its minimum over the auxiliaries, where targets are concerned; on its own variables,
+auxiliaries included, where ground states and local minima are.
+"""
+
+from __future__ import annotations
+
+import random
+from collections.abc import Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+
+from hubokit.cli.progress import Report
+from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.model.states import States
+from hubokit.projection.project import Projection
+from hubokit.reduction.result import Reduction
+from hubokit.spectrum.balls import Neighbourhood
+from hubokit.spectrum.bandwidth import Bandwidth, bandwidth, bandwidth_within
+from hubokit.spectrum.elimination import draw_ground_states
+from hubokit.spectrum.landscape import connected_groups, minimum_distance
+from hubokit.spectrum.levels import Level
+from hubokit.spectrum.minima import LocalMinimum, NearMinima, is_local_minimum, minima_near
+from hubokit.spectrum.neighbourhood import neighbourhood, neighbourhood_of
+from hubokit.spectrum.search import ground_states, low_levels, routes
+
+LISTED = 1 << 14
+"""Ground states that are listed to be compared with each other, unless a larger limit is asked for."""
+
+DRAWN_FROM = 1 << 20
+"""Ground states that are listed to draw from where no elimination does."""
+
+SHOWN_RADIUS = 2
+"""Radius of the table by distance where all states are measured."""
+
+
+@dataclass(frozen=True)
+class Measured:
+    """Targets in one model: the look around them and the bandwidth ratio."""
+
+    look: Neighbourhood
+    merit: Bandwidth
+
+
+@dataclass(frozen=True)
+class Trap:
+    """A single-flip local minimum of a reduced model near a target for which the design has none."""
+
+    target: int
+    minimum: LocalMinimum
+    through_auxiliary: bool
+
+
+@dataclass(frozen=True)
+class Traps:
+    """Local minima that a reduction adds near the targets.
+
+    Parameters
+    ----------
+    radius : int
+        Most flips from a lifted target, auxiliaries counted.
+    unstable : tuple of int
+        Targets whose lifted state is itself no local minimum.
+    found : tuple of Trap
+        Lowest rise first.
+    """
+
+    radius: int
+    unstable: tuple[int, ...]
+    found: tuple[Trap, ...]
+
+    @property
+    def through_auxiliaries(self) -> int:
+        """How many need an auxiliary flipped."""
+        return sum(trap.through_auxiliary for trap in self.found)
+
+
+@dataclass(frozen=True)
+class Landscape:
+    """Where the ground states of a model lie.
+
+    Parameters
+    ----------
+    level : Level
+    chosen : str
+        The predicted costs that the way was chosen by.
+    closest : int or None
+        Least number of flips between two ground states; None for a single one.
+    groups : tuple of int or None
+        Sizes of the groups that single flips join; None where the states were too many to list.
+    """
+
+    level: Level
+    chosen: str
+    closest: int | None
+    groups: tuple[int, ...] | None
+
+
+def measured(
+    model: Hamiltonian, targets: States, radius: int | None, limit: int, progress: Report | None, time: float
+) -> Measured:
+    """Targets in a model; without a radius the ratio is exact over all states."""
+    shown = SHOWN_RADIUS if radius is None else radius
+    merit = None if radius is not None else bandwidth(model, targets, progress=progress, time=time)
+    look = neighbourhood(model, targets, shown, limit=limit, progress=progress, time=time)
+    return Measured(look, merit or bandwidth_within(look))
+
+
+def measured_on_minimum(
+    reduction: Reduction, targets: States, radius: int | None, limit: int, progress: Report | None, time: float
+) -> Measured:
+    """Source targets in P: as a polynomial where projection gives one, else minimised state by state."""
+    model, projection = reduction.model, reduction.projection
+    at = reduction.lift(targets)[:, [model.positions[label] for label in reduction.originals]]
+    if projection.polynomial is not None:
+        return measured(projection.polynomial, at, radius, limit, progress, time)
+
+    def within(flips: int) -> Neighbourhood:
+        return neighbourhood_of(
+            lambda states: projection.minimum(states)[0], at, flips, domain=model.domain, constant=model.constant,
+            resolution=model.resolution, limit=limit, progress=progress, time=time,
+        )  # fmt: skip
+
+    merit = None if radius is not None else bandwidth_within(within(at.shape[1]))
+    look = within(SHOWN_RADIUS if radius is None else radius)
+    return Measured(look, merit or bandwidth_within(look))
+
+
+def traps(reduction: Reduction, targets: States, radius: int) -> Traps:
+    """Local minima of the reduced model near the lifted targets that are not lifted local minima of the source.
+
+    Raises
+    ------
+    LimitError
+        Too many sets of flips hold together around a target.
+    """
+    lifted = reduction.lift(targets)
+    near = minima_near(reduction.model, lifted, radius)
+    found = [trap for place, one in enumerate(near) for trap in _new(reduction, lifted[place], place, one)]
+    unstable = tuple(place for place, one in enumerate(near) if not one.centre_is_minimum)
+    return Traps(radius, unstable, tuple(sorted(found, key=lambda trap: (trap.minimum.rise, trap.target))))
+
+
+def _new(reduction: Reduction, centre: States, place: int, near: NearMinima) -> list[Trap]:
+    if not near.minima:
+        return []
+    model = reduction.model
+    states = np.repeat(centre[None, :], len(near.minima), axis=0)
+    first, second = (1, -1) if model.domain == "spin" else (0, 1)
+    for row, minimum in enumerate(near.minima):
+        columns = [model.positions[label] for label in minimum.flips]
+        states[row, columns] = np.where(states[row, columns] == first, second, first)
+    below = reduction.project(states)
+    lifted = model.integer_energies(reduction.lift(below))
+    known = is_local_minimum(reduction.source, below) & np.asarray(model.integer_energies(states) == lifted, bool)
+    through = set(near.through(reduction.auxiliaries))
+    return [
+        Trap(place, minimum, minimum in through)
+        for minimum, old in zip(near.minima, known.tolist(), strict=True)
+        if not old
+    ]
+
+
+def levels_with_landscape(
+    model: Hamiltonian, count: int, limit: int, progress: Report | None, checkpoint: Path | None, time: float
+) -> tuple[list[Level], Landscape]:
+    """The low levels of a model, and how its ground states lie to each other."""
+    chosen = predictions(model, count)
+    levels = low_levels(model, count, limit, progress=progress, checkpoint=checkpoint, time=time)
+    ground = levels[0]
+    if not ground.complete and ground.degeneracy <= LISTED:
+        ground = ground_states(model, ground.degeneracy, progress=progress, time=time)
+    return levels, landscape(ground, chosen)
+
+
+def landscape_after(reduction: Reduction, limit: int, progress: Report | None, time: float) -> Landscape:
+    """How the ground states of a reduced model lie, auxiliaries included.
+
+    Where every state has one best setting of the auxiliaries they are the lifted minimisers of P, which has fewer
+    variables; otherwise the reduced model is searched itself.
+    """
+    projection, most = reduction.projection, max(limit, LISTED)
+    if projection.polynomial is not None and projection.uniform_multiplicity == 1:
+        level = ground_states(projection.polynomial, most, progress=progress, time=time)
+        lifted = _with_best_auxiliaries(projection, level.states)
+        level = Level(level.energy, level.degeneracy, lifted, level.complete, None, f"{level.method} of P, lifted")
+        return landscape(level, predictions(projection.polynomial, 1))
+    level = ground_states(reduction.model, most, progress=progress, time=time)
+    return landscape(level, predictions(reduction.model, 1))
+
+
+def _with_best_auxiliaries(projection: Projection, states: States) -> States:
+    model = projection.model
+    whole = np.zeros((len(states), model.size), np.int8)
+    whole[:, [model.positions[label] for label in projection.originals]] = states
+    if len(states) and projection.auxiliaries:
+        whole[:, [model.positions[label] for label in projection.auxiliaries]] = projection.minimum(states)[1]
+    return whole
+
+
+def landscape(level: Level, chosen: str) -> Landscape:
+    """Closest pair and groups, where all ground states are listed."""
+    if not level.complete:
+        return Landscape(level, chosen, None, None)
+    return Landscape(level, chosen, minimum_distance(level.states), connected_groups(level.states).sizes)
+
+
+def predictions(model: Hamiltonian, count: int) -> str:
+    """The ways to the lowest levels with their predicted costs, cheapest first."""
+    return "; ".join(str(route) for route in routes(model, count))
+
+
+def drawn(model: Hamiltonian, number: int, seed: int, progress: Report | None, time: float) -> tuple[Level, States]:
+    """The ground level and states drawn uniformly from it, with repetition.
+
+    Raises
+    ------
+    LimitError
+        The ground states can neither be eliminated nor listed.
+    """
+    route = routes(model)[0]
+    level = ground_states(model, 0 if route.method == "elimination" else DRAWN_FROM, progress=progress, time=time)
+    if route.method == "elimination" or not level.complete:
+        return level, draw_ground_states(model, number, seed, time=time, cost=route.elimination)
+    chance = random.Random(seed)
+    rows: Sequence[int] = [chance.randrange(level.degeneracy) for _ in range(number)]
+    return level, level.states[np.asarray(rows, np.int64)]
