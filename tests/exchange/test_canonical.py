@@ -31,6 +31,12 @@ def test_the_bytes_are_those_of_rfc8785(value: Any) -> None:
     assert b"".join(canonical_parts(value)) == rfc8785.dumps(value)
 
 
+def test_keys_stand_in_the_order_of_their_utf16_code_units() -> None:
+    keys = {"\ufb01": 1, "\U0001f600": 2, "z": 3}
+    assert list(json.loads(b"".join(canonical_parts(keys)))) == ["z", "\U0001f600", "\ufb01"]
+    assert b"".join(canonical_parts(keys)) == rfc8785.dumps(keys)
+
+
 @given(st.lists(st.lists(safe, min_size=2, max_size=2), min_size=1, max_size=5))
 def test_an_array_stands_for_its_list(rows: list[list[int]]) -> None:
     array = np.array(rows, np.int64)

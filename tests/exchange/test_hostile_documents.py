@@ -113,6 +113,8 @@ PLACES: list[tuple[str, Any, str]] = [
     ("/notes", [], "/notes: must be an object"),
     ("/notes", {"x": float("inf")}, "/notes/x: not a finite number"),
     ("/notes", {"x": [1, 2**60]}, r"/notes/x/1: an integer beyond 2\*\*53 - 1"),
+    ("/notes", {"x": 2**53}, "/notes/x: an integer beyond"),
+    ("/notes", {"x": {"y": -(2**53)}}, "/notes/x/y: an integer beyond"),
     ("/extensions", {"x": "\udfff"}, "/extensions/x: .* lone surrogate"),
     ("/intent", {"aim": 1}, "/intent/aim: there is no field of this name"),
     ("/intent", {"ground_energy": 3}, "/intent/ground_energy: must be a string"),

@@ -5,6 +5,7 @@ from __future__ import annotations
 import copy
 from typing import Any
 
+import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -104,6 +105,27 @@ def test_the_array_checks_accept_what_the_schema_accepts(document: dict[str, Any
     before = repr(document)
     assert accepted(document) == validator("model").is_valid(document)
     assert repr(document) == before
+
+
+@pytest.mark.parametrize(
+    ("key", "value", "good"),
+    [
+        ("members", [[0], [2**31 - 2]], True),
+        ("members", [[0], [2**31 - 1]], False),
+        ("weights", [1, 2**53 - 1], True),
+        ("weights", [1, 2**53], False),
+        ("weights", [1, -(2**53) + 1], True),
+        ("weights", [1, -(2**53)], False),
+        ("weights", ["1", "9" * 1000], True),
+        ("weights", ["1", "9" * 1001], False),
+        ("weights", [1, 2.0], True),
+        ("weights", [1, "2"], False),
+    ],
+)
+def test_both_draw_the_line_at_the_same_number(key: str, value: list[Any], good: bool) -> None:
+    document = copy.deepcopy(BASE)
+    document["terms"][0][key] = value
+    assert accepted(document) == validator("model").is_valid(document) == good
 
 
 def test_the_two_answers_are_compared_on_both_sides() -> None:
