@@ -167,14 +167,19 @@ class Levels:
             found.prove("ground-states", self.method, f"{meet} on both sides, ground levels by {E.method}")
             return
         mine = self.case.source_states(minimisers)
-        lost_states = _without(E.states, mine)
-        spurious_states = minimisers[_absent(mine, E.states)]
+        lost_states = _without(E.states, mine) if lost else E.states[:0]
+        spurious_states = minimisers[_absent(mine, E.states)] if spurious else minimisers[:0]
         if len(minimisers) < degeneracy and lost:
             lost_states = self._confirmed_lost(lost_states)
         if not E.complete and spurious:
             spurious_states = self._confirmed_spurious(spurious_states)
         if not len(lost_states) and not len(spurious_states) and polynomial is not None:
             lost_states, spurious_states = self._sought(polynomial, lost, spurious)
+        if not len(lost_states) and not len(spurious_states):
+            found.leave_open(
+                "ground-states", f"{self.method}: {lost} lost and {spurious} spurious, none of them listed"
+            )
+            return
         found.lost = self._listed(lost_states, lost)
         found.spurious = self._listed(self.case.source_states(spurious_states), spurious)
         text = f"{lost} lost, {spurious} spurious of {E.degeneracy} ground states"
@@ -204,15 +209,15 @@ class Levels:
     def _sought(self, polynomial: Hamiltonian, lost: int, spurious: int) -> tuple[States, States]:
         """One lost, else one spurious state, sought where the cut lists held none."""
         E, none = self.case.energy, np.zeros((0, len(self.case.originals)), np.int8)
-        if lost and E.blocks:
+        if lost:
             steep = 1 + 2 * polynomial.weight_bound * polynomial.resolution / E.resolution
             state = self.ground(steep * E - polynomial).states[:1]
             if E.energy(state) == self.source.energy and polynomial.energy(state) > self.reduced.energy:
                 return self.case.source_states(state), none
-        if spurious and polynomial.blocks:
+        if spurious:
             steep = 1 + 2 * E.weight_bound * E.resolution / polynomial.resolution
             return none[:, : self.case.source.size], self.ground(steep * polynomial - E).states[:1]
-        return self.case.unrepresented_state()[None, :], none
+        return none[:, : self.case.source.size], none
 
     def _even_by_projection(self, level: Level) -> None:
         if not level.complete:

@@ -35,7 +35,7 @@ STARTS, CENTRES, DESCENT = 64, 4, 2**30
 
 def by_neighbourhood(case: Case, options: Options, found: Findings) -> None:
     """Test the claims on the states near the centres."""
-    if case.model.locality > 2:
+    if not case.projectable:
         _leave(options, found, "the model is not quadratic")
         return
     try:

@@ -21,7 +21,7 @@ RULES = ("guards", "chains", "shared bounds")
 
 def by_projection(case: Case, options: Options, found: Findings) -> None:
     """Settle `energies` and what follows, or refute it with a state; say why where a cluster is undecided."""
-    if case.model.locality > 2:
+    if not case.projectable:
         for name in options.asked:
             found.leave_open(name, "projection: the model is not quadratic")
         return

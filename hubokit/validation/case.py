@@ -19,6 +19,7 @@ from hubokit.errors import HubokitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.states import from_bits, to_bits
 from hubokit.reduction.result import Reduction
+from hubokit.validation.no_auxiliaries import OwnProjection
 from hubokit.validation.verdict import Witness
 
 Bits = NDArray[np.uint8]
@@ -82,7 +83,12 @@ class Case:
     @cached_property
     def projection(self) -> Any:
         """The model's projection, made once by the reduction."""
-        return self.reduction.projection
+        return self.reduction.projection if self.auxiliaries else OwnProjection(self.model)
+
+    @property
+    def projectable(self) -> bool:
+        """Whether there is a projection: the model is quadratic, or has no auxiliaries."""
+        return not self.auxiliaries or self.model.locality <= 2
 
     @property
     def declared(self) -> tuple[Fraction, Fraction] | None:
@@ -180,7 +186,7 @@ class Case:
 
         A model that is not quadratic has no projection: there the auxiliaries' own Hamiltonian is searched.
         """
-        if self.model.locality > 2:
+        if not self.projectable:
             return self._searched_witness(original_state)
         minimum, best, counts = self.projection.minimum(original_state[None, :])
         value = self.model.constant + int(minimum[0]) * self.model.resolution

@@ -86,7 +86,7 @@ def _levels(case: Case, options: Options, found: Findings) -> None:
             figures["projection-gap"] = _gap(None if gap is None else found.scale * gap)
             if energy is not None:
                 figures["model-ground-energy"] = Figure(found.scale * energy + found.shift)
-        elif case.model.locality <= 2 and case.projection.polynomial is not None:
+        elif case.projectable and case.projection.polynomial is not None:
             level = _ground(case.projection.polynomial.with_labels(case.originals), options)
             figures["model-ground-energy"] = Figure(level.energy)
             figures["projection-degeneracy"] = Figure(Fraction(level.degeneracy))
@@ -107,11 +107,11 @@ def _auxiliary_gaps(case: Case, found: Findings) -> None:
     figures = found.figures
     at, everywhere = "auxiliary-gap-at-minimisers", "auxiliary-gap-everywhere"
     if everywhere not in figures:
-        bound = case.projection.gap_everywhere if case.model.locality <= 2 else None
+        bound = case.projection.gap_everywhere if case.projectable else None
         figures[everywhere] = _bound(bound) if bound is not None else _unknown("some auxiliaries are undecided")
     if at in figures:
         return
-    if found.minimisers is not None and case.model.locality <= 2:
+    if found.minimisers is not None and case.projectable:
         try:
             figures[at] = _bound(case.projection.gap_at(found.minimisers))
             return
@@ -176,7 +176,7 @@ def _evenness(case: Case, found: Findings) -> None:
     """W over the ground states, and a sentence on what unevenness does."""
     gap = found.figures["source-gap"].value
     states = found.minimisers
-    if states is None or gap is None or not found.proved("ground-states") or case.model.locality > 2:
+    if states is None or gap is None or not found.proved("ground-states") or not case.projectable:
         return
     try:
         weights = log_weights(case, states, found.scale * gap)

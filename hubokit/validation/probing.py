@@ -47,7 +47,7 @@ def probe(case: Case, found: Findings, method: str, given: tuple[States, NDArray
     states = np.concatenate([states, from_bits(bits, case.model.domain)])
     if case.declared is not None:
         found.take_scale(judge_scale(case.declared, None))
-    if case.model.locality > 2:
+    if not case.projectable:
         return
     try:
         energy, reduced, best, counts = columns_at(case, states)

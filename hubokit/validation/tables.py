@@ -124,7 +124,7 @@ def tables_by_blocks(case: Case, seconds: float) -> Tables:
         long.
     """
     n = len(case.originals)
-    if case.model.locality > 2:
+    if not case.projectable:
         raise LimitError("the model is not quadratic, and has too many variables to tabulate its energies")
     if n > STATES_LIMIT:
         raise LimitError(f"{n} original variables; state by state goes up to {STATES_LIMIT}")

@@ -12,6 +12,8 @@ from hubokit.validation.case import Case, States
 
 #: Most original variables of which every state is tried.
 ALL_STATES = 14
+#: The same where the model is not quadratic and each state takes a search of its own.
+SEARCHED_STATES = 10
 #: Clusters that are looked into one by one, the most variables each may touch, and random states tried last.
 CLUSTERS, TOUCHED, RANDOM = 256, 12, 4096
 
@@ -25,6 +27,8 @@ def tied_state(case: Case) -> States | None:
     states at random.
     """
     n = len(case.originals)
+    if not case.projectable:
+        return _searched(case)
     offered = case.projection.multiplicity_witness()
     if offered is not None and (found := _first_tied(case, offered)) is not None:
         return found
@@ -42,6 +46,20 @@ def tied_state(case: Case) -> States | None:
     rng = np.random.default_rng(0)
     bits = rng.integers(0, 2, (min(RANDOM, 2**26 // n), n), np.uint8)
     return _first_tied(case, from_bits(bits, case.model.domain))
+
+
+def _searched(case: Case) -> States | None:
+    """A tied state of a model that is not quadratic, each state's auxiliaries searched on their own."""
+    n = len(case.originals)
+    if n <= SEARCHED_STATES:
+        bits = unpack(np.arange(2**n), n)
+    else:
+        bits = np.random.default_rng(0).integers(0, 2, (2**SEARCHED_STATES, n), np.uint8)
+    for state in from_bits(bits, case.model.domain):
+        if case.projected_witness(state).multiplicity != 1:
+            found: States = state
+            return found
+    return None
 
 
 def _first_tied(case: Case, states: States) -> States | None:

@@ -262,3 +262,39 @@ def test_the_screen_names_every_claim_and_stays_in_ascii_and_in_width(by_hand):
         assert all(f"{name:<17} {verdict.claims[name].status}" in text for name in CLAIMS)
         assert max(len(line) for line in text.split("\n")) <= 120
         assert "witness: x:" in text
+
+
+class TestManyGroundStates:
+    """More ground states than are listed: witnesses are sought by tilting one function with the other."""
+
+    LOOSE = tuple(f"v{i:02}" for i in range(40))
+
+    def pair(self, E, F):
+        labels = ["a", "b", *self.LOOSE]
+        return check(
+            Reduction(Hamiltonian(E, "boolean", labels=labels), Hamiltonian(F, "boolean", labels=labels), [])
+        )
+
+    def test_a_lost_state_beyond_the_list_is_found(self):
+        # Only states with the last variables set are lost; the list in lift order begins with the others.
+        last = self.LOOSE[-3:]
+        verdict = self.pair({("a",): 1}, {("a",): 1, last: 1})
+        claim = verdict.claims["ground-states"]
+        assert claim.status == "refuted"
+        assert (verdict.lost.count, verdict.spurious.count) == (2**38, 0)
+        assert claim.witness.source_energy == 0
+        assert claim.witness.model_energy == 1
+
+    def test_a_spurious_state_beyond_the_list_is_found(self):
+        last = self.LOOSE[-3:]
+        verdict = self.pair({("a",): 1, last: 1}, {("a",): 1})
+        claim = verdict.claims["ground-states"]
+        assert claim.status == "refuted"
+        assert (verdict.lost.count, verdict.spurious.count) == (0, 2**38)
+        assert claim.witness.source_energy == 1
+        assert claim.witness.model_energy == 0
+
+    def test_a_constant_source_and_a_model_that_is_not(self):
+        verdict = self.pair({(): 3}, {(self.LOOSE[-1],): 1, (): 3})
+        assert verdict.lost.count == 2**41
+        assert verdict.claims["ground-states"].witness.state[self.LOOSE[-1]] == 1
