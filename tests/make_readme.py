@@ -1,6 +1,7 @@
 """Runs the examples of README.md and puts what they print into it: ``python tests/make_readme.py``.
 
-A block that opens with ```console holds a line ``$ hubokit ...`` and, below it, what that command printed.
+A block that opens with ```console holds a line ``$ hubokit ...`` or ``$ python fixtures/...`` and, below it, what
+that command printed.
 """
 
 from __future__ import annotations
@@ -9,6 +10,7 @@ import contextlib
 import io
 import os
 import re
+import runpy
 import shlex
 import tempfile
 from collections.abc import Iterator
@@ -17,7 +19,7 @@ from pathlib import Path
 from hubokit.cli.app import run
 
 ROOT = Path(__file__).resolve().parents[1]
-BLOCK = re.compile(r"```console\n\$ hubokit (.*?)\n(.*?)```", re.DOTALL)
+BLOCK = re.compile(r"```console\n\$ ((?:hubokit|python fixtures/)[^\n]*)\n(.*?)```", re.DOTALL)
 
 
 @contextlib.contextmanager
@@ -36,15 +38,19 @@ def beside_the_fixtures() -> Iterator[None]:
 def printed(command: str) -> str:
     """What a command prints on standard output."""
     text = io.StringIO()
+    program, *arguments = shlex.split(command)
     with contextlib.redirect_stdout(text):
-        run(shlex.split(command))
+        if program == "python":
+            runpy.run_path(arguments[0])
+        else:
+            run(arguments)
     return text.getvalue().rstrip("\n")
 
 
 def refreshed(readme: str) -> str:
     """The same text with the output of every example as it is now."""
     with beside_the_fixtures():
-        return BLOCK.sub(lambda block: f"```console\n$ hubokit {block[1]}\n{printed(block[1])}\n```", readme)
+        return BLOCK.sub(lambda block: f"```console\n$ {block[1]}\n{printed(block[1])}\n```", readme)
 
 
 if __name__ == "__main__":

@@ -18,7 +18,7 @@ def test_the_examples_show_what_the_commands_print() -> None:
     assert spec.loader is not None
     program = importlib.util.module_from_spec(spec)
     spec.loader.exec_module(program)
-    assert len(program.BLOCK.findall(README)) == 4
+    assert len(program.BLOCK.findall(README)) == 8
     assert program.refreshed(README) == README, "python tests/make_readme.py puts the present output in"
 
 

@@ -23,6 +23,7 @@ Pairs = list[tuple[str, str]]
 KINDS = {1: "field", 2: "coupler", 3: "three-body term", 4: "four-body term", 5: "five-body term", 6: "six-body term"}
 SHOWN = 3
 SHOWN_ROWS = 20
+LONG_REASON = 60
 
 
 def model_fields(model: Hamiltonian, auxiliaries: int = 0) -> Pairs:
@@ -212,7 +213,15 @@ def figure_fields(verdict: Verdict) -> Pairs:
     """The figures beside the claims."""
     from hubokit.validation.verdict import FIGURES
 
-    named = [(FIGURES[name], str(verdict.figures[name])) for name in FIGURES if name in verdict.figures]
+    named: Pairs = []
+    said: dict[str, str] = {}
+    for name, title in FIGURES.items():
+        if name not in verdict.figures:
+            continue
+        text = str(verdict.figures[name])
+        known = said.setdefault(text, title)
+        # A reason that takes several lines is given once.
+        named.append((title, f"as for the {known}" if known != title and len(text) > LONG_REASON else text))
     return named + [
         (f"thermal evenness at beta * gap = {step.beta_gap:g}", f"{step.ratio:.4g}") for step in verdict.evenness
     ]
