@@ -214,6 +214,6 @@ def _common(*values: Fraction) -> Fraction:
 
 def _times(integers: NDArray[Any], factor: int, offset: int) -> NDArray[Any]:
     largest = max((abs(int(integers.max())), abs(int(integers.min())))) if len(integers) else 0
-    if integers.dtype == object or largest * factor + abs(offset) >= 2**62:
+    if integers.dtype == object or max(largest, 1) * factor + abs(offset) >= 2**62:
         return integers.astype(object) * factor + offset
     return integers.astype(np.int64) * factor + offset

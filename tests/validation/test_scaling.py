@@ -67,3 +67,10 @@ def test_what_is_declared_goes_before_what_is_found():
     assert judge_scale((Fraction(3), Fraction(0)), found).scale_from == "declared"
     assert judge_scale(None, found).scale_from == "found"
     assert judge_scale(None, None).scale_from == "default"
+
+
+def test_a_huge_resolution_beside_energies_that_are_all_nought():
+    P = Column(np.zeros(2, np.int64), Fraction(0), Fraction(10**30))
+    left, right = comparable_columns(P, Column(np.array([0, 1]), Fraction(0), Fraction(1)), Fraction(1), Fraction(0))
+    assert left.tolist() == [0, 0]
+    assert right.tolist() == [0, 1]
