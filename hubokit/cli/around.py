@@ -3,12 +3,15 @@ model side by side."""
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from fractions import Fraction
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 from hubokit.cli.progress import bar
-from hubokit.cli.side_by_side import SHOWN_RADIUS, Measured, Traps, measured, measured_on_minimum, traps
+from hubokit.cli.side_by_side import Asked, Measured, Traps, measured, measured_on_minimum, traps
 from hubokit.cli.states_file import read_states
 from hubokit.cli.text import count, fields, listing, number, section, table
 from hubokit.errors import InputError, LimitError
@@ -22,29 +25,29 @@ Parts = dict[str, Any]
 Sides = list[tuple[str, Measured]]
 FULL = "without --radius all states are looked at; --radius R looks only at those within R flips of a target"
 TRAPS_SHOWN = 3
+SPURIOUS_SHOWN = 5
 
 
-def around(
-    thing: Hamiltonian | Reduction, file: Path, radius: int | None, limit: int, time: float
-) -> tuple[Parts, list[str]]:
+def around(thing: Hamiltonian | Reduction, file: Path, asked: Asked) -> tuple[Parts, list[str]]:
     """Parts of the summary document and sections of text."""
     source = thing.source if isinstance(thing, Reduction) else thing
     targets = read_states(file, source.labels, source.domain)
     if len(targets) == 0:
         raise InputError("no states in the file; one state a line below the names", file=str(file))
     try:
-        sides = _sides(thing, targets, radius, limit, time)
+        sides = _sides(thing, targets, asked)
     except LimitError as refusal:
-        raise (LimitError(f"{refusal.message} ({FULL})", "--targets") if radius is None else refusal) from None
+        raise (LimitError(f"{refusal.message} ({FULL})") if asked.radius is None else refusal) from None
     parts: Parts = {
         "figures": _figures(sides),
         "shells": [row for name, side in sides for row in _shells(name, side)],
     }
     parts["notes"] = [f"{name}: {side.merit}" if len(sides) > 1 else str(side.merit) for name, side in sides]
     shown = [section(f"AROUND  {file}", _visits(sides), "", by_distance(sides)), section("MERIT", merits(sides))]
+    shown += [section(f"AT OR BELOW  {name}", text) for name, side in sides if (text := spurious_text(side))]
     if isinstance(thing, Reduction):
         try:
-            trapped = traps(thing, targets, SHOWN_RADIUS if radius is None else radius)
+            trapped = traps(thing, targets, asked.shown)
         except LimitError as refusal:
             parts["notes"].append(f"local minima near the targets were not looked for: {refusal}")
             shown.append(section("TRAPS", fields([("not looked for", str(refusal))])))
@@ -54,18 +57,12 @@ def around(
     return parts, shown
 
 
-def _sides(thing: Hamiltonian | Reduction, targets: States, radius: int | None, limit: int, time: float) -> Sides:
-    source = thing.source if isinstance(thing, Reduction) else thing
+def _sides(thing: Hamiltonian | Reduction, targets: States, asked: Asked) -> Sides:
     with bar("walking") as progress:
-        sides = [
-            (
-                "source" if isinstance(thing, Reduction) else "model",
-                measured(source, targets, radius, limit, progress, time),
-            )
-        ]
-        if isinstance(thing, Reduction):
-            sides.append(("reduced model", measured_on_minimum(thing, targets, radius, limit, progress, time)))
-    return sides
+        if not isinstance(thing, Reduction):
+            return [("model", measured(thing, targets, asked, progress))]
+        source = measured(thing.source, targets, asked, progress)
+        return [("source", source), ("reduced model", measured_on_minimum(thing, targets, asked, progress))]
 
 
 def _visits(sides: Sides) -> str:
@@ -171,6 +168,10 @@ def _shells(name: str, side: Measured) -> list[Parts]:
                 "states": str(states),
                 "lowest": _text(lowest),
                 "at_or_below": str(below),
+                "spurious": [
+                    {"energy": format_fraction(energy), "target": target, "flips": list(flips)}
+                    for energy, target, flips in _spurious(side, [distance])
+                ],
             }
         )
     return rows
@@ -178,6 +179,29 @@ def _shells(name: str, side: Measured) -> list[Parts]:
 
 def _text(value: Fraction | None) -> str | None:
     return None if value is None else format_fraction(value)
+
+
+def _spurious(side: Measured, distances: Iterable[int]) -> list[tuple[Fraction, int, tuple[str, ...]]]:
+    """Energy, target (from 1) and flips of the listed states at or below the highest target, lowest first."""
+    found = []
+    for place, ball in enumerate(side.look.balls, 1):
+        for distance in distances:
+            shell = ball.shells[distance]
+            for energy, state in zip(shell.energies, shell.spurious, strict=True):
+                flips = tuple(side.labels[i] for i in np.flatnonzero(state != ball.centre))
+                found.append((energy, place, flips))
+    return sorted(found, key=lambda one: (one[0], len(one[2]), one[1]))
+
+
+def spurious_text(side: Measured) -> str:
+    """The lowest states that lie at or below the highest target without being targets."""
+    found = _spurious(side, range(1, side.look.radius + 1))
+    rows = [[number(energy), str(target), listing(flips, 6)] for energy, target, flips in found[:SPURIOUS_SHOWN]]
+    if not rows:
+        return ""
+    more = side.look.at_or_below - len(rows)
+    left = [f"  and {count(more, 'more state')}; --json lists them up to --limit"] if more else []
+    return "\n".join([table(["energy", "target", "flips away from it"], rows, align="rr"), *left])
 
 
 def trap_figures(found: Traps) -> Parts:

@@ -38,9 +38,37 @@ SHOWN_RADIUS = 2
 
 
 @dataclass(frozen=True)
-class Measured:
-    """Targets in one model: the look around them and the bandwidth ratio."""
+class Asked:
+    """How targets are to be looked at.
 
+    Parameters
+    ----------
+    radius : int or None
+        None: the ratio over all states, the table up to `SHOWN_RADIUS`.
+    limit : int
+        Most spurious states listed for each target and distance.
+    distinct : bool
+        Whether a state near several targets counts once.
+    time : float
+        Seconds that a look may take.
+    """
+
+    radius: int | None = None
+    limit: int = 100
+    distinct: bool = False
+    time: float = 600.0
+
+    @property
+    def shown(self) -> int:
+        """Radius of the table by distance."""
+        return SHOWN_RADIUS if self.radius is None else self.radius
+
+
+@dataclass(frozen=True)
+class Measured:
+    """Targets in one model of these variables: the look around them and the bandwidth ratio."""
+
+    labels: tuple[str, ...]
     look: Neighbourhood
     merit: Bandwidth
 
@@ -99,34 +127,34 @@ class Landscape:
     groups: tuple[int, ...] | None
 
 
-def measured(
-    model: Hamiltonian, targets: States, radius: int | None, limit: int, progress: Report | None, time: float
-) -> Measured:
+def measured(model: Hamiltonian, targets: States, asked: Asked, progress: Report | None = None) -> Measured:
     """Targets in a model; without a radius the ratio is exact over all states."""
-    shown = SHOWN_RADIUS if radius is None else radius
-    merit = None if radius is not None else bandwidth(model, targets, progress=progress, time=time)
-    look = neighbourhood(model, targets, shown, limit=limit, progress=progress, time=time)
-    return Measured(look, merit or bandwidth_within(look))
+    merit = None if asked.radius is not None else bandwidth(model, targets, progress=progress, time=asked.time)
+    look = neighbourhood(
+        model, targets, asked.shown, limit=asked.limit, distinct=asked.distinct, progress=progress, time=asked.time
+    )
+    return Measured(model.labels, look, merit or bandwidth_within(look))
 
 
 def measured_on_minimum(
-    reduction: Reduction, targets: States, radius: int | None, limit: int, progress: Report | None, time: float
+    reduction: Reduction, targets: States, asked: Asked, progress: Report | None = None
 ) -> Measured:
     """Source targets in P: as a polynomial where projection gives one, else minimised state by state."""
     model, projection = reduction.model, reduction.projection
     at = reduction.lift(targets)[:, [model.positions[label] for label in reduction.originals]]
     if projection.polynomial is not None:
-        return measured(projection.polynomial, at, radius, limit, progress, time)
+        return measured(projection.polynomial, at, asked, progress)
 
     def within(flips: int) -> Neighbourhood:
         return neighbourhood_of(
             lambda states: projection.minimum(states)[0], at, flips, domain=model.domain, constant=model.constant,
-            resolution=model.resolution, limit=limit, progress=progress, time=time,
+            resolution=model.resolution, limit=asked.limit, distinct=asked.distinct, progress=progress,
+            time=asked.time,
         )  # fmt: skip
 
-    merit = None if radius is not None else bandwidth_within(within(at.shape[1]))
-    look = within(SHOWN_RADIUS if radius is None else radius)
-    return Measured(look, merit or bandwidth_within(look))
+    merit = None if asked.radius is not None else bandwidth_within(within(at.shape[1]))
+    look = within(asked.shown)
+    return Measured(reduction.originals, look, merit or bandwidth_within(look))
 
 
 def traps(reduction: Reduction, targets: States, radius: int) -> Traps:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from dataclasses import replace
 from pathlib import Path
 from typing import Annotated, Any
@@ -12,7 +13,7 @@ from hubokit.cli import describing, options, summary
 from hubokit.cli.around import around
 from hubokit.cli.loading import Elsewhere, load_document, load_reduction
 from hubokit.cli.progress import bar
-from hubokit.cli.side_by_side import Landscape, drawn, landscape_after, levels_with_landscape
+from hubokit.cli.side_by_side import Asked, Landscape, drawn, landscape_after, levels_with_landscape
 from hubokit.cli.states_file import states_text
 from hubokit.cli.text import count, fields, listing, number, section
 from hubokit.errors import HubokitError, InputError, LimitError
@@ -49,6 +50,9 @@ def command(
     radius: Annotated[
         int | None, typer.Option("--radius", min=0, help="Look only at states so many flips away from a target.")
     ] = None,
+    distinct: Annotated[
+        bool, typer.Option("--distinct", help="Count a state near several targets once, not for each.")
+    ] = False,
     draw: Annotated[
         int | None, typer.Option("--draw", min=1, metavar="N", help="Draw N ground states, each equally likely.")
     ] = None,
@@ -63,9 +67,13 @@ def command(
 ) -> None:
     """Find the low levels of a model, every level, ground states drawn at random, or what lies around targets."""
     _refuse_mixed({"--density": density, "--targets": targets is not None, "--draw": draw is not None})
-    for missing, option, needs in ((targets, radius, "--radius"), (draw, out, "--output")):
-        if missing is None and option is not None:
-            raise InputError(f"it goes with {'--targets' if needs == '--radius' else '--draw'}", needs)
+    for option, given, job, asked in (
+        ("--radius", radius is not None, "--targets", targets is not None),
+        ("--distinct", distinct, "--targets", targets is not None),
+        ("--output", out is not None, "--draw", draw is not None),
+    ):
+        if given and not asked:
+            raise InputError(f"it goes with {job}", option)
     if out is not None:
         refuse_existing(out, force=force)
     thing = _loaded(model, Elsewhere(source, auxiliaries, origin))
@@ -73,11 +81,14 @@ def command(
     if density:
         parts, shown = _density(hamiltonian, time, checkpoint)
     elif targets is not None:
-        parts, shown = around(thing, targets, radius, limit, time)
+        parts, shown = around(thing, targets, Asked(radius, limit, distinct, time))
     elif draw is not None:
         parts, shown = _draw(hamiltonian, draw, seed, out, force, time)
     else:
-        parts, shown = _levels(thing, levels, limit, time, checkpoint, states)
+        try:
+            parts, shown = _levels(thing, levels, limit, time, checkpoint, states)
+        except LimitError as refusal:
+            raise LimitError(f"{refusal.message} (--targets STATES.csv --radius R)", file=str(model)) from None
     if as_json:
         heads: Parts = {"model": summary.model_part(hamiltonian, str(model))}
         if isinstance(thing, Reduction):
@@ -180,9 +191,12 @@ def _ground_section(title: str, ground: Landscape) -> str:
     if ground.groups is None:
         lines.append(("closest pair", "not looked for: too many states to list; --limit lists more"))
     elif ground.closest is not None:
-        sizes = listing([str(size) for size in sorted(ground.groups, reverse=True)], GROUPS_SHOWN)
+        sizes = listing(
+            [f"{amount} of {count(size, 'state')}" for size, amount in sorted(Counter(ground.groups).items())][::-1],
+            GROUPS_SHOWN,
+        )
         lines.append(("closest pair", f"{count(ground.closest, 'flip')} apart"))
-        lines.append(("groups", f"{len(ground.groups)} joined by single flips, of {sizes}"))
+        lines.append(("groups", f"{len(ground.groups)} joined by single flips: {sizes}"))
     lines += [("found by", level.method), ("predicted", ground.chosen)]
     return section(title, fields(lines))
 

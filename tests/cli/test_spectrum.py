@@ -14,7 +14,7 @@ import numpy as np
 import pytest
 
 import hubokit as hk
-from hubokit.cli.side_by_side import landscape_after, measured_on_minimum, traps
+from hubokit.cli.side_by_side import Asked, landscape_after, measured_on_minimum, traps
 from hubokit.cli.states_file import read_states, states_text
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -102,6 +102,34 @@ def test_with_a_radius_the_figures_are_worded_as_bounds(hubokit: Any, files: tup
     assert rows == [("source", 0, "2"), ("source", 1, "12"), ("model", 0, "2"), ("model", 1, "12")]
 
 
+def test_states_at_or_below_the_targets_are_named_by_their_flips(hubokit: Any, fixtures: Path) -> None:
+    model = hk.read(fixtures / "greenhouse.json")
+    targets = read_states(fixtures / "greenhouse-settings.csv", model.labels, "boolean")
+    arguments = ["spectrum", fixtures / "greenhouse.json", "--targets", fixtures / "greenhouse-settings.csv"]
+    document = summary(hubokit(*arguments, "--radius", "2", "--json").out)
+    seen = set()
+    for row in document["shells"]:
+        assert len(row["spurious"]) == int(row["at_or_below"])
+        for one in row["spurious"]:
+            state = targets[one["target"] - 1].copy()
+            state[[model.positions[label] for label in one["flips"]]] ^= 1
+            assert len(one["flips"]) == row["distance"]
+            assert model.energy(state.tolist()) == Fraction(one["energy"]) == 0
+            seen.add(tuple(state.tolist()))
+    ground = hk.ground_states(model).states
+    near = (ground[:, None, :] != targets[None]).sum(axis=2).min(axis=1)
+    assert seen == {tuple(s) for s in ground[(near > 0) & (near <= 2)].tolist()}
+    assert "flips away from it" in hubokit(*arguments, "--radius", "2").out
+
+
+def test_a_state_near_several_targets_is_counted_once_when_asked(hubokit: Any, fixtures: Path) -> None:
+    arguments = ["spectrum", fixtures / "greenhouse.json", "--targets", fixtures / "greenhouse-settings.csv"]
+    once = summary(hubokit(*arguments, "--radius", "14", "--distinct", "--json").out)
+    assert once["figures"]["states"] == str(2**14)
+    often = summary(hubokit(*arguments, "--radius", "14", "--json").out)
+    assert often["figures"]["states"] == str(6 * 2**14)
+
+
 def test_a_minimum_that_is_no_polynomial_is_measured_state_by_state(files: tuple[Path, Path, Path]) -> None:
     from dataclasses import replace
 
@@ -109,8 +137,8 @@ def test_a_minimum_that_is_no_polynomial_is_measured_state_by_state(files: tuple
     unknown.__dict__["projection"] = replace(unknown.projection, polynomial=None)
     targets = read_states(files[2], known.source.labels, "spin")
     for radius in (None, 0, 2):
-        first = measured_on_minimum(known, targets, radius, 10, None, 600.0)
-        second = measured_on_minimum(unknown, targets, radius, 10, None, 600.0)
+        first = measured_on_minimum(known, targets, Asked(radius))
+        second = measured_on_minimum(unknown, targets, Asked(radius))
         assert [first.merit.lowest_other, first.merit.exact] == [second.merit.lowest_other, second.merit.exact]
         for one, other in zip(first.look.balls, second.look.balls, strict=True):
             seen = [(s.states, s.lowest, s.at_or_below) for s in one.shells]
@@ -225,6 +253,7 @@ def test_options_that_do_not_go_together_are_refused(hubokit: Any, files: tuple[
         ["--draw", "3", "--targets", files[2]],
         ["--density", "--draw", "3"],
         ["--radius", "2"],
+        ["--distinct"],
         ["-o", "drawn.csv"],
     ):
         done = hubokit("spectrum", files[0], *wrong)
