@@ -214,6 +214,21 @@ def test_ground_states_before_and_after_reduction_lie_as_enumeration_finds_them(
     assert lifted.closest == figures["closest-ground-states"]
 
 
+def test_a_reduced_model_too_large_to_search_is_described_by_lifted_ground_states(
+    hubokit: Any, fixtures: Path, tmp_path: Path
+) -> None:
+    reduced = tmp_path / "reduced.json"
+    assert hubokit("reduce", fixtures / "low-autocorrelation-16.json", "-o", reduced).code == 0
+    reduction = hk.read(reduced)
+    least, groups = joined(reduction.lift(hk.ground_states(reduction.source).states))
+    document = summary(hubokit("spectrum", reduced, "--json").out)
+    assert document["levels"] == []
+    assert any("levels of the reduced model" in note for note in document["notes"])
+    assert document["figures"]["closest-ground-states"] == least
+    assert document["figures"]["groups-of-ground-states"] == len(groups)
+    assert document["figures"]["source-closest-ground-states"] < least
+
+
 def test_how_the_ground_states_were_found_is_said_with_the_predicted_costs(hubokit: Any, tmp_path: Path) -> None:
     chain = hk.Hamiltonian({(f"v{i}", f"v{i + 1}", f"v{i + 2}"): 1 for i in range(198)}, "spin")
     hk.write(chain, tmp_path / "chain.json")
