@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import random
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -256,3 +256,14 @@ def drawn(model: Hamiltonian, number: int, seed: int, progress: Report | None, t
     chance = random.Random(seed)
     rows: Sequence[int] = [chance.randrange(level.degeneracy) for _ in range(number)]
     return level, level.states[np.asarray(rows, np.int64)]
+
+
+def drawn_after(
+    reduction: Reduction, number: int, seed: int, progress: Report | None, time: float
+) -> tuple[Level, States]:
+    """The same for a reduced model: from P and lifted where every state has one best setting of the auxiliaries."""
+    projection = reduction.projection
+    if projection.polynomial is None or projection.uniform_multiplicity != 1:
+        return drawn(reduction.model, number, seed, progress, time)
+    level, states = drawn(projection.polynomial, number, seed, progress, time)
+    return replace(level, gap=None, method=f"{level.method} of P, lifted"), _with_best_auxiliaries(projection, states)

@@ -13,7 +13,7 @@ from hubokit.cli import describing, options, summary
 from hubokit.cli.around import around
 from hubokit.cli.loading import Elsewhere, load_document, load_reduction
 from hubokit.cli.progress import bar
-from hubokit.cli.side_by_side import Asked, Landscape, drawn, landscape_after, levels_with_landscape
+from hubokit.cli.side_by_side import Asked, Landscape, drawn, drawn_after, landscape_after, levels_with_landscape
 from hubokit.cli.states_file import states_text
 from hubokit.cli.text import count, fields, listing, number, section
 from hubokit.errors import HubokitError, InputError, LimitError
@@ -83,7 +83,7 @@ def command(
     elif targets is not None:
         parts, shown = around(thing, targets, Asked(radius, limit, distinct, time))
     elif draw is not None:
-        parts, shown = _draw(hamiltonian, draw, seed, out, force, time)
+        parts, shown = _draw(thing, draw, seed, out, force, time)
     else:
         try:
             parts, shown = _levels(thing, levels, limit, time, checkpoint, states)
@@ -227,10 +227,13 @@ def _density(model: Hamiltonian, time: float, checkpoint: Path | None) -> tuple[
 
 
 def _draw(
-    model: Hamiltonian, amount: int, seed: int, out: Path | None, force: bool, time: float
+    thing: Hamiltonian | Reduction, amount: int, seed: int, out: Path | None, force: bool, time: float
 ) -> tuple[Parts, list[str]]:
     with bar("searching") as progress:
-        level, states = drawn(model, amount, seed, progress, time)
+        if isinstance(thing, Reduction):
+            model, (level, states) = thing.model, drawn_after(thing, amount, seed, progress, time)
+        else:
+            model, (level, states) = thing, drawn(thing, amount, seed, progress, time)
     said = [
         ("drawn", f"{count(amount, 'state')} with seed {seed}, every ground state equally likely each time"),
         ("among", f"{level.degeneracy} at {number(level.energy)}"),

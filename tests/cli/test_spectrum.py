@@ -227,6 +227,8 @@ def test_a_reduced_model_too_large_to_search_is_described_by_lifted_ground_state
     assert document["figures"]["closest-ground-states"] == least
     assert document["figures"]["groups-of-ground-states"] == len(groups)
     assert document["figures"]["source-closest-ground-states"] < least
+    states = np.array(summary(hubokit("spectrum", reduced, "--draw", "9", "--json").out)["drawn"], np.int8)
+    assert set(energies(reduction.model, states)) == {hk.ground_states(reduction.source).energy}
 
 
 def test_how_the_ground_states_were_found_is_said_with_the_predicted_costs(hubokit: Any, tmp_path: Path) -> None:
