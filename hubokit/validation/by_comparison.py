@@ -10,9 +10,9 @@ from hubokit.errors import LimitError
 from hubokit.model.numbers import format_fraction
 from hubokit.spectrum.comparison_result import Comparison, GroundStates
 from hubokit.validation.case import Case, States, rows
-from hubokit.validation.evidence import Options
 from hubokit.validation.findings import Findings
 from hubokit.validation.judging import LISTED, NO_AUXILIARY_GAP
+from hubokit.validation.options import Options
 from hubokit.validation.scaling import Judged
 from hubokit.validation.uneven import tied_state
 from hubokit.validation.verdict import Figure, StateList, Witness

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from hubokit.errors import LimitError
 from hubokit.validation.case import Case
-from hubokit.validation.evidence import Options
 from hubokit.validation.findings import Findings
 from hubokit.validation.inversions import inversions_below
 from hubokit.validation.judging import Judge, relation_of
+from hubokit.validation.options import Options
 from hubokit.validation.scaling import judge_scale
 from hubokit.validation.tables import Tables, tables_by_blocks, tables_from_model, tables_from_polynomial
 

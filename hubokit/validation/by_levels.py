@@ -24,9 +24,9 @@ from hubokit.model.numbers import format_fraction
 from hubokit.model.states import from_bits, to_bits
 from hubokit.spectrum.levels import Level
 from hubokit.validation.case import Case, States, rows
-from hubokit.validation.evidence import Options
 from hubokit.validation.findings import Findings
 from hubokit.validation.judging import LISTED, gap_figure
+from hubokit.validation.options import Options
 from hubokit.validation.probing import probe
 from hubokit.validation.verdict import Figure, StateList, Witness
 

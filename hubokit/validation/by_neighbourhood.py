@@ -16,8 +16,8 @@ from numpy.typing import NDArray
 from hubokit.errors import InputError, LimitError
 from hubokit.model.states import from_bits, to_bits
 from hubokit.validation.case import Case, States
-from hubokit.validation.evidence import Options
 from hubokit.validation.findings import Findings
+from hubokit.validation.options import Options
 from hubokit.validation.probing import columns_at
 from hubokit.validation.scaling import Column, column_relation, judge_scale
 from hubokit.validation.tables import comparable_columns

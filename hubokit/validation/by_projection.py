@@ -8,8 +8,8 @@ from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import format_fraction
 from hubokit.validation.case import Case, States
 from hubokit.validation.difference import largest_terms, least_bound, nonzero_state
-from hubokit.validation.evidence import Options
 from hubokit.validation.findings import Findings
+from hubokit.validation.options import Options
 from hubokit.validation.scaling import Relation, judge_scale, polynomial_relation
 from hubokit.validation.uneven import tied_state
 from hubokit.validation.verdict import Deferred

@@ -12,9 +12,10 @@ from hubokit.model.numbers import Number, as_fraction
 from hubokit.reduction.result import Reduction
 from hubokit.validation.case import Case
 from hubokit.validation.claims import CLAIMS, asked_claims
-from hubokit.validation.evidence import EVIDENCE, Options, kinds_for
+from hubokit.validation.evidence import EVIDENCE, kinds_for
 from hubokit.validation.figures import add_figures
 from hubokit.validation.findings import Findings
+from hubokit.validation.options import Options
 from hubokit.validation.tables import MODEL_LIMIT, STATES_LIMIT
 from hubokit.validation.verdict import Verdict
 

@@ -7,80 +7,25 @@ says of the rest why it could not. None of them knows how the reduction was made
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
-from fractions import Fraction
 from types import MappingProxyType
-from typing import Any
 
 from hubokit.errors import InputError
+from hubokit.validation.by_exhaustion import by_exhaustion
+from hubokit.validation.by_levels import by_elimination
+from hubokit.validation.by_neighbourhood import by_neighbourhood
+from hubokit.validation.by_projection import by_projection
 from hubokit.validation.case import Case
 from hubokit.validation.findings import Findings
-
-
-@dataclass(frozen=True)
-class Options:
-    """What the caller of `check` chose.
-
-    Parameters
-    ----------
-    asked : tuple of str
-    evidence : str
-        "auto", or the one kind asked for.
-    radius : int or None
-        Of the neighbourhood; None = 2.
-    around : states or None
-        Source states; None = states found by descent.
-    below : Fraction or None
-        Order inversions are listed among source states with at most this energy.
-    executor, progress
-        Handed to the engine.
-    time : float
-        Seconds that a predicted cost may come to.
-    """
-
-    asked: tuple[str, ...]
-    evidence: str = "auto"
-    radius: int | None = None
-    around: Any = None
-    below: Fraction | None = None
-    executor: Any = None
-    progress: Any = None
-    time: float = 600.0
-
+from hubokit.validation.options import Options
 
 Kind = Callable[[Case, Options, Findings], None]
 
-
-def _projection(case: Case, options: Options, found: Findings) -> None:
-    from hubokit.validation.by_projection import by_projection
-
-    by_projection(case, options, found)
-
-
-def _exhaustion(case: Case, options: Options, found: Findings) -> None:
-    from hubokit.validation.by_exhaustion import by_exhaustion
-
-    by_exhaustion(case, options, found)
-
-
-def _elimination(case: Case, options: Options, found: Findings) -> None:
-    from hubokit.validation.by_levels import by_elimination
-
-    by_elimination(case, options, found)
-
-
-def _neighbourhood(case: Case, options: Options, found: Findings) -> None:
-    from hubokit.validation.by_neighbourhood import by_neighbourhood
-
-    by_neighbourhood(case, options, found)
-
-
 EVIDENCE: Mapping[str, Kind] = MappingProxyType(
     {
-        "projection": _projection,
-        "exhaustion": _exhaustion,
-        "elimination": _elimination,
-        "neighbourhood": _neighbourhood,
+        "projection": by_projection,
+        "exhaustion": by_exhaustion,
+        "elimination": by_elimination,
+        "neighbourhood": by_neighbourhood,
     }
 )
 

@@ -12,8 +12,8 @@ from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.spectrum.levels import Level
 from hubokit.validation.by_levels import ENUMERABLE, SPARSE_TERMS
 from hubokit.validation.case import Case
-from hubokit.validation.evidence import Options
 from hubokit.validation.findings import Findings
+from hubokit.validation.options import Options
 from hubokit.validation.screen import state_text
 from hubokit.validation.thermal import TEMPERATURES, largest_ratio, log_weights
 from hubokit.validation.verdict import Evenness, Figure

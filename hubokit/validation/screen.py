@@ -4,9 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from textwrap import wrap
+from typing import TYPE_CHECKING
 
 from hubokit.model.numbers import format_fraction
-from hubokit.validation.verdict import FIGURES, Claim, StateList, Verdict, Witness
+from hubokit.validation.figure_names import FIGURES
+
+if TYPE_CHECKING:
+    from hubokit.validation.verdict import Claim, StateList, Verdict, Witness
 
 WIDTH = 100
 SHOWN_VARIABLES = 24

@@ -14,6 +14,7 @@ from typing import Any, Literal, NamedTuple
 
 from hubokit.errors import InputError
 from hubokit.validation.claims import CLAIMS, Status
+from hubokit.validation.figure_names import FIGURES as FIGURES
 
 
 @dataclass(frozen=True)
@@ -282,28 +283,3 @@ class Verdict:
         from hubokit.validation.screen import screen
 
         return screen(self)
-
-
-#: Names of the figures, in printing order, with what they are.
-FIGURES: Mapping[str, str] = {
-    "source-ground-energy": "least E",
-    "source-degeneracy": "ground states of E",
-    "source-gap": "gap of E",
-    "model-ground-energy": "least P (and least F)",
-    "projection-degeneracy": "minimisers of P",
-    "projection-gap": "gap of P",
-    "model-gap": "gap of F",
-    "auxiliary-gap-at-minimisers": "auxiliary gap at the minimisers of P",
-    "auxiliary-gap-everywhere": "auxiliary gap over all x",
-    "relative-auxiliary-gap-at-minimisers": "the first, divided by the largest coefficient",
-    "relative-auxiliary-gap-everywhere": "the second, divided by the largest coefficient",
-    "auxiliaries": "auxiliaries",
-    "fields": "fields",
-    "couplers": "couplers",
-    "couplers-per-variable": "most couplers at one variable",
-    "coefficient-ratio": "largest over smallest coefficient",
-    "field-bits": "bits of the fields",
-    "coupler-bits": "bits of the couplers",
-    "source-local-minima": "single-flip local minima of E",
-    "model-local-minima": "single-flip local minima of F",
-}
