@@ -307,6 +307,9 @@ def sides(problem: CoverProblem, seed: int) -> list[Chosen]:
             if gain[move] <= 0:
                 break
             within = within ^ crossing[move]
+        # A row that has lost the pair within to simplification is no longer covered by any sides: it gets all it has.
+        bare = problem.rows[~problem.is_covered(within)]
+        within[bare[bare >= 0]] = True
         if best is None or (within & cost).sum() < (best & cost).sum():
             best = within
     return [] if best is None else [best]

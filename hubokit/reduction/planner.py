@@ -5,6 +5,7 @@ Ways are
 - *term by term*: a family for each locality and sign. Every single family is priced, the families that are best for
   one term alone, and every mix, or the best improved one locality at a time;
 - *four-variable groups* (groups.py) and *symmetric* parts (symmetric.py), with the best mix for what is left over;
+- *common parts* of boolean terms (common_part.py), then the best of term by term and a pair cover for the rest;
 - *pair cover* (covers.py): pairs chosen globally.
 
 Prices are exact counts and coefficients of the model that would come out, so the choice is never dearer in the
@@ -14,18 +15,28 @@ everywhere.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 from hubokit.errors import LimitError
 from hubokit.model.trail import Trail
+from hubokit.reduction.common_part import METHOD as COMMON_PART
+from hubokit.reduction.deductions import Deduced, deduced
 from hubokit.reduction.gadgets.table import FAMILIES, family
 from hubokit.reduction.groups import METHOD as GROUPS
 from hubokit.reduction.pair_piece import METHOD as PAIR_COVER
 from hubokit.reduction.plans import Plan, Question, single_choice
 from hubokit.reduction.symmetric import LARGEST
 from hubokit.reduction.symmetric import METHOD as SYMMETRIC
-from hubokit.reduction.ways import TERM_BY_TERM, best_gap, group_plans, pair_plans, symmetric_plans, term_plans
+from hubokit.reduction.ways import (
+    TERM_BY_TERM,
+    best_gap,
+    common_part_plans,
+    group_plans,
+    pair_plans,
+    symmetric_plans,
+    term_plans,
+)
 
 
 @dataclass(frozen=True)
@@ -62,7 +73,7 @@ def methods() -> list[str]:
     >>> methods()[:2]
     ['auto', 'negative-monomial']
     """
-    return ["auto", *(one.name for one in FAMILIES), TERM_BY_TERM, GROUPS, SYMMETRIC, PAIR_COVER]
+    return ["auto", *(one.name for one in FAMILIES), TERM_BY_TERM, GROUPS, SYMMETRIC, COMMON_PART, PAIR_COVER]
 
 
 def planned(question: Question, method: str = "auto") -> Planned:
@@ -84,17 +95,41 @@ def planned(question: Question, method: str = "auto") -> Planned:
     if method in ("auto", SYMMETRIC):
         largest = LARGEST if method == "auto" else question.H.size
         plans += symmetric_plans(question, largest)
+    if method in ("auto", COMMON_PART):
+        plans += _noted(common_part_plans(question), COMMON_PART, others)
     if method in ("auto", PAIR_COVER):
         plans += _noted(pair_plans(question, method), PAIR_COVER, others)
-    if others and method in (GROUPS, PAIR_COVER):
+    if others and method in (GROUPS, COMMON_PART, PAIR_COVER):
         raise LimitError(f'{others[0]["reason"]}; method "auto" takes another way', "method")
     if not plans:
-        name = method if method not in (GROUPS, SYMMETRIC, PAIR_COVER) else ""
+        name = method if method not in (GROUPS, SYMMETRIC, COMMON_PART, PAIR_COVER) else ""
         if name:
             family(name)
         plans = [best_gap(question, single_choice(question, name), name or TERM_BY_TERM)]
     ranked = sorted(plans, key=lambda plan: plan.price.figure(question.prefer))
     return Planned(ranked[0], ranked[1:], others)
+
+
+def planned_for_ground_states(question: Question) -> tuple[Planned, Deduced | None]:
+    """The cheapest plan, after deductions where these make it cheaper; they keep ground states, not energies.
+
+    Returns
+    -------
+    planned : Planned
+    deductions : Deduced or None
+        None where the plan begins with the model as it was given.
+    """
+    plain = planned(question)
+    found = deduced(question.H)
+    if found is None:
+        return plain, None
+    after = planned(replace(question, H=found.model))
+    figures = [one.chosen.price.figure(question.prefer) for one in (after, plain)]
+    better = figures[0] < figures[1]
+    best, other, name = (after, plain, "{}, without deductions") if better else (plain, after, "deductions, then {}")
+    beaten = [replace(plan, name=name.format(plan.name)) for plan in (other.chosen, *other.others)]
+    others = sorted([*best.others, *beaten], key=lambda plan: plan.price.figure(question.prefer))
+    return Planned(best.chosen, others, best.not_priced), found if better else None
 
 
 def _noted(found: list[Plan] | str, method: str, notes: list[dict[str, str]]) -> list[Plan]:

@@ -9,7 +9,8 @@ from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import Number, as_fraction, format_fraction
 from hubokit.model.trail import Step, Trail
-from hubokit.reduction.planner import methods, planned
+from hubokit.reduction.deductions import STEP
+from hubokit.reduction.planner import methods, planned, planned_for_ground_states
 from hubokit.reduction.plans import Question
 from hubokit.reduction.result import Reduction
 
@@ -36,7 +37,8 @@ def reduce(
         terms get the gadget that is best for one term alone.
     keep : {"one-to-one", "energies", "ground-states"}
         What must survive: every energy with exactly one best auxiliary setting a state, every energy, or the set of
-        ground states.
+        ground states. The last allows steps without auxiliaries that change other energies (`deductions`), which
+        method ``"auto"`` takes first where they make the model cheaper.
     prefer : {"auxiliaries", "range", "couplers"}
         What to have least of: auxiliaries, coefficient ratio, couplers.
     domain : {"spin", "boolean"}, optional
@@ -68,7 +70,15 @@ def reduce(
     gap = _checked(H, keep, prefer, domain, auxiliary_gap)
     if method not in methods():
         raise InputError(f"no such reduction method: {method!r}; the methods are {', '.join(methods())}", "method")
-    plan = planned(Question(H, keep, prefer, gap, seed), method)  # type: ignore[arg-type]
+    question = Question(H, keep, prefer, gap, seed)  # type: ignore[arg-type]
+    start, steps = H, []
+    if keep == "ground-states" and method == "auto":
+        plan, found = planned_for_ground_states(question)
+        if found is not None:
+            start = found.model
+            steps.append(Step(STEP, H.digest, parameters=found.record()))
+    else:
+        plan = planned(question, method)
     model, auxiliaries, made = plan.chosen.build()
     parameters: dict[str, Any] = {
         "keep": keep,
@@ -78,7 +88,7 @@ def reduce(
         **made,
         "plan": plan.as_json(),
     }
-    steps = [Step("reduction", H.digest, auxiliaries=auxiliaries, parameters=parameters)]
+    steps.append(Step("reduction", start.digest, auxiliaries=auxiliaries, parameters=parameters))
     if domain is not None and domain != H.domain:
         # After the reduction, because a long product of one domain is 2^k products of the other.
         change = {"from": H.domain, "to": domain, "convention": H.convention}

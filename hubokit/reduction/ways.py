@@ -1,21 +1,27 @@
-"""The ways of reducing a model, each as priced plans: term by term, groups, symmetric parts, pair covers."""
+"""The ways of reducing a model, each as priced plans.
+
+Term by term, groups, symmetric parts, common parts, pair covers.
+"""
 
 from __future__ import annotations
 
 from dataclasses import replace
+from functools import partial
 from itertools import product
 from math import ceil, lcm, prod
 
 import numpy as np
 
-from hubokit.reduction.assembly import Choice, term_pieces, work_of
+from hubokit.reduction.assembly import Choice, Price, term_pieces, work_of
+from hubokit.reduction.common_part import METHOD as COMMON_PART
+from hubokit.reduction.common_part import Shared, shared_parts
 from hubokit.reduction.covers import pair_cover_reduction
 from hubokit.reduction.gadgets.table import FAMILIES, stand_in
 from hubokit.reduction.groups import METHOD as GROUPS
 from hubokit.reduction.groups import Taken, gathered, group_piece
 from hubokit.reduction.pair_piece import METHOD as PAIR_COVER
 from hubokit.reduction.pair_piece import PairPiece, lonely_terms, without
-from hubokit.reduction.plans import Plan, Question, options_of, plan_of, single_choice, with_rest
+from hubokit.reduction.plans import Built, Plan, Question, options_of, plan_of, single_choice, with_rest
 from hubokit.reduction.symmetric import METHOD as SYMMETRIC
 from hubokit.reduction.symmetric import symmetric_pieces
 from hubokit.reduction.tightening import tightened
@@ -30,6 +36,9 @@ PAIR_COVER_LIMIT = 2**15
 
 GROUPS_LIMIT = 2**19
 """The same for four-variable groups."""
+
+COMMON_COVER_LIMIT = 2**10
+"""Most members of terms that common parts leave for which a pair cover is priced as well."""
 
 
 def term_choices(question: Question, notes: list[dict[str, str]]) -> list[tuple[str, Choice]]:
@@ -123,6 +132,41 @@ def symmetric_plans(question: Question, largest: int) -> list[Plan]:
     if not pieces:
         return []
     return with_rest(question, pieces, taken, SYMMETRIC)
+
+
+def common_part_plans(question: Question) -> list[Plan] | str:
+    """Common parts first, then the cheaper of term by term and a pair cover for what they leave."""
+    shared = shared_parts(question.H, question.keep, question.gap)
+    if shared is None or isinstance(shared, str):
+        return shared or []
+    rest = replace(question, H=shared.model)
+    plans = term_plans(rest, [])
+    if work_of(shared.model) <= COMMON_COVER_LIMIT:
+        covers = pair_plans(rest, COMMON_PART)
+        plans += [] if isinstance(covers, str) else covers
+    best = min(plans, key=lambda plan: plan.price.figure(question.prefer))
+    price = best.price
+    whole = Price(len(shared.auxiliaries) + price.auxiliaries, price.couplers, price.ratio)
+    return [Plan(COMMON_PART, whole, partial(_with_common_parts, shared, best))]
+
+
+def _with_common_parts(shared: Shared, rest: Plan) -> Built:
+    """The reduced model with the auxiliaries of both steps, and what each common part is."""
+    model, auxiliaries, made = rest.build()
+    rows = [
+        {"locality": locality, "method": COMMON_PART, "terms": terms, "auxiliaries": 0}
+        for locality, terms in shared.served.items()
+    ]
+    rows[0]["auxiliaries"] = len(shared.auxiliaries)
+    listed = [
+        {"auxiliary": name, "of": list(part), "is": "product"}
+        for name, part in zip(shared.auxiliaries, shared.parts, strict=True)
+    ]
+    return (
+        model,
+        (*shared.auxiliaries, *auxiliaries),
+        {**made, "methods": rows + made["methods"], "common parts": listed},
+    )
 
 
 def pair_plans(question: Question, method: str) -> list[Plan] | str:

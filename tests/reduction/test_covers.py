@@ -186,6 +186,13 @@ def test_pairs_within_two_sides_cover_quartics_that_no_sides_leave_odd() -> None
     assert within.sum() == 42
 
 
+def test_sides_cover_rows_that_simplifying_left_without_the_pair_within() -> None:
+    rows = np.array([[0, i, j] for i, j in itertools.combinations(range(1, 17), 2)])
+    cover = find_cover(cover_problem([rows], 17))
+    assert cover_problem([rows], 17).is_covered(cover.chosen).all()
+    assert cover.chosen.sum() == 15
+
+
 def test_components_are_what_hangs_together_through_pairs() -> None:
     problem = cover_problem([np.array([[0, 1, 2], [1, 2, 3], [5, 6, 7], [3, 4, 5]])], 8)
     assert [part.tolist() for part in components(problem)] == [[0, 1], [2], [3]]
