@@ -40,16 +40,22 @@ COMPARED = 100_000
 
 def by_elimination(case: Case, options: Options, found: Findings) -> None:
     """Ground levels by bucket elimination; what is too wide for it stays open with the width."""
-    from hubokit.spectrum.elimination import ground_states
+    from hubokit.spectrum.elimination import ground_states, predicted_cost
 
     def ground(H: Hamiltonian) -> Level:
         return ground_states(H, COMPARED, progress=options.progress, time=options.time)
 
-    _by_levels(case, options, found, ground, "elimination")
+    _by_levels(case, options, found, ground, "elimination", lambda H: predicted_cost(H).seconds)
 
 
 def by_enumeration(case: Case, options: Options, found: Findings, refusal: str) -> None:
-    """Ground levels by visiting all states of E and of P (or F), or by whatever is cheaper where all is allowed."""
+    """Ground levels by visiting all states of E and of P (or F), or by whatever is cheaper where all is allowed.
+
+    Raises
+    ------
+    LimitError
+        Asked for by name, and too much; or ground levels would settle none of the claims asked for.
+    """
     from hubokit.spectrum.search import ground_states
 
     way = "auto" if options.evidence == "auto" else "exhaustion"
@@ -59,27 +65,36 @@ def by_enumeration(case: Case, options: Options, found: Findings, refusal: str) 
             H, COMPARED, way, executor=options.executor, progress=options.progress, time=options.time
         )
 
+    if options.named and set(options.asked) <= {"quadratic", "energies", "one-to-one"}:
+        raise LimitError(refusal)
     for name in options.asked:
         if name in ("energies", "one-to-one"):
             found.leave_open(name, f"exhaustion: {refusal}")
-    _by_levels(case, options, found, ground, "exhaustion")
+    _by_levels(case, options, found, ground, "exhaustion", lambda H: H.size)
 
 
-def _by_levels(case: Case, options: Options, found: Findings, ground: Ground, method: str) -> None:
+def _by_levels(
+    case: Case, options: Options, found: Findings, ground: Ground, method: str, cost: Callable[[Hamiltonian], float]
+) -> None:
     polynomial = case.projection.polynomial if found.used("projection") else None
+    ready: dict[str, Level] = {}
     try:
         for H in (case.source, case.model if polynomial is None else polynomial):
             if H.size > ENUMERABLE and len(H) > SPARSE_TERMS:
                 raise LimitError(f"{H.size:,} variables and {len(H):,} terms are beyond enumeration and elimination")
+        if options.named and cost(case.model) >= cost(case.source):
+            ready["model"] = ground(case.model)  # the costlier one first: what is refused is refused before any work
         source = found.source_level = ground(case.source)
         if polynomial is None:
             probe(case, found, method, case.original_states(source.states[:64]))
-            levels = Levels(case, found, ground, method, source, ground(case.model))
+            levels = Levels(case, found, ground, method, source, ready.get("model") or ground(case.model))
             levels.judge_model()
         else:
             levels = Levels(case, found, ground, method, source, ground(polynomial.with_labels(case.originals)))
             levels.judge_polynomial(polynomial.with_labels(case.originals))
     except LimitError as refusal:
+        if options.named:
+            raise
         for name in options.asked:
             found.leave_open(name, f"{method}: {refusal}")
         return

@@ -47,6 +47,8 @@ def by_neighbourhood(case: Case, options: Options, found: Findings) -> None:
             return
         E, P, best, counts = columns_at(case, originals)
     except LimitError as refusal:
+        if options.named:
+            raise
         _leave(options, found, str(refusal))
         return
     relation = column_relation(P, E)

@@ -19,6 +19,9 @@ from hubokit.validation.options import Options
 from hubokit.validation.tables import MODEL_LIMIT, STATES_LIMIT
 from hubokit.validation.verdict import Verdict
 
+#: What may do where the other kinds of evidence, asked for by name, are too much.
+INSTEAD = "evidence by projection may prove it at any size"
+
 
 def check(
     reduction: Reduction,
@@ -40,7 +43,8 @@ def check(
         None asks for what the trail says was kept, for all claims where there is no trail.
     evidence : "auto" | "projection" | "exhaustion" | "elimination" | "neighbourhood"
         "auto" tries them in this order until every asked claim is settled, with exhaustion or elimination,
-        whichever is cheaper.
+        whichever is cheaper, and passes over what is too much. One that is named is refused where it is too
+        much.
     radius : int, optional
         Hamming radius of the neighbourhood (default 2).
     around : states of the source, optional
@@ -61,6 +65,8 @@ def check(
     ------
     InputError
         An unknown claim or kind of evidence.
+    LimitError
+        The evidence named is too much for the models; the message says the size, the cost, and what would do.
 
     Examples
     --------
@@ -90,6 +96,8 @@ def check(
         try:
             EVIDENCE[kind](case, options, found)
         except LimitError as refusal:
+            if options.named and not any(found.settled(name) for name in options.asked if name != "quadratic"):
+                raise LimitError(f"{kind}: {refusal.message}; {INSTEAD}", "evidence") from None
             for name in options.asked:
                 found.leave_open(name, f"{kind}: {refusal.message}")
     add_figures(case, options, found)

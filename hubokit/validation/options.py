@@ -36,3 +36,8 @@ class Options:
     executor: Any = None
     progress: Any = None
     time: float = 600.0
+
+    @property
+    def named(self) -> bool:
+        """Whether one kind was asked for by name: then it is refused where it is too much, not passed over."""
+        return self.evidence != "auto"

@@ -6,7 +6,7 @@ from fractions import Fraction
 import numpy as np
 import pytest
 
-from hubokit.errors import InputError
+from hubokit.errors import InputError, LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.trail import Step, Trail
 from hubokit.reduction.result import Reduction
@@ -202,14 +202,38 @@ class TestKindsOfEvidence:
         assert verdict.exit_code == 1
 
     def test_nothing_cheap_enough_leaves_the_claims_open_with_the_reasons(self):
-        rng = np.random.default_rng(0)
-        pairs = np.array([(i, j) for i in range(70) for j in range(i)])
-        E = Hamiltonian.from_arrays([pairs], [rng.integers(1, 9, len(pairs))], "spin")
-        F = E + Hamiltonian({("v0",): 1}, "spin")
-        verdict = check(Reduction(E, F, []), claims="ground-states", evidence="elimination")
-        assert verdict.claims["ground-states"].status == "open"
-        assert "width" in verdict.claims["ground-states"].detail
+        verdict = check(dense_with_a_field(70), claims=["ground-energy", "ground-states"])
+        assert verdict.claims["ground-energy"].status == "open"
+        assert "not a proof" in verdict.claims["ground-energy"].detail
+        assert verdict.claims["ground-states"].status == "tested"
+        assert "width" in str(verdict.figures["source-gap"])
         assert verdict.exit_code == 3
+
+    @pytest.mark.parametrize("claims", ["ground-states", "energies", "all"])
+    @pytest.mark.parametrize(
+        ("evidence", "size", "words"),
+        [
+            ("elimination", 70, ["70 variables", "width", "projection"]),
+            ("exhaustion", 70, ["2**70 states", "projection"]),
+            ("exhaustion", 60, ["2**60 states", "days", "projection"]),
+            ("neighbourhood", 70, ["radius 6", "smaller radius", "projection"]),
+        ],
+    )
+    def test_evidence_asked_for_by_name_is_refused_before_its_start_where_it_is_too_much(
+        self, evidence, size, words, claims
+    ):
+        with pytest.raises(LimitError) as refusal:
+            check(dense_with_a_field(size), claims=claims, evidence=evidence, radius=6)
+        for word in words:
+            assert word in str(refusal.value)
+
+
+def dense_with_a_field(size):
+    """A dense pair model beside the same with one field more: projection tells them apart, nothing small does."""
+    rng = np.random.default_rng(0)
+    pairs = np.array([(i, j) for i in range(size) for j in range(i)])
+    E = Hamiltonian.from_arrays([pairs], [rng.integers(1, 9, len(pairs))], "spin")
+    return Reduction(E, E + Hamiltonian({("v0",): 1}, "spin"), [])
 
 
 class TestFindings:
