@@ -3,23 +3,19 @@ model side by side."""
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from fractions import Fraction
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-
 from hubokit.cli.progress import bar
-from hubokit.cli.side_by_side import Asked, Measured, Traps, measured, measured_on_minimum, traps
 from hubokit.cli.states_file import read_states
 from hubokit.cli.text import count, fields, listing, number, section, table
 from hubokit.errors import InputError, LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import format_fraction
 from hubokit.model.states import States
+from hubokit.preparation.side_by_side import Asked, Measured, Traps, measured, measured_on_minimum, traps
 from hubokit.reduction.result import Reduction
-from hubokit.spectrum.balls import Neighbourhood
 
 Parts = dict[str, Any]
 Sides = list[tuple[str, Measured]]
@@ -79,30 +75,23 @@ def _visits(sides: Sides) -> str:
 
 def by_distance(sides: Sides) -> str:
     """Lowest energy and number of states at or below the highest target for every distance, side by side."""
-    looks = [side.look for _, side in sides]
     marks = [""] if len(sides) == 1 else [" E", " P"]
     header = ["distance", "states"]
     for mark in marks:
         header += [f"lowest{mark}", f"at or below{mark}"]
     rows = []
-    for distance in range(max(look.radius for look in looks) + 1):
-        cells = [_shell_cells(look, distance) for look in looks]
+    for distance in range(max(side.look.radius for _, side in sides) + 1):
+        cells = [_shell_cells(side, distance) for _, side in sides]
         states = list(dict.fromkeys(cell[0] for cell in cells))
         rows.append([str(distance), " / ".join(states), *(text for cell in cells for text in cell[1:])])
     return table(header, rows, align="r" * len(header))
 
 
-def _shell_cells(look: Neighbourhood, distance: int) -> tuple[str, str, str]:
-    if distance > look.radius:
+def _shell_cells(side: Measured, distance: int) -> tuple[str, str, str]:
+    if distance > side.look.radius:
         return "none", "none", "-"
-    states, lowest, below = _shell(look, distance)
+    states, lowest, below = side.shell(distance)
     return f"{states:,}", number(lowest), f"{below:,}" if distance else "-"
-
-
-def _shell(look: Neighbourhood, distance: int) -> tuple[int, Fraction | None, int]:
-    shells = look.shell(distance)
-    lowest = min((shell.lowest for shell in shells if shell.lowest is not None), default=None)
-    return sum(shell.states for shell in shells), lowest, sum(shell.at_or_below for shell in shells)
 
 
 def merits(sides: Sides) -> str:
@@ -160,7 +149,7 @@ def _figures(sides: Sides) -> Parts:
 def _shells(name: str, side: Measured) -> list[Parts]:
     rows = []
     for distance in range(side.look.radius + 1):
-        states, lowest, below = _shell(side.look, distance)
+        states, lowest, below = side.shell(distance)
         rows.append(
             {
                 "of": "source" if name == "source" else "model",
@@ -170,7 +159,7 @@ def _shells(name: str, side: Measured) -> list[Parts]:
                 "at_or_below": str(below),
                 "spurious": [
                     {"energy": format_fraction(energy), "target": target, "flips": list(flips)}
-                    for energy, target, flips in _spurious(side, [distance])
+                    for energy, target, flips in side.spurious([distance])
                 ],
             }
         )
@@ -181,21 +170,9 @@ def _text(value: Fraction | None) -> str | None:
     return None if value is None else format_fraction(value)
 
 
-def _spurious(side: Measured, distances: Iterable[int]) -> list[tuple[Fraction, int, tuple[str, ...]]]:
-    """Energy, target (from 1) and flips of the listed states at or below the highest target, lowest first."""
-    found = []
-    for place, ball in enumerate(side.look.balls, 1):
-        for distance in distances:
-            shell = ball.shells[distance]
-            for energy, state in zip(shell.energies, shell.spurious, strict=True):
-                flips = tuple(side.labels[i] for i in np.flatnonzero(state != ball.centre))
-                found.append((energy, place, flips))
-    return sorted(found, key=lambda one: (one[0], len(one[2]), one[1]))
-
-
 def spurious_text(side: Measured) -> str:
     """The lowest states that lie at or below the highest target without being targets."""
-    found = _spurious(side, range(1, side.look.radius + 1))
+    found = side.spurious(range(1, side.look.radius + 1))
     rows = [[number(energy), str(target), listing(flips, 6)] for energy, target, flips in found[:SPURIOUS_SHOWN]]
     if not rows:
         return ""

@@ -9,6 +9,7 @@ from fractions import Fraction
 from pathlib import Path
 
 from hubokit.cli import options
+from hubokit.cli.progress import reading
 from hubokit.cli.text import listing
 from hubokit.errors import HubokitError, InputError
 from hubokit.exchange.documents import Document
@@ -40,7 +41,8 @@ def load_document(path: Path, source: Hamiltonian | None = None, file_format: st
 
     Where a trail names the file of its source and that file lies beside, it is read too; its digest must fit.
     """
-    document = read_document(path, source, file_format)
+    with reading(path) as progress:
+        document = read_document(path, source, file_format, progress)
     name = document.trail[0].get("file") if document.trail else None
     if source is None and isinstance(name, str) and Path(name).name == name and (path.parent / name).is_file():
         return read_document(path, load_model(path.parent / name))

@@ -8,10 +8,15 @@ from typing import Annotated
 import typer
 
 from hubokit.cli import describing, options, summary
+from hubokit.cli.loading import load_document
 from hubokit.cli.progress import bar
 from hubokit.cli.text import count, fields, number, section, table
+from hubokit.errors import InputError
+from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.preparation import Prepared, prepare
 from hubokit.preparation.contents import grouped
+from hubokit.preparation.folder import refuse_folder
+from hubokit.validation.verdict import Verdict
 
 
 def command(
@@ -33,9 +38,17 @@ def command(
     as_json: options.Json = False,
 ) -> None:
     """Reduce a design, check the reduction, and write every file that a backend needs into a folder."""
+    refuse_folder(out, force=force)
+    document = load_document(model)
+    if not isinstance(document.thing, Hamiltonian):
+        kind = "a verdict" if isinstance(document.thing, Verdict) else "already a reduced model"
+        raise InputError(
+            f"this is {kind}; name the model before the reduction (hubokit check judges a reduced one)",
+            file=str(model),
+        )
     with bar("preparing") as progress:
         made = prepare(
-            model,
+            document,
             out,
             keep=keep.value,
             prefer=prefer.value,

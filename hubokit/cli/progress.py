@@ -5,6 +5,9 @@ from __future__ import annotations
 import sys
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
+from pathlib import Path
+
+from hubokit.cli.text import printable
 
 Report = Callable[[int, int], None]
 
@@ -32,4 +35,22 @@ def bar(title: str) -> Iterator[Report | None]:
         def report(done: int, total: int) -> None:
             progress.update(task, completed=done, total=total)
 
+        yield report
+
+
+LARGE = 1 << 24
+"""Bytes from which the reading of a file is worth a bar."""
+
+
+@contextmanager
+def reading(path: Path) -> Iterator[Report | None]:
+    """A bar over the bytes of a large file, as `bar` is; None where the file is small."""
+    try:
+        large = path.stat().st_size >= LARGE
+    except OSError:
+        large = False
+    if not large:
+        yield None
+        return
+    with bar(f"reading {printable(path.name)}") as report:
         yield report

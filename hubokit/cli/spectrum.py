@@ -13,13 +13,20 @@ from hubokit.cli import describing, options, summary
 from hubokit.cli.around import around
 from hubokit.cli.loading import Elsewhere, load_document, load_reduction
 from hubokit.cli.progress import bar
-from hubokit.cli.side_by_side import Asked, Landscape, drawn, drawn_after, landscape_after, levels_with_landscape
 from hubokit.cli.states_file import states_text
 from hubokit.cli.text import count, fields, listing, number, section
 from hubokit.errors import HubokitError, InputError, LimitError
 from hubokit.exchange.files import refuse_existing, write_text
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import format_fraction
+from hubokit.preparation.side_by_side import (
+    Asked,
+    Landscape,
+    drawn,
+    drawn_after,
+    landscape_after,
+    levels_with_landscape,
+)
 from hubokit.reduction.result import Reduction
 from hubokit.spectrum.exhaustive import density_of_states
 from hubokit.spectrum.levels import Level

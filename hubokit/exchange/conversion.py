@@ -8,10 +8,11 @@ from dataclasses import dataclass, replace
 from hubokit.errors import InputError
 from hubokit.exchange.clauses import posiform
 from hubokit.exchange.documents import Document
-from hubokit.exchange.files import Progress
+from hubokit.exchange.files import Progress, refuse_existing
 from hubokit.exchange.formats import JSON, Format, format_of, read_document, write
 from hubokit.exchange.header import sidecar_path
 from hubokit.exchange.programs import EXACT, largest
+from hubokit.exchange.table import NAMED_LIMIT
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import format_fraction
 
@@ -52,6 +53,11 @@ class Conversion:
     changes: tuple[str, ...]
     losses: tuple[str, ...]
 
+    @property
+    def domain(self) -> str:
+        """Domain in which the file written speaks."""
+        return self.document.model.domain if self.format.domain == "any" else self.format.domain
+
 
 def convert(
     path_in: str | os.PathLike[str],
@@ -60,6 +66,7 @@ def convert(
     source_format: str | None = None,
     target_format: str | None = None,
     domain: str | None = None,
+    form: str | None = None,
     lossy: bool = False,
     force: bool = False,
     progress: Progress | None = None,
@@ -73,6 +80,8 @@ def convert(
         Names of formats, where the suffixes do not say them.
     domain : "spin" or "boolean", optional
         Domain of the model written; by default its own.
+    form : str, optional
+        One of the forms of a format that is written in more than one way.
     lossy : bool
         Whether something may be left behind (trail, intent, notes).
     force : bool
@@ -87,12 +96,16 @@ def convert(
     Raises
     ------
     InputError
-        Bad input, an existing file, a loss that was not allowed, a format that cannot hold the model.
+        Bad input, a verdict, an existing file, a loss that was not allowed, a format that cannot hold the model.
     LimitError
         A change of domain that expands too far, weights that the format does not hold exactly.
     """
     entry = format_of(path_out, target_format)
+    entry.told(form)
+    refuse_existing(path_out, force=force)
     source = read_document(path_in, format=source_format, progress=progress)
+    if getattr(source.thing, "claims", None) is not None:
+        raise InputError("a verdict stands in JSON alone; name a model document", file=os.fspath(path_in))
     document, changes = _in_domain(source, domain, os.fspath(path_in))
     changes += [str(remark) for remark in source.notes.get("reading", ())]
     lost = losses(document, entry)
@@ -101,8 +114,8 @@ def convert(
             f"{entry.name} files do not hold {' and '.join(lost)}; allow the loss with --lossy, or write .json",
             file=os.fspath(path_out),
         )
-    changes += changed(document, entry, path_out)
-    write(document, path_out, entry.name, force=force)
+    changes += changed(document, entry, path_out, form)
+    write(document, path_out, entry.name, force=force, form=form)
     return Conversion(source, document, entry, tuple(changes), tuple(lost))
 
 
@@ -116,7 +129,7 @@ def _in_domain(document: Document, domain: str | None, file: str) -> tuple[Docum
     return replace(document, thing=model, trail=(), digests={}), [said]
 
 
-def changed(document: Document, entry: Format, path: str | os.PathLike[str]) -> list[str]:
+def changed(document: Document, entry: Format, path: str | os.PathLike[str], form: str | None = None) -> list[str]:
     """What a file of this format says in another way than the model: domain, scale, constant, names.
 
     Examples
@@ -137,16 +150,20 @@ def changed(document: Document, entry: Format, path: str | os.PathLike[str]) -> 
         said.append(f"the {model.domain} model is written in {entry.domain} variables by {rule}; reading undoes it")
         model = model.in_domain(entry.domain)
     place = f"the sidecar {sidecar_path(path).name} says" if entry.name in SIDECAR else "comment lines say"
-    if entry.name in COUNTED and (model.resolution != 1 or model.constant):
+    numbered = entry.name == "csv" and (form == "numbered" or (form is None and len(model) > NAMED_LIMIT))
+    halved = form == "symmetric"
+    unit = model.resolution / 2 if halved else model.resolution
+    if (entry.name in COUNTED or numbered) and (unit != 1 or model.constant):
         constant = model.constant
         if entry.name in ("wcnf", "cnf"):
             constant += posiform(model)[0] * model.resolution
-        unit, apart = format_fraction(model.resolution), format_fraction(constant)
-        facts = f"weights are in units of {unit} and the constant is {apart}"
+        facts = f"weights are in units of {format_fraction(unit)} and the constant is {format_fraction(constant)}"
         said.append(f"{facts}: {place} both, and reading undoes it")
+    if halved:
+        said.append("every pair stands halved on both sides of the diagonal")
     if entry.name == "matrix-market" and model.domain == "spin" and any(b.locality == 1 for b in model.blocks):
         said.append("fields stand in a second file, .fields.mtx")
-    if entry.name in (*NUMBERED, *SIDECAR):
+    if entry.name in (*NUMBERED, *SIDECAR) or numbered:
         holder = f"the sidecar {sidecar_path(path).name} holds" if entry.name in SIDECAR else "comment lines hold"
         said.append(f"variables are numbered from 1 in the order of the model; {holder} their names")
     if entry.name in SOLVED and any(largest(block.weights) > EXACT for block in model.blocks):

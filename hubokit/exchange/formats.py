@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from hubokit.errors import HubokitError, InputError
@@ -48,6 +48,9 @@ class Format:
         Largest product it can hold.
     packed : bool
         Whether ``.gz`` is read and written.
+    forms : mapping of str to dict
+        What ``--form`` takes where the format is written in more than one way, the usual one first: the word to
+        what `write` is told. Every form is read alike.
     """
 
     name: str
@@ -58,6 +61,27 @@ class Format:
     domain: str = "any"
     locality: int | None = None
     packed: bool = True
+    forms: Mapping[str, Mapping[str, str]] = field(default_factory=dict)
+
+    def told(self, form: str | None) -> Mapping[str, str]:
+        """What `write` is told for a form; nothing for None.
+
+        Raises
+        ------
+        InputError
+            No such form; the message lists them.
+
+        Examples
+        --------
+        >>> FORMATS["wcnf"].told("old-header")
+        {'header': 'old'}
+        """
+        if form is None:
+            return {}
+        if form not in self.forms:
+            there = f"there are {', '.join(self.forms)}" if self.forms else "it is written in one form only"
+            raise InputError(f"{self.name} files have no form {form!a}; {there}", "form")
+        return self.forms[form]
 
 
 JSON = "json"
@@ -67,7 +91,15 @@ FORMATS: dict[str, Format] = {
     for entry in (
         Format(JSON, (".json",), None, None, "any model, a reduction with its trail, a verdict: the schema"),
         Format("opb", (".opb",), load_opb, write_opb, "any model as an integer objective with products", "boolean"),
-        Format("wcnf", (".wcnf",), load_wcnf, write_wcnf, "any model as weighted clauses", "boolean"),
+        Format(
+            "wcnf",
+            (".wcnf",),
+            load_wcnf,
+            write_wcnf,
+            "any model as weighted clauses",
+            "boolean",
+            forms={"no-header": {"header": "2022"}, "old-header": {"header": "old"}},
+        ),
         Format("cnf", (".cnf", ".dimacs"), load_cnf, write_cnf, "a model of small weights as clauses", "boolean"),
         Format("mps", (".mps",), load_program, write_program, "a linear integer program", "boolean", packed=False),
         Format("lp", (".lp",), load_program, write_program, "a linear integer program", "boolean", packed=False),
@@ -78,9 +110,17 @@ FORMATS: dict[str, Format] = {
             write_matrix_market,
             "a quadratic model as a matrix, spin fields in a file of their own",
             locality=2,
+            forms={"upper": {"matrix": "upper"}, "symmetric": {"matrix": "symmetric"}},
         ),
         Format("npz", (".npz",), load_arrays, write_arrays, "any model as numpy arrays", packed=False),
-        Format("csv", (".csv",), load_table, write_table, "any model as a table of terms"),
+        Format(
+            "csv",
+            (".csv",),
+            load_table,
+            write_table,
+            "any model as a table of terms",
+            forms={"named": {"members": "names"}, "numbered": {"members": "numbers"}},
+        ),
         Format("pauli", (".pauli",), load_pauli, write_pauli, "any model as Pauli-Z strings", "spin"),
     )
 }
@@ -200,6 +240,7 @@ def write(
     force: bool = False,
     detached: bool = False,
     source_file: str | None = None,
+    form: str | None = None,
 ) -> None:
     """Write a Hamiltonian, Reduction, Verdict or Document.
 
@@ -214,13 +255,16 @@ def write(
         Whether an existing file is replaced.
     detached, source_file
         In JSON: leave the source out of the trail, and the name of its file.
+    form : str, optional
+        One of the format's `Format.forms`, such as "symmetric" for a Matrix Market file.
 
     Raises
     ------
     InputError, LimitError
-        The file exists, or the format cannot hold the thing.
+        The file exists, the format cannot hold the thing, or it has no such form.
     """
     entry = format_of(path, format)
+    told = entry.told(form)
     if entry.name == JSON:
         write_document(thing, path, force=force, detached=detached, source_file=source_file)
         return
@@ -233,6 +277,6 @@ def write(
                 f"the model has products of {model.locality} variables, {entry.name} holds {entry.locality}; "
                 "reduce it first (hubokit reduce)"
             )
-        entry.write(model, path, force=force)
+        entry.write(model, path, force=force, **told)
     except HubokitError as error:
         raise error.located(file=os.fspath(path)) from None

@@ -113,8 +113,9 @@ def sentence(error: ValidationError) -> InputError:
         what = schema.get("description") or "a text of another form"
         return InputError(f"{quoted(found)} is not as it must be: {what}", pointer)
     if keyword in ("minLength", "maxLength", "minItems", "maxItems"):
-        bound = "at least" if keyword.startswith("min") else "at most"
-        return InputError(f"holds {len(found)} characters or items; {bound} {wanted} are needed", pointer)
+        bound = f"at least {wanted} are needed" if keyword.startswith("min") else f"at most {wanted} are read"
+        unit = "characters" if keyword.endswith("Length") else "items"
+        return InputError(f"holds {len(found)} {unit}; {bound}", pointer)
     if keyword in ("minimum", "maximum"):
         bound = "at least" if keyword == "minimum" else "at most"
         return InputError(f"must be {bound} {wanted}, not {quoted(found)}", pointer)

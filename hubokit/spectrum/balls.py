@@ -121,9 +121,11 @@ class Neighbourhood:
         return [ball.shells[distance] for ball in self.balls]
 
     def __str__(self) -> str:
+        flips = "1 flip" if self.radius == 1 else f"{self.radius} flips"
         noun = "state" if len(self.balls) == 1 else "states"
+        seen = "1 state" if self.states == 1 else f"{self.states:,} states"
         lines = [
-            f"{self.radius} flips around {len(self.balls)} {noun}: {self.states:,} states visited, "
+            f"{flips} around {len(self.balls)} {noun}: {seen} visited, "
             f"highest centre {format_fraction(self.highest)}"
         ]
         rows = [("distance", "states", "lowest", "at or below")]

@@ -370,15 +370,86 @@ def test_a_source_that_was_left_out_is_found_beside_or_named(hubokit: Any, fixtu
 
 def test_convert_says_what_changed_on_the_way(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:
     greenhouse = fixtures / "greenhouse.json"
-    to_opb = of_schema("summary", hubokit("convert", greenhouse, tmp_path / "a.opb", "--json").out)
-    assert any("constant 4" in change for change in to_opb["changes"])
-    assert any("notes" in change for change in to_opb["changes"])
+    to_opb = of_schema("summary", hubokit("convert", greenhouse, tmp_path / "a.opb", "--lossy", "--json").out)
+    assert any("the constant is 4" in change for change in to_opb["changes"])
+    assert any("comment lines hold their names" in change for change in to_opb["changes"])
     as_spins = of_schema(
         "summary", hubokit("convert", greenhouse, tmp_path / "b.json", "--domain", "spin", "--json").out
     )
     assert as_spins["model"]["domain"] == "spin"
     assert any("boolean became spin" in change for change in as_spins["changes"])
     assert hk.read(tmp_path / "b.json") == hk.read(greenhouse).in_domain("spin")
+
+
+def test_convert_states_domain_and_convention_of_both_files(hubokit: Any, tmp_path: Path) -> None:
+    model = hk.Hamiltonian({("mist", "vent"): 1}, "spin", convention="2x-1")
+    hk.write(model, tmp_path / "a.json")
+    done = hubokit("convert", tmp_path / "a.json", tmp_path / "a.opb")
+    assert "json, spin variables, s = 2x - 1" in done.out
+    assert "opb, boolean variables, s = 2x - 1" in done.out
+
+
+def test_convert_refuses_a_loss_unless_told_and_then_names_it(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:
+    out = tmp_path / "a.opb"
+    refused = hubokit("convert", fixtures / "greenhouse.json", out)
+    assert refused.code == 2
+    assert "a.opb" in refused.err
+    assert "the notes" in refused.err
+    assert "--lossy" in refused.err
+    assert not out.exists()
+    done = hubokit("convert", fixtures / "greenhouse.json", out, "--lossy")
+    assert done.code == 0
+    assert "left behind" in done.out
+    assert "the notes" in done.out
+    assert hk.read(out) == hk.read(fixtures / "greenhouse.json")
+
+
+@pytest.mark.parametrize(
+    ("name", "form", "mark"),
+    [
+        ("a.wcnf", "old-header", "p wcnf 2 "),
+        ("a.mtx", "symmetric", "integer symmetric"),
+        ("a.csv", "numbered", "weight,members"),
+        ("a.csv", "named", "coefficient,members"),
+    ],
+)
+def test_convert_writes_the_other_forms_of_a_format(
+    hubokit: Any, tmp_path: Path, name: str, form: str, mark: str
+) -> None:
+    model = hk.Hamiltonian({("mist", "vent"): "3/2", ("mist",): -1, (): 2}, "spin")
+    hk.write(model, tmp_path / "m.json")
+    done = hubokit("convert", tmp_path / "m.json", tmp_path / name, "--form", form)
+    assert done.code == 0
+    assert mark in (tmp_path / name).read_text()
+    assert hk.read(tmp_path / name) == model
+    wrong = hubokit("convert", tmp_path / "m.json", tmp_path / "b.opb", "--form", form)
+    assert wrong.code == 2
+    assert form in wrong.err
+    assert not (tmp_path / "b.opb").exists()
+
+
+def test_convert_refuses_a_verdict_before_it_writes(hubokit: Any, twelve: Path, tmp_path: Path) -> None:
+    hubokit("check", twelve, "-o", tmp_path / "verdict.json")
+    done = hubokit("convert", tmp_path / "verdict.json", tmp_path / "copy.json")
+    assert done.code == 2
+    assert "verdict" in done.err
+    assert not (tmp_path / "copy.json").exists()
+
+
+def test_reading_a_large_file_shows_a_bar_on_a_terminal_alone(
+    monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    from hubokit.cli import progress
+    from hubokit.cli.loading import load_document
+
+    hk.write(hk.Hamiltonian({("mist", "vent"): 1}, "spin"), tmp_path / "large.json")
+    monkeypatch.setattr(progress, "LARGE", 1)
+    load_document(tmp_path / "large.json")
+    assert capsys.readouterr().err == ""
+    monkeypatch.setattr(sys.stderr, "isatty", lambda: True, raising=False)
+    monkeypatch.setenv("FORCE_COLOR", "1")
+    load_document(tmp_path / "large.json")
+    assert "large.json" in capsys.readouterr().err
 
 
 def test_convert_reads_a_file_whose_suffix_says_nothing(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:

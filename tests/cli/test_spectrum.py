@@ -14,8 +14,8 @@ import numpy as np
 import pytest
 
 import hubokit as hk
-from hubokit.cli.side_by_side import Asked, landscape_after, measured_on_minimum, traps
 from hubokit.cli.states_file import read_states, states_text
+from hubokit.preparation.side_by_side import Asked, landscape_after, measured_on_minimum, traps
 
 ROOT = Path(__file__).resolve().parents[2]
 

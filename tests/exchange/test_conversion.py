@@ -52,6 +52,34 @@ def test_a_conversion_says_what_it_changed(suffix: str, sentences: list[str], tm
     assert all(part in change for part, change in zip(sentences, changes, strict=True))
 
 
+@pytest.mark.parametrize(
+    ("suffix", "form", "sentences"),
+    [
+        (".mtx", "symmetric", ["in units of 1/4", "halved on both sides", "second file", "variables are numbered"]),
+        (".mtx", "upper", ["in units of 1/2", "second file", "variables are numbered"]),
+        (".csv", "numbered", ["weights are in units of 1/2 and the constant is 2", "variables are numbered"]),
+        (".csv", "named", []),
+        (".wcnf", "old-header", ["written in boolean", "the constant is -5/2", "variables are numbered"]),
+    ],
+)
+def test_every_form_of_a_format_reads_back_equal_and_says_how_it_is_written(
+    suffix: str, form: str, sentences: list[str], tmp_path: Path
+) -> None:
+    write(MODEL, tmp_path / "m.json")
+    done = convert(tmp_path / "m.json", tmp_path / f"m{suffix}", form=form)
+    assert len(done.changes) == len(sentences)
+    assert all(part in change for part, change in zip(sentences, done.changes, strict=True))
+    assert read(tmp_path / f"m{suffix}") == MODEL
+
+
+def test_a_form_that_the_format_does_not_have_is_refused_with_those_it_has(tmp_path: Path) -> None:
+    write(MODEL, tmp_path / "m.json")
+    with pytest.raises(InputError, match="wcnf files have no form 'upper'; there are no-header, old-header"):
+        convert(tmp_path / "m.json", tmp_path / "m.wcnf", form="upper")
+    with pytest.raises(InputError, match="written in one form only"):
+        write(MODEL, tmp_path / "m.opb", form="upper")
+
+
 @pytest.mark.parametrize(("weight", "said"), [(2**53, 0), (2**53 + 1, 1), (10**30, 1)])
 def test_weights_that_floats_do_not_hold_are_said_so(weight: int, said: int, tmp_path: Path) -> None:
     write(Hamiltonian({("a", "b"): weight, ("a",): 1}, "boolean"), tmp_path / "m.json")

@@ -7,13 +7,13 @@ auxiliaries included, where ground states and local minima are.
 from __future__ import annotations
 
 import random
-from collections.abc import Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, replace
+from fractions import Fraction
 from pathlib import Path
 
 import numpy as np
 
-from hubokit.cli.progress import Report
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.states import States
 from hubokit.projection.project import Projection
@@ -26,6 +26,8 @@ from hubokit.spectrum.levels import Level
 from hubokit.spectrum.minima import LocalMinimum, NearMinima, is_local_minimum, minima_near
 from hubokit.spectrum.neighbourhood import neighbourhood, neighbourhood_of
 from hubokit.spectrum.search import ground_states, low_levels, routes
+
+Progress = Callable[[int, int], None]
 
 LISTED = 1 << 14
 """Ground states that are listed to be compared with each other, unless a larger limit is asked for."""
@@ -71,6 +73,23 @@ class Measured:
     labels: tuple[str, ...]
     look: Neighbourhood
     merit: Bandwidth
+
+    def shell(self, distance: int) -> tuple[int, Fraction | None, int]:
+        """States at one distance from any target, the lowest of them, and how many lie at or below all targets."""
+        shells = self.look.shell(distance)
+        lowest = min((shell.lowest for shell in shells if shell.lowest is not None), default=None)
+        return sum(shell.states for shell in shells), lowest, sum(shell.at_or_below for shell in shells)
+
+    def spurious(self, distances: Iterable[int]) -> list[tuple[Fraction, int, tuple[str, ...]]]:
+        """Energy, target (from 1) and flips of the listed states at or below the highest target, lowest first."""
+        found = []
+        wanted = list(distances)
+        for place, ball in enumerate(self.look.balls, 1):
+            for shell in (ball.shells[distance] for distance in wanted):
+                for energy, state in zip(shell.energies, shell.spurious, strict=True):
+                    flips = tuple(self.labels[i] for i in np.flatnonzero(state != ball.centre))
+                    found.append((energy, place, flips))
+        return sorted(found, key=lambda one: (one[0], len(one[2]), one[1]))
 
 
 @dataclass(frozen=True)
@@ -127,7 +146,7 @@ class Landscape:
     groups: tuple[int, ...] | None
 
 
-def measured(model: Hamiltonian, targets: States, asked: Asked, progress: Report | None = None) -> Measured:
+def measured(model: Hamiltonian, targets: States, asked: Asked, progress: Progress | None = None) -> Measured:
     """Targets in a model; without a radius the ratio is exact over all states."""
     merit = None if asked.radius is not None else bandwidth(model, targets, progress=progress, time=asked.time)
     look = neighbourhood(
@@ -137,7 +156,7 @@ def measured(model: Hamiltonian, targets: States, asked: Asked, progress: Report
 
 
 def measured_on_minimum(
-    reduction: Reduction, targets: States, asked: Asked, progress: Report | None = None
+    reduction: Reduction, targets: States, asked: Asked, progress: Progress | None = None
 ) -> Measured:
     """Source targets in P: as a polynomial where projection gives one, else minimised state by state."""
     model, projection = reduction.model, reduction.projection
@@ -193,7 +212,7 @@ def _new(reduction: Reduction, centre: States, place: int, near: NearMinima) -> 
 
 
 def levels_with_landscape(
-    model: Hamiltonian, count: int, limit: int, progress: Report | None, checkpoint: Path | None, time: float
+    model: Hamiltonian, count: int, limit: int, progress: Progress | None, checkpoint: Path | None, time: float
 ) -> tuple[list[Level], Landscape]:
     """The low levels of a model, and how its ground states lie to each other."""
     chosen = predictions(model, count)
@@ -204,7 +223,7 @@ def levels_with_landscape(
     return levels, landscape(ground, chosen)
 
 
-def landscape_after(reduction: Reduction, limit: int, progress: Report | None, time: float) -> Landscape:
+def landscape_after(reduction: Reduction, limit: int, progress: Progress | None, time: float) -> Landscape:
     """How the ground states of a reduced model lie, auxiliaries included.
 
     Where every state has one best setting of the auxiliaries they are the lifted minimisers of P, which has fewer
@@ -241,7 +260,7 @@ def predictions(model: Hamiltonian, count: int) -> str:
     return "; ".join(str(route) for route in routes(model, count))
 
 
-def drawn(model: Hamiltonian, number: int, seed: int, progress: Report | None, time: float) -> tuple[Level, States]:
+def drawn(model: Hamiltonian, number: int, seed: int, progress: Progress | None, time: float) -> tuple[Level, States]:
     """The ground level and states drawn uniformly from it, with repetition.
 
     Raises
@@ -259,7 +278,7 @@ def drawn(model: Hamiltonian, number: int, seed: int, progress: Report | None, t
 
 
 def drawn_after(
-    reduction: Reduction, number: int, seed: int, progress: Report | None, time: float
+    reduction: Reduction, number: int, seed: int, progress: Progress | None, time: float
 ) -> tuple[Level, States]:
     """The same for a reduced model: from P and lifted where every state has one best setting of the auxiliaries."""
     projection = reduction.projection
