@@ -97,10 +97,9 @@ def deduced(H: Hamiltonian) -> Deduced | None:
 
     Examples
     --------
-    >>> H = Hamiltonian({("a", "b", "c"): 1, ("a", "b"): 3, ("a",): -2, ("b",): -2, ("b", "c", "d"): -1}, "boolean")
-    >>> found = deduced(H)
-    >>> found.model.locality, found.found[0]["rule"]
-    (2, 'deduction')
+    >>> found = deduced(Hamiltonian({("a", "b", "c"): 1, ("a", "b"): 3, ("a",): -2, ("b",): -2}, "boolean"))
+    >>> found.model.locality, found.found[0]["rule"], found.found[0]["excluded"]
+    (2, 'deduction', [1, 1])
     """
     if H.locality < 3 or len(H) > TERM_LIMIT:
         return None
@@ -233,9 +232,10 @@ class _Search:
         best = table.argmax(axis=1)
         margins = table[np.arange(len(table)), best]
         settings = _settings(len(members), self.H.domain)
-        for place in np.argsort(-margins, kind="stable").tolist():
-            if margins[place] <= 0:
-                return
+        # The shorter the indicator, the fewer terms a change leaves; then the wider the margin, the less is raised.
+        lengths = [len(indicator(members, setting, self.H.domain)) for setting in settings]
+        excluded = [place for place in range(len(settings)) if margins[place] > 0]
+        for place in sorted(excluded, key=lambda place: (lengths[place], -int(margins[place]))):
             said = {
                 "rule": ("value", "deduction")[len(members) - 1] if len(members) < 3 else "configuration",
                 "variables": [self.H.labels[v] for v in members],

@@ -17,6 +17,7 @@ from hubokit.model.numbers import as_fraction, format_fraction
 from hubokit.model.states import change_domain
 from hubokit.model.trail import Origin, Trail
 from hubokit.reduction.costs import Costs, costs_of
+from hubokit.reduction.lifting import Definition, by_rule, definitions, reaches
 
 if TYPE_CHECKING:
     from hubokit.projection.project import Projection
@@ -222,6 +223,9 @@ class Reduction:
     def lift(self, states: object) -> States:
         """Source states to states of the model with the best auxiliaries (of several best, the first in lift order).
 
+        Auxiliaries that the trail defines get their values by rule; where it lists none, or the rule does not reach
+        the energy declared, the minimum is found exactly.
+
         Parameters
         ----------
         states : array_like, shape (m, n)
@@ -247,10 +251,41 @@ class Reduction:
                 f"state {int(lost[0])} cannot be represented: origin merges or fixes variables otherwise", "states"
             )
         if self.auxiliaries and len(given):
-            columns = [self.model.positions[label] for label in self.originals]
-            _, best, _ = self.projection.minimum(full[:, columns])
-            full[:, [self.model.positions[label] for label in self.auxiliaries]] = best
+            done = self._set_by_rule(given, full)
+            if not done.all():
+                columns = [self.model.positions[label] for label in self.originals]
+                _, best, _ = self.projection.minimum(full[~done][:, columns])
+                places = [self.model.positions[label] for label in self.auxiliaries]
+                full[np.flatnonzero(~done)[:, None], places] = best
         return full
+
+    @cached_property
+    def _definitions(self) -> list[Definition]:
+        """What the trail says auxiliaries stand for; none where the source was renamed on the way."""
+        return [] if self.origin else definitions(self.trail, self.source, self.model)
+
+    @cached_property
+    def _rest(self) -> Projection:
+        """The minimum over the auxiliaries that have no definition, those with one taken as originals."""
+        from hubokit.projection.project import project
+
+        defined = {one.auxiliary for one in self._definitions}
+        return project(self.model, [label for label in self.auxiliaries if label not in defined])
+
+    def _set_by_rule(self, given: States, full: States) -> npt.NDArray[np.bool_]:
+        """Set the auxiliaries of `full` by what the trail lists, and say at which states that holds, shape (m,)."""
+        defined, declared = self._definitions, self.declared
+        if not defined or declared is None:
+            return np.zeros(len(given), bool)
+        values = change_domain(
+            by_rule(defined, self.source, given), self.source.domain, self.model.domain, self.model.convention
+        )
+        full[:, [self.model.positions[one.auxiliary] for one in defined]] = values
+        if len(defined) < len(self.auxiliaries):
+            rest = self._rest
+            _, best, _ = rest.minimum(full[:, [self.model.positions[label] for label in rest.originals]])
+            full[:, [self.model.positions[label] for label in rest.auxiliaries]] = best
+        return reaches(self.source, self.model, given, full, *declared)
 
     def project(self, states: object) -> States:
         """States of the model back to source states; auxiliaries are dropped.

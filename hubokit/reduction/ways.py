@@ -187,10 +187,12 @@ def pair_plans(question: Question, method: str) -> list[Plan] | str:
 def _covers(question: Question, left_out: Taken, every: bool) -> list[Plan]:
     """The cover of all terms but those left out, and what becomes of it when lonely terms are left out too.
 
-    Where `every` is False only the last is priced.
+    Where `every` is False only the last is priced. Beside them, where there are quartic terms, a cover whose search
+    knows that each of these may keep a gadget of its own.
     """
     H = question.H
     plans: list[Plan] = []
+    start = left_out
     for last in (False, False, True):
         cover = pair_cover_reduction(
             H,
@@ -206,4 +208,16 @@ def _covers(question: Question, left_out: Taken, every: bool) -> list[Plan]:
         if done:
             break
         left_out = {k: mask | left_out.get(k, np.zeros(len(mask), bool)) for k, mask in lonely.items()}
+    free = np.concatenate([np.zeros(0, bool), *(mask for k, mask in without(H, start).items() if k == 4)])
+    if free.any():
+        cover = pair_cover_reduction(
+            H,
+            keep=question.keep,
+            auxiliary_gap=question.gap or None,
+            seed=question.seed,
+            only=without(H, start),
+            alone=free,
+        )
+        if cover.chosen.alone:
+            plans += with_rest(question, [PairPiece(tightened(cover))], dict(cover.covered), PAIR_COVER)
     return plans
