@@ -10,6 +10,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from concurrent.futures import Executor
 from fractions import Fraction
+from itertools import product
 from math import lcm
 from typing import TYPE_CHECKING
 
@@ -17,9 +18,10 @@ import numpy as np
 import numpy.typing as npt
 
 from hubokit.errors import InputError, LimitError
-from hubokit.spectrum.comparison_result import Comparison, ScaleFrom, comparison_of, energy_of
+from hubokit.spectrum.comparison_result import Comparison, ScaleFrom, comparison_of
 from hubokit.spectrum.comparison_walk import Comparing
 from hubokit.spectrum.derivatives import Layout
+from hubokit.spectrum.elimination import ground_states
 from hubokit.spectrum.exhaustive import PACKED
 from hubokit.spectrum.polynomial import INT64_BOUND, Polynomial, polynomial_of
 from hubokit.spectrum.slabs import Progress, run_slabs
@@ -27,6 +29,7 @@ from hubokit.spectrum.two_levels import elimination_order
 
 if TYPE_CHECKING:
     from hubokit.model.hamiltonian import Hamiltonian
+    from hubokit.model.trail import Origin
 
 WIDTH_LIMIT = 12
 """Most auxiliaries on which another one may depend when it is eliminated."""
@@ -118,7 +121,7 @@ def exhaustive_comparison(
 
     scale_from: ScaleFrom = "declared"
     if scale is None and shift is None:
-        candidate = _candidate(source, model, task(Fraction(1), Fraction(0)))
+        candidate = _candidate(source, model, auxiliaries)
         scale_from = "default" if candidate is None else "found"
         alpha, beta = candidate or (Fraction(1), Fraction(0))
     else:
@@ -184,19 +187,49 @@ def _relation(source: Hamiltonian, model: Hamiltonian, alpha: Fraction, beta: Fr
     return a, b, c
 
 
-def _candidate(source: Hamiltonian, model: Hamiltonian, task: Comparing) -> tuple[Fraction, Fraction] | None:
+def _candidate(
+    source: Hamiltonian, model: Hamiltonian, auxiliaries: Sequence[str]
+) -> tuple[Fraction, Fraction] | None:
     """The only alpha > 0 and beta that can hold everywhere, from two states of different E; 1 where E is constant."""
-    start: tuple[int, int] | None = None
-    for slab in range(task.layout.slabs):
-        for _, energies, found in task.blocks(slab):
-            if start is None:
-                start = int(energies[0]), int(found.least[0])
-            other = np.flatnonzero(energies != start[0])
-            if len(other):
-                rise = int(energies[other[0]]) - start[0]
-                alpha = Fraction(int(found.least[other[0]]) - start[1], rise) * model.resolution / source.resolution
-                beta = energy_of(model, start[1]) - alpha * energy_of(source, start[0])
-                return (alpha, beta) if alpha > 0 else None
-            if not len(source):
-                return Fraction(1), energy_of(model, start[1]) - energy_of(source, start[0])
+    first = np.ones(source.size, np.int8) if source.domain == "spin" else np.zeros(source.size, np.int8)
+    energy, least = source.energy(first), _projected(source, model, auxiliaries, first)
+    if not len(source):
+        return Fraction(1), least - energy
+    other = _other_level(source, first)
+    alpha = (_projected(source, model, auxiliaries, other) - least) / (source.energy(other) - energy)
+    return (alpha, least - alpha * energy) if alpha > 0 else None
+
+
+def _projected(
+    source: Hamiltonian, model: Hamiltonian, auxiliaries: Sequence[str], state: npt.NDArray[np.int8]
+) -> Fraction:
+    """P at one state: the least energy of what is left of F when x is put in."""
+    fixed: dict[str, Origin | int] = dict(zip(source.labels, state.tolist(), strict=True))
+    left = model.substituted(fixed)
+    return ground_states(left, limit=1).energy if auxiliaries else left.constant
+
+
+def _other_level(source: Hamiltonian, first: npt.NDArray[np.int8]) -> npt.NDArray[np.int8]:
+    """A state whose energy differs from that of `first`, all +1 or all 0; the source has terms.
+
+    Booleans: the members of a shortest term set to one reach no other term. Spins: over the flips of a longest term
+    with the others up, the coefficient of the whole product is that term's alone, so that some flips change the
+    energy; single flips and a few seeded states are tried before.
+    """
+    if source.domain == "boolean":
+        other = first.copy()
+        other[source.blocks[0].members[0]] = 1
+        return other
+    drawn = np.random.default_rng(0).choice(np.array([1, -1], np.int8), (256, source.size))
+    easy = np.concatenate([1 - 2 * np.eye(source.size, dtype=np.int8), drawn])
+    level = source.integer_energies(first)[0]
+    found = np.flatnonzero(source.integer_energies(easy) != level)
+    if len(found):
+        found_state: npt.NDArray[np.int8] = easy[int(found[0])]
+        return found_state
+    for values in product((1, -1), repeat=source.locality):
+        other = first.copy()
+        other[source.blocks[-1].members[0]] = values
+        if source.integer_energies(other)[0] != level:
+            return other
     raise AssertionError("a polynomial with terms takes two values")

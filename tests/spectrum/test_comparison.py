@@ -6,12 +6,13 @@ import itertools
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from fractions import Fraction
+from math import prod
 
 import numpy as np
 import pytest
 
 from hubokit.errors import InputError, LimitError
-from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.model.hamiltonian import Hamiltonian, booleans
 from hubokit.spectrum import comparison
 from hubokit.spectrum.comparison import exhaustive_comparison
 from hubokit.spectrum.comparison_result import Comparison
@@ -232,3 +233,19 @@ def test_what_is_too_large_is_refused_with_what_else_would_do() -> None:
     wide = Hamiltonian({(label,): 1 for label in many}, "spin")
     with pytest.raises(LimitError, match="would take"):
         exhaustive_comparison(wide, wide, [])
+
+
+@pytest.mark.parametrize("domain", ["spin", "boolean"])
+def test_a_second_level_that_is_rare_is_found_without_a_walk(domain):
+    x = booleans([f"x{i}" for i in range(10)])
+    H = prod(x[1:], start=x[0]).in_domain(domain)
+    M = H * 3 - 1
+    found = exhaustive_comparison(H, M, [])
+    assert (found.scale, found.shift, found.scale_from, found.violations == 0) == (3, -1, "found", True)
+
+
+def test_a_walk_that_would_take_too_long_is_refused_before_it_starts():
+    x = booleans([f"x{i}" for i in range(45)])
+    H = prod(x[1:], start=x[0])
+    with pytest.raises(LimitError):
+        exhaustive_comparison(H, H, [], time=1)
