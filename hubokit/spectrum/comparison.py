@@ -10,7 +10,6 @@ from __future__ import annotations
 from collections.abc import Sequence
 from concurrent.futures import Executor
 from fractions import Fraction
-from itertools import product
 from math import lcm
 from typing import TYPE_CHECKING
 
@@ -210,26 +209,18 @@ def _projected(
 
 
 def _other_level(source: Hamiltonian, first: npt.NDArray[np.int8]) -> npt.NDArray[np.int8]:
-    """A state whose energy differs from that of `first`, all +1 or all 0; the source has terms.
+    """A state whose energy differs from that of `first`; the source has terms.
 
-    Booleans: the members of a shortest term set to one reach no other term. Spins: over the flips of a longest term
-    with the others up, the coefficient of the whole product is that term's alone, so that some flips change the
-    energy; single flips and a few seeded states are tried before.
+    The difference from that energy is a polynomial other than zero. Each variable in turn keeps its first value when
+    that leaves something other than zero, and takes its second value when not.
     """
-    if source.domain == "boolean":
-        other = first.copy()
-        other[source.blocks[0].members[0]] = 1
-        return other
-    drawn = np.random.default_rng(0).choice(np.array([1, -1], np.int8), (256, source.size))
-    easy = np.concatenate([1 - 2 * np.eye(source.size, dtype=np.int8), drawn])
-    level = source.integer_energies(first)[0]
-    found = np.flatnonzero(source.integer_energies(easy) != level)
-    if len(found):
-        found_state: npt.NDArray[np.int8] = easy[int(found[0])]
-        return found_state
-    for values in product((1, -1), repeat=source.locality):
-        other = first.copy()
-        other[source.blocks[-1].members[0]] = values
-        if source.integer_energies(other)[0] != level:
-            return other
-    raise AssertionError("a polynomial with terms takes two values")
+    values = (1, -1) if source.domain == "spin" else (0, 1)
+    left = source - source.energy(first)
+    other = first.copy()
+    for position, label in enumerate(source.labels):
+        kept = left.substituted({label: values[0]})
+        if len(kept) or kept.constant:
+            other[position], left = values[0], kept
+        else:
+            other[position], left = values[1], left.substituted({label: values[1]})
+    return other
