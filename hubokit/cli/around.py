@@ -14,8 +14,9 @@ from hubokit.errors import InputError, LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import format_fraction
 from hubokit.model.states import States
-from hubokit.preparation.side_by_side import Asked, Measured, Traps, measured, measured_on_minimum, traps
+from hubokit.preparation.side_by_side import Asked, Measured, measured, measured_on_minimum
 from hubokit.reduction.result import Reduction
+from hubokit.validation.traps import Traps, traps
 
 Parts = dict[str, Any]
 Sides = list[tuple[str, Measured]]

@@ -23,7 +23,6 @@ from hubokit.spectrum.bandwidth import Bandwidth, bandwidth, bandwidth_within
 from hubokit.spectrum.elimination import draw_ground_states
 from hubokit.spectrum.landscape import connected_groups, minimum_distance
 from hubokit.spectrum.levels import Level
-from hubokit.spectrum.minima import LocalMinimum, NearMinima, is_local_minimum, minima_near
 from hubokit.spectrum.neighbourhood import neighbourhood, neighbourhood_of
 from hubokit.spectrum.search import ground_states, low_levels, routes
 
@@ -93,39 +92,6 @@ class Measured:
 
 
 @dataclass(frozen=True)
-class Trap:
-    """A single-flip local minimum of a reduced model near a target for which the design has none."""
-
-    target: int
-    minimum: LocalMinimum
-    through_auxiliary: bool
-
-
-@dataclass(frozen=True)
-class Traps:
-    """Local minima that a reduction adds near the targets.
-
-    Parameters
-    ----------
-    radius : int
-        Most flips from a lifted target, auxiliaries counted.
-    unstable : tuple of int
-        Targets whose lifted state is itself no local minimum.
-    found : tuple of Trap
-        Lowest rise first.
-    """
-
-    radius: int
-    unstable: tuple[int, ...]
-    found: tuple[Trap, ...]
-
-    @property
-    def through_auxiliaries(self) -> int:
-        """How many need an auxiliary flipped."""
-        return sum(trap.through_auxiliary for trap in self.found)
-
-
-@dataclass(frozen=True)
 class Landscape:
     """Where the ground states of a model lie.
 
@@ -174,41 +140,6 @@ def measured_on_minimum(
     merit = None if asked.radius is not None else bandwidth_within(within(at.shape[1]))
     look = within(asked.shown)
     return Measured(reduction.originals, look, merit or bandwidth_within(look))
-
-
-def traps(reduction: Reduction, targets: States, radius: int) -> Traps:
-    """Local minima of the reduced model near the lifted targets that are not lifted local minima of the source.
-
-    Raises
-    ------
-    LimitError
-        Too many sets of flips hold together around a target.
-    """
-    lifted = reduction.lift(targets)
-    near = minima_near(reduction.model, lifted, radius)
-    found = [trap for place, one in enumerate(near) for trap in _new(reduction, lifted[place], place, one)]
-    unstable = tuple(place for place, one in enumerate(near) if not one.centre_is_minimum)
-    return Traps(radius, unstable, tuple(sorted(found, key=lambda trap: (trap.minimum.rise, trap.target))))
-
-
-def _new(reduction: Reduction, centre: States, place: int, near: NearMinima) -> list[Trap]:
-    if not near.minima:
-        return []
-    model = reduction.model
-    states = np.repeat(centre[None, :], len(near.minima), axis=0)
-    first, second = (1, -1) if model.domain == "spin" else (0, 1)
-    for row, minimum in enumerate(near.minima):
-        columns = [model.positions[label] for label in minimum.flips]
-        states[row, columns] = np.where(states[row, columns] == first, second, first)
-    below = reduction.project(states)
-    lifted = model.integer_energies(reduction.lift(below))
-    known = is_local_minimum(reduction.source, below) & np.asarray(model.integer_energies(states) == lifted, bool)
-    through = set(near.through(reduction.auxiliaries))
-    return [
-        Trap(place, minimum, minimum in through)
-        for minimum, old in zip(near.minima, known.tolist(), strict=True)
-        if not old
-    ]
 
 
 def levels_with_landscape(

@@ -15,7 +15,8 @@ import pytest
 
 import hubokit as hk
 from hubokit.cli.states_file import read_states, states_text
-from hubokit.preparation.side_by_side import Asked, landscape_after, measured_on_minimum, traps
+from hubokit.preparation.side_by_side import Asked, landscape_after, measured_on_minimum
+from hubokit.validation.traps import traps
 
 ROOT = Path(__file__).resolve().parents[2]
 

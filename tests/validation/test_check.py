@@ -216,7 +216,7 @@ class TestKindsOfEvidence:
             ("elimination", 70, ["70 variables", "width", "projection"]),
             ("exhaustion", 70, ["2**70 states", "projection"]),
             ("exhaustion", 60, ["2**60 states", "days", "projection"]),
-            ("neighbourhood", 70, ["radius 6", "smaller radius", "projection"]),
+            ("neighbourhood", 700, ["radius 6", "smaller radius", "projection"]),
         ],
     )
     def test_evidence_asked_for_by_name_is_refused_before_its_start_where_it_is_too_much(
