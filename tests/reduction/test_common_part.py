@@ -84,7 +84,7 @@ def test_negative_terms_without_a_gap_take_one_auxiliary_in_all() -> None:
 @pytest.mark.parametrize("keep", ["one-to-one", "energies"])
 def test_reduced_models_keep_every_energy_by_enumeration(keep: str) -> None:
     used = 0
-    for seed in range(60):
+    for seed in range(24):
         H = random_model(seed, 8, 6)
         R = reduce(H, method=METHOD, keep=keep, prefer=PREFERENCES[seed % 3])
         if "common parts" not in R.trail.steps[0].parameters or R.model.size > 15:
@@ -94,14 +94,14 @@ def test_reduced_models_keep_every_energy_by_enumeration(keep: str) -> None:
         assert energies == [H.energy(state) for state in bits(H.size)]
         if keep == "one-to-one":
             assert ((excess == 0).sum(axis=1) == 1).all()
-    assert used > 20
+    assert used > 8
 
 
 @pytest.mark.parametrize("gap", [None, "1/3", 7])
 def test_projection_proves_what_common_parts_and_the_rest_make_at_any_size(gap: object) -> None:
     used = 0
-    for seed in range(12):
-        H = random_model(seed, 30, 10 + 5 * seed)
+    for seed in range(5):
+        H = random_model(seed, 30, 10 + 12 * seed)
         R = reduce(H, method=METHOD, prefer=PREFERENCES[seed % 3], auxiliary_gap=gap)  # type: ignore[arg-type]
         used += "common parts" in R.trail.steps[0].parameters
         found = project(R.model, R.auxiliaries)
@@ -109,7 +109,7 @@ def test_projection_proves_what_common_parts_and_the_rest_make_at_any_size(gap: 
         assert found.uniform_multiplicity == 1
         assert found.gap_everywhere is not None
         assert found.gap_everywhere.value >= (H.resolution if gap is None else Fraction(gap))  # type: ignore[operator, arg-type]
-    assert used > 8
+    assert used > 3
 
 
 def test_parts_of_parts_are_found() -> None:

@@ -10,7 +10,8 @@ import pytest
 
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.reduction.deductions import Deduced, deduced, indicator
-from hubokit.reduction.reduce import reduce
+from hubokit.reduction.reduce import PREFERENCES, reduce
+from hubokit.validation.check import check
 
 
 def random_model(seed: int) -> Hamiltonian:
@@ -124,3 +125,23 @@ def test_the_handbook_example_needs_no_auxiliary() -> None:
     assert [tuple(s) for s, e in zip(all_states(H).tolist(), energies(R.model), strict=True) if e == least] == [
         (1, 1, 1, 0)
     ]
+
+
+@pytest.mark.parametrize("prefer", PREFERENCES)
+def test_check_proves_ground_states_of_what_was_reduced_after_deductions(prefer: str) -> None:
+    used = 0
+    for seed in list(FOUND)[:8]:
+        R = reduce(FOUND[seed][0], keep="ground-states", prefer=prefer)
+        verdict = check(R)
+        assert "ground-states" in verdict.asked
+        assert verdict.claims["ground-states"].status == "proved"
+        used += [step.name for step in R.trail.steps] == ["deduction", "reduction"]
+    assert used > 2
+
+
+@pytest.mark.parametrize("keep", ["energies", "one-to-one"])
+def test_only_ground_states_allow_deductions(keep: str) -> None:
+    for seed in list(FOUND)[:8]:
+        R = reduce(FOUND[seed][0], keep=keep)
+        assert [step.name for step in R.trail.steps] == ["reduction"]
+        assert check(R).claims["energies"].status == "proved"
