@@ -17,10 +17,9 @@ auxiliary for all of them.
 
 What is left, B prod_C x and the shortened terms, is an ordinary Hamiltonian: more common parts are sought in it
 (parts may hold earlier auxiliaries), then it is reduced in the ordinary ways. Reducing it keeps its energies at every
-(x, y), so the minimum over all auxiliaries is the source's. A term still longer than two will put couplers between y
-and the auxiliaries of its gadget: L and U are then taken over these couplers free of each other, which is what lets
-a projection prove each y by its guards C alone, at any size. For the same reason no part is longer than a function
-of guards may be (`MOST`).
+(x, y), so the minimum over all auxiliaries is the source's, and a wrong y still costs gamma. L and U are taken over
+the terms that hold y with every other variable free. No part is longer than a function of guards may be (`MOST`), so
+that a projection can prove each y by the members of its part, however many terms share it.
 
 Cost: one auxiliary for each part, ceil(log2 r) - 1 more for B prod_C x where r > 2 and B > 0, and those of the
 shortened terms. Spins have no such form: a product of spins is no monomial in the sign that A y (r - S) needs.
@@ -36,7 +35,6 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cache
-from math import ceil, floor
 
 import numpy as np
 import numpy.typing as npt
@@ -45,8 +43,7 @@ from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import as_weights, common_resolution
 from hubokit.model.terms import Part
 from hubokit.reduction.assembly import fresh_labels
-from hubokit.reduction.gadgets.base import Keep
-from hubokit.reduction.gadgets.table import families_for, stand_in, wide_stand_in
+from hubokit.reduction.gadgets.table import families_for, stand_in
 
 METHOD = "common-part"
 
@@ -83,13 +80,12 @@ class Shared:
     served: dict[int, int]
 
 
-def shared_parts(H: Hamiltonian, keep: Keep, gap: Fraction) -> Shared | str | None:
+def shared_parts(H: Hamiltonian, gap: Fraction) -> Shared | str | None:
     """Replace common parts as long as that takes fewer auxiliaries.
 
     Parameters
     ----------
     H : Hamiltonian
-    keep : str
     gap : Fraction
         Auxiliary gap asked for, energy units.
 
@@ -101,7 +97,7 @@ def shared_parts(H: Hamiltonian, keep: Keep, gap: Fraction) -> Shared | str | No
     Examples
     --------
     >>> H = Hamiltonian({(*"abcd", other): 1 for other in "efgh"}, "boolean")
-    >>> shared = shared_parts(H, "energies", Fraction(0))
+    >>> shared = shared_parts(H, Fraction(0))
     >>> shared.parts, str(shared.model)[:9], shared.model.locality
     ((('a', 'b', 'c', 'd'),), '12 y0 - 4', 4)
     """
@@ -128,7 +124,7 @@ def shared_parts(H: Hamiltonian, keep: Keep, gap: Fraction) -> Shared | str | No
                 terms[new] = terms.pop(old)
     if not parts:
         return None
-    _penalise(terms, parts, H.size, keep, unit, step)
+    _penalise(terms, parts, H.size, step)
     labels = (*H.labels, *fresh_labels(H.labels, len(parts)))
     lost = [len(key) for key in untouched if key not in terms]
     return Shared(
@@ -227,14 +223,13 @@ def _candidates(inside: npt.NDArray[np.bool_]) -> npt.NDArray[np.bool_]:
     return np.asarray(cut[cut.sum(axis=1) >= 2], dtype=bool)
 
 
-def _penalise(
-    terms: Terms, parts: Sequence[tuple[int, ...]], size: int, keep: Keep, unit: Fraction, step: int
-) -> None:
+def _penalise(terms: Terms, parts: Sequence[tuple[int, ...]], size: int, step: int) -> None:
     """Add what ties each auxiliary to its part, the last defined first: its terms are then all known."""
     for number in range(size + len(parts) - 1, size - 1, -1):
         part = parts[number - size]
-        spans = [_span(len(key), weight, keep, unit, step) for key, weight in terms.items() if number in key]
-        low, high = sum(span[0] for span in spans), sum(span[1] for span in spans)
+        spans = [(weight, len(key) == 1) for key, weight in terms.items() if number in key]
+        low = sum(weight for weight, always in spans if weight < 0 or always)
+        high = sum(weight for weight, always in spans if weight > 0 or always)
         back = max(0, high + step)
         away = max(0, back - low + step)
         changes: Terms = {part: back, (number,): away * len(part) - back}
@@ -243,24 +238,3 @@ def _penalise(
             terms[key] = terms.get(key, 0) + value
             if not terms[key]:
                 del terms[key]
-
-
-def _span(locality: int, weight: int, keep: Keep, unit: Fraction, step: int) -> tuple[int, int]:
-    """Bounds of what a member of the term sees of it once it is reduced, whatever the other variables are."""
-    if locality == 1:
-        return weight, weight
-    if locality == 2:
-        return min(0, weight), max(0, weight)
-    low, high = Fraction(0), Fraction(0)
-    sign, size, gap = (-1 if weight < 0 else 1), abs(weight) * unit, step * unit
-    for one in families_for("boolean", locality, sign):
-        shape = stand_in(one.name, locality, sign, keep)
-        if shape.reach is not None and shape.reach * size < gap:
-            shape = wide_stand_in(one.name, locality, sign, keep)
-        slopes = shape.coefficients(size, gap)
-        for member in range(locality):
-            own = {item: value for item, value in slopes.items() if member in item}
-            field = own.pop((member,), Fraction(0))
-            low = min(low, field + sum(min(Fraction(0), value) for value in own.values()))
-            high = max(high, field + sum(max(Fraction(0), value) for value in own.values()))
-    return floor(low / unit), ceil(high / unit)

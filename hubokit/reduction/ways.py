@@ -136,7 +136,7 @@ def symmetric_plans(question: Question, largest: int) -> list[Plan]:
 
 def common_part_plans(question: Question) -> list[Plan] | str:
     """Common parts first, then the cheaper of term by term and a pair cover for what they leave."""
-    shared = shared_parts(question.H, question.keep, question.gap)
+    shared = shared_parts(question.H, question.gap)
     if shared is None or isinstance(shared, str):
         return shared or []
     rest = replace(question, H=shared.model)

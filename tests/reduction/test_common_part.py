@@ -13,7 +13,6 @@ from hubokit.errors import LimitError
 from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.projection.project import project
 from hubokit.reduction.common_part import METHOD, MOST, TERM_LIMIT, Shared, shared_parts
-from hubokit.reduction.gadgets.base import Keep
 from hubokit.reduction.planner import plan_table
 from hubokit.reduction.reduce import PREFERENCES, reduce
 
@@ -43,8 +42,8 @@ def minimum(model: Hamiltonian, originals: int) -> tuple[list[Fraction], np.ndar
     return energies, table - least[:, None], bits(model.size - originals)[table.argmin(axis=1)]
 
 
-def shared_in(H: Hamiltonian, keep: Keep, gap: Fraction) -> Shared:
-    shared = shared_parts(H, keep, gap)
+def shared_in(H: Hamiltonian, gap: Fraction) -> Shared:
+    shared = shared_parts(H, gap)
     assert isinstance(shared, Shared)
     return shared
 
@@ -57,7 +56,7 @@ def test_the_form_has_the_terms_as_its_minimum_and_the_gap_asked_for(
 ) -> None:
     common = tuple(f"c{i}" for i in range(part))
     H = Hamiltonian({(*common, f"r{i}"): weight for i, weight in enumerate(signs)}, "boolean")
-    shared = shared_in(H, "one-to-one" if gap else "energies", Fraction(gap))
+    shared = shared_in(H, Fraction(gap))
     assert shared.parts == (common,)
     energies, excess, best = minimum(shared.model, H.size)
     assert energies == [H.energy(state) for state in bits(H.size)]
@@ -71,7 +70,7 @@ def test_the_form_has_the_terms_as_its_minimum_and_the_gap_asked_for(
 def test_positive_terms_without_a_gap_are_the_published_form() -> None:
     # Fix, Gruber, Boros, Zabih 2011: the sum of the weights stands on the common part.
     H = Hamiltonian({(*"abcd", "e"): 2, (*"abcd", "f"): 3, (*"abcd", "g"): 1}, "boolean")
-    terms = dict(shared_in(H, "energies", Fraction(0)).model.terms())
+    terms = dict(shared_in(H, Fraction(0)).model.terms())
     assert terms[tuple("abcd")] == 6
     assert (terms[("e", "y0")], terms[("y0",)], terms[("a", "y0")]) == (2, 18, -6)
 
@@ -112,10 +111,19 @@ def test_projection_proves_what_common_parts_and_the_rest_make_at_any_size(gap: 
     assert used > 3
 
 
+def test_a_part_shared_by_many_longer_terms_is_proved_as_well() -> None:
+    chance = random.Random(0)
+    H = Hamiltonian({(*"abcd", f"p{i}", f"q{i}"): chance.choice([-5, -1, 2, 3]) for i in range(40)}, "boolean")
+    R = reduce(H, method=METHOD)
+    assert len(R.auxiliaries) == 42
+    found = project(R.model, R.auxiliaries)
+    assert (found.polynomial, found.uniform_multiplicity) == (H, 1)
+
+
 def test_parts_of_parts_are_found() -> None:
     near = {(*"abcd", "x", other): 1 for other in "efgh"}
     far = {(*"abcd", other, "z"): 1 for other in "ijkl"}
-    shared = shared_in(Hamiltonian(near | far, "boolean"), "one-to-one", Fraction(1))
+    shared = shared_in(Hamiltonian(near | far, "boolean"), Fraction(1))
     assert any(label.startswith("y") for part in shared.parts for label in part)
     assert max(len(part) for part in shared.parts) <= MOST
 
@@ -129,11 +137,9 @@ def test_common_parts_are_chosen_where_they_are_fewest_and_the_trail_names_them(
 
 
 def test_cubic_terms_spins_and_lone_terms_have_no_common_part_to_save_with() -> None:
-    assert shared_parts(Hamiltonian({tuple("abc"): 1, tuple("abd"): 1}, "boolean"), "energies", Fraction(0)) is None
-    assert shared_parts(Hamiltonian({tuple("abcde"): 1, tuple("abcdf"): 1}, "spin"), "energies", Fraction(0)) is None
-    assert (
-        shared_parts(Hamiltonian({tuple("abcde"): 1, tuple("fghij"): 1}, "boolean"), "energies", Fraction(0)) is None
-    )
+    assert shared_parts(Hamiltonian({tuple("abc"): 1, tuple("abd"): 1}, "boolean"), Fraction(0)) is None
+    assert shared_parts(Hamiltonian({tuple("abcde"): 1, tuple("abcdf"): 1}, "spin"), Fraction(0)) is None
+    assert shared_parts(Hamiltonian({tuple("abcde"): 1, tuple("fghij"): 1}, "boolean"), Fraction(0)) is None
 
 
 def test_more_terms_than_the_work_limit_are_left_and_named() -> None:
