@@ -99,10 +99,25 @@ def merits(sides: Sides) -> str:
     """Bandwidth, distance and ratio, one column a model."""
     columns = [_merit_cells(side) for _, side in sides]
     rows = [[name, *cells] for name, *cells in zip(MERITS, *columns, strict=True)]
-    methods = list(dict.fromkeys(side.merit.method for _, side in sides))
-    over = [(methods[0], "")] if len(methods) == 1 else [(side.merit.method, f"{name}: ") for name, side in sides]
     header = ["figure", *(name for name, _ in sides)]
-    return "\n".join([table(header, rows), "", fields([("over", mark + method) for method, mark in over])])
+    named = [(name, "B/D undefined", why) for name, side in sides if (why := _undefined(side))]
+    named += [(name, "over", side.merit.method) for name, side in sides]
+    said: list[tuple[str, str]] = []
+    for what in ("B/D undefined", "over"):
+        texts = [(name, text) for name, kind, text in named if kind == what]
+        alike = len(texts) == len(sides) and len({text for _, text in texts}) == 1
+        said += [(what, texts[0][1])] if alike else [(what, f"{name}: {text}") for name, text in texts]
+    return "\n".join([table(header, rows), "", fields(said)])
+
+
+def _undefined(side: Measured) -> str:
+    """Why the ratio is undefined; empty where it is not."""
+    merit = side.merit
+    if merit.ratio is not None:
+        return ""
+    if merit.distance is None:
+        return "there is no other state"
+    return f"a state lies {'at' if merit.distance == 0 else 'below'} the highest target"
 
 
 MERITS = ("lowest target", "highest target", "lowest other state", "bandwidth B", "distance D", "ratio B/D")
@@ -116,10 +131,8 @@ def _merit_cells(side: Measured) -> list[str]:
         ratio = f"{least}{number(merit.ratio)}" + (
             "" if merit.ratio.denominator == 1 else f" = {float(merit.ratio):.4g}"
         )
-    elif merit.distance is None:
-        ratio = "undefined: no other state"
     else:
-        ratio = f"undefined: a state lies {'at' if merit.distance == 0 else 'below'} the highest target"
+        ratio = "undefined"
     return [
         number(merit.lowest), number(merit.highest), f"{number(merit.lowest_other)}", number(merit.bandwidth),
         distance, ratio,

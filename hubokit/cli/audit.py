@@ -33,13 +33,17 @@ def command(
 ) -> None:
     """Check a verdict again by separate code; exit code 0 accepted, 1 rejected, 3 not all re-checked.
 
-    Models that are not named are looked for beside the verdict, under the names that it gives.
+    Models that are not named are looked for beside the verdict, under the names that it gives; a source that it does
+    not name is the one in the reduced model's trail.
     """
     judged = unpacked(_object(verdict))
+    if judged.get("document") != "hubokit/verdict":
+        raise InputError("this is no verdict; hubokit check --output writes one", "/document", str(verdict))
     reduced = _document(model or _beside(verdict, judged, "model", "--model"))
-    source_file = source or _beside(verdict, judged, "source", "--source")
+    embedded = None if source is not None or _named(judged, "source") else _embedded(reduced)
+    before = embedded or _document(source or _beside(verdict, judged, "source", "--source"))
     try:
-        report = audit(judged, _document(source_file), reduced)
+        report = audit(judged, before, reduced)
     except HubokitError as error:
         raise error.located(file=str(verdict)) from None
     if as_json:
@@ -79,8 +83,22 @@ def _document(path: Path) -> Mapping[str, Any]:
 
 def _beside(verdict: Path, judged: Mapping[str, Any], role: str, option: str) -> Path:
     """The file that a verdict names for a role, in its own folder."""
-    files = judged.get("files")
-    name = files.get(role) if isinstance(files, dict) else None
-    if not isinstance(name, str) or Path(name).name != name:
+    name = _named(judged, role)
+    if name is None:
         raise InputError(f"the verdict does not name the file; {option} names it", file=str(verdict))
     return verdict.parent / name
+
+
+def _named(judged: Mapping[str, Any], role: str) -> str | None:
+    """The file name that a verdict gives for a role; None where it gives none, or one with a folder in it."""
+    files = judged.get("files")
+    name = files.get(role) if isinstance(files, dict) else None
+    return name if isinstance(name, str) and Path(name).name == name else None
+
+
+def _embedded(reduced: Mapping[str, Any]) -> Mapping[str, Any] | None:
+    """The source in the trail of a reduced model; None where there is none."""
+    trail = reduced.get("trail")
+    first = trail[0] if isinstance(trail, list) and trail else None
+    found = first.get("model") if isinstance(first, dict) else None
+    return found if isinstance(found, dict) else None

@@ -13,7 +13,7 @@ from hubokit.cli.loading import Elsewhere, load_reduction
 from hubokit.cli.progress import bar
 from hubokit.cli.states_file import read_states
 from hubokit.errors import LimitError
-from hubokit.exchange.documents import document_to_json, plain_json
+from hubokit.exchange.documents import Document, document_to_json, plain_json
 from hubokit.exchange.files import refuse_existing
 from hubokit.exchange.formats import write
 from hubokit.preparation.figures import intent_remarks
@@ -64,12 +64,18 @@ def command(
     remarks = intent_remarks(document.intent, reduction.source, None if least is None else least.value)
     verdict = replace(verdict, notes=(*verdict.notes, *remarks))
     if out is not None:
-        write(verdict, out, force=force)
+        write(Document(verdict, files=_beside(out, reduced, source)), out, force=force)
     if as_json:
         summary.emit(plain_json(document_to_json(verdict)))
     else:
         print(describing.verdict_text(verdict))
     raise typer.Exit(verdict.exit_code)
+
+
+def _beside(out: Path, reduced: Path, source: Path | None) -> dict[str, str]:
+    """Names of the models' files that stand beside the verdict, where an audit looks for them."""
+    files = {"model": reduced} | ({} if source is None else {"source": source})
+    return {role: path.name for role, path in files.items() if path.resolve().parent == out.resolve().parent}
 
 
 def _refuse_undone(verdict: Verdict, evidence: options.Evidence, file: Path) -> None:

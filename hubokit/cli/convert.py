@@ -10,8 +10,7 @@ import typer
 from hubokit.cli import describing, options, summary
 from hubokit.cli.progress import reading
 from hubokit.cli.text import fields, section, size_of
-from hubokit.exchange.conversion import CONVENTIONS, Conversion, convert
-from hubokit.exchange.formats import format_of
+from hubokit.exchange.conversion import Conversion, convert
 
 
 def command(
@@ -50,22 +49,17 @@ def command(
             force=force,
             progress=progress,
         )
-    read = format_of(source, source_format)
     if as_json:
         summary.emit(summary.document("convert", _parts(done, source, out)))
         return
     sides = [
-        ("read", f"{read.name}, {_side(done.source.model.domain, done.source.model.convention)}"),
-        ("written", f"{done.format.name}, {_side(done.domain, done.document.model.convention)}"),
+        ("read", done.sides[0]),
+        ("written", done.sides[1]),
         ("size", size_of(out.stat().st_size)),
     ]
     said = [("changed", change) for change in done.changes] + [("left behind", loss) for loss in done.losses]
     model = describing.model_fields(done.document.model, len(done.document.auxiliaries))
     print(section(f"CONVERTED  {source} to {out}", fields([*model, *sides, *said])), end="")
-
-
-def _side(domain: str, convention: str) -> str:
-    return f"{domain} variables, {CONVENTIONS[convention]}"
 
 
 def _parts(done: Conversion, source: Path, out: Path) -> dict[str, Any]:
@@ -74,6 +68,6 @@ def _parts(done: Conversion, source: Path, out: Path) -> dict[str, Any]:
         "source": summary.model_part(before.model, str(source), len(before.auxiliaries)),
         "model": summary.model_part(after.model, str(out), len(after.auxiliaries)),
         "changes": [*done.changes, *(f"left behind: {loss}" for loss in done.losses)],
-        "notes": [f"the file speaks in {_side(done.domain, after.model.convention)}"],
+        "notes": [f"read: {done.sides[0]}", f"written: {done.sides[1]}"],
         "files": {str(out): done.format.carries},
     }

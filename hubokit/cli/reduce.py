@@ -11,9 +11,10 @@ import typer
 from hubokit.cli import describing, options, summary
 from hubokit.cli.loading import load_document
 from hubokit.cli.text import fields, section
+from hubokit.exchange.conversion import losses
 from hubokit.exchange.documents import as_document
 from hubokit.exchange.files import refuse_existing
-from hubokit.exchange.formats import write
+from hubokit.exchange.formats import format_of, write
 from hubokit.reduction.reduce import reduce
 
 
@@ -35,6 +36,7 @@ def command(
     as_json: options.Json = False,
 ) -> None:
     """Reduce a model to quadratic form and write it with the trail that leads back to its source."""
+    format_of(out, file_format)
     refuse_existing(out, force=force)
     document = load_document(model)
     source = document.model
@@ -57,10 +59,13 @@ def command(
             "model": summary.model_part(reduction.model, str(out), len(reduction.auxiliaries)),
             "reduction": summary.reduction_part(reduction),
             "files": {str(out): "the reduced model"},
+            "notes": [f"left behind: {loss}" for loss in losses(made, format_of(out, file_format))],
         }
         summary.emit(summary.document("reduce", parts))
         return
     print(section(f"SOURCE  {model}", fields(describing.model_fields(source))))
-    print(section(f"REDUCTION  {out}", describing.reduction_text(reduction)))
+    lost = losses(made, format_of(out, file_format))
+    left = fields([("left behind", f"{', '.join(lost)}; a .json file holds them")]) if lost else ""
+    print(section(f"REDUCTION  {out}", describing.reduction_text(reduction), left))
     if explain:
         print(section("WHY", describing.trail_text(reduction.trail)))

@@ -259,8 +259,8 @@ def _draw(
         write_text(out, states_text(model.labels, states), force=force)
         parts["files"] = {str(out): "the states drawn"}
         return parts, [section(f"DRAWN  {out}", fields(said))]
-    rows = [f"  {signs}" for signs in describing.state_signs(states[:DRAWS_SHOWN], model.domain)]
+    rows = ["", *(f"  {signs}" for signs in describing.state_signs(states[:DRAWS_SHOWN], model.domain))]
     if amount > DRAWS_SHOWN:
         rows.append(f"  and {amount - DRAWS_SHOWN} more; --output or --json gives them all")
     names = fields([("variables", " ".join(model.labels))])
-    return parts, [section("DRAWN", fields(said), "", "\n".join(rows), "", names)]
+    return parts, [section("DRAWN", fields(said), "\n".join([*rows, ""]), names)]

@@ -39,8 +39,8 @@ class Conversion:
     ----------
     source, document : Document
         As read, and as written.
-    format : Format
-        Of the file written.
+    read_as, format : Format
+        Of the file read, and of the file written.
     changes : tuple of str
         What the file says in another way; reading it undoes this.
     losses : tuple of str
@@ -49,14 +49,15 @@ class Conversion:
 
     source: Document
     document: Document
+    read_as: Format
     format: Format
     changes: tuple[str, ...]
     losses: tuple[str, ...]
 
     @property
-    def domain(self) -> str:
-        """Domain in which the file written speaks."""
-        return self.document.model.domain if self.format.domain == "any" else self.format.domain
+    def sides(self) -> tuple[str, str]:
+        """Format, domain and convention of the file read and of the file written."""
+        return _side(self.read_as, self.source.model), _side(self.format, self.document.model)
 
 
 def convert(
@@ -101,7 +102,10 @@ def convert(
         A change of domain that expands too far, weights that the format does not hold exactly.
     """
     entry = format_of(path_out, target_format)
-    entry.told(form)
+    try:
+        entry.told(form)
+    except InputError as error:
+        raise error.located(file=os.fspath(path_out)) from None
     refuse_existing(path_out, force=force)
     source = read_document(path_in, format=source_format, progress=progress)
     if getattr(source.thing, "claims", None) is not None:
@@ -116,7 +120,12 @@ def convert(
         )
     changes += changed(document, entry, path_out, form)
     write(document, path_out, entry.name, force=force, form=form)
-    return Conversion(source, document, entry, tuple(changes), tuple(lost))
+    return Conversion(source, document, format_of(path_in, source_format), entry, tuple(changes), tuple(lost))
+
+
+def _side(entry: Format, model: Hamiltonian) -> str:
+    domain = model.domain if entry.domain == "any" else entry.domain
+    return f"{entry.name}, {domain} variables, {CONVENTIONS[model.convention]}"
 
 
 def _in_domain(document: Document, domain: str | None, file: str) -> tuple[Document, list[str]]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
+from functools import partial
 from typing import TYPE_CHECKING
 
 from hubokit.errors import HubokitError, InputError
@@ -101,8 +102,18 @@ FORMATS: dict[str, Format] = {
             forms={"no-header": {"header": "2022"}, "old-header": {"header": "old"}},
         ),
         Format("cnf", (".cnf", ".dimacs"), load_cnf, write_cnf, "a model of small weights as clauses", "boolean"),
-        Format("mps", (".mps",), load_program, write_program, "a linear integer program", "boolean", packed=False),
-        Format("lp", (".lp",), load_program, write_program, "a linear integer program", "boolean", packed=False),
+        *(
+            Format(
+                kind,
+                (f".{kind}",),
+                partial(load_program, kind=kind),
+                partial(write_program, kind=kind),
+                "a linear integer program",
+                "boolean",
+                packed=False,
+            )
+            for kind in ("mps", "lp")
+        ),
         Format(
             "matrix-market",
             (".mtx",),
@@ -232,6 +243,13 @@ def read(
     return read_document(path, source, format, progress).thing
 
 
+def _told(entry: Format, form: str | None, path: str | os.PathLike[str]) -> Mapping[str, str]:
+    try:
+        return entry.told(form)
+    except HubokitError as error:
+        raise error.located(file=os.fspath(path)) from None
+
+
 def write(
     thing: Thing | Document,
     path: str | os.PathLike[str],
@@ -264,7 +282,7 @@ def write(
         The file exists, the format cannot hold the thing, or it has no such form.
     """
     entry = format_of(path, format)
-    told = entry.told(form)
+    told = _told(entry, form, path)
     if entry.name == JSON:
         write_document(thing, path, force=force, detached=detached, source_file=source_file)
         return

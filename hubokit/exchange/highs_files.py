@@ -9,6 +9,7 @@ from __future__ import annotations
 import io
 import os
 import re
+import shutil
 import subprocess
 import sys
 import tempfile
@@ -97,8 +98,8 @@ _REASONS = {
 }
 
 
-def highs_write(program: Program, path: Path) -> None:
-    """Write a program as an MPS or LP file, by the suffix.
+def highs_write(program: Program, path: Path, kind: str) -> None:
+    """Write a program as an MPS or LP file, by the kind, "mps" or "lp", whatever the suffix.
 
     Raises
     ------
@@ -118,7 +119,9 @@ def highs_write(program: Program, path: Path) -> None:
             columns=program.columns,
             values=program.values,
         )
-        _in_child(_WRITER, source, os.path.abspath(path))
+        target = os.path.join(folder, f"written.{kind}")
+        _in_child(_WRITER, source, target)
+        shutil.copyfile(target, path)
 
 
 def _in_child(script: str, source: str, target: str) -> None:
@@ -175,8 +178,8 @@ def _number_words(section: str, words: list[str]) -> list[str]:
     return []
 
 
-def highs_read(name: str) -> Program:
-    """The linear program in a file.
+def highs_read(name: str, kind: str) -> Program:
+    """The linear program in a file of a kind, "mps" or "lp", whatever its suffix.
 
     Raises
     ------
@@ -185,10 +188,14 @@ def highs_read(name: str) -> Program:
     """
     if os.path.getsize(name) == 0 if os.path.isfile(name) else False:
         raise InputError("the file is empty")
-    refuse_damaged(read_text(name, limit=PROGRAM_LIMIT), mps=name.lower().endswith(".mps"))
+    refuse_damaged(read_text(name, limit=PROGRAM_LIMIT), mps=kind == "mps")
     with tempfile.TemporaryDirectory() as folder:
         target = os.path.join(folder, "program.npz")
-        _in_child(_READER, os.path.abspath(name), target)
+        # HiGHS goes by the suffix.
+        given = os.path.abspath(name)
+        if not name.endswith(f".{kind}"):
+            given = shutil.copyfile(given, os.path.join(folder, f"given.{kind}"))
+        _in_child(_READER, given, target)
         with open(target, "rb") as stream:
             stored = np.load(io.BytesIO(stream.read()), allow_pickle=False)
     return _program({key: stored[key] for key in stored.files})

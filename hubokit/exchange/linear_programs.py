@@ -23,13 +23,17 @@ from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import as_fraction, common_resolution, format_fraction
 
 
-def write_program(model: Hamiltonian, path: str | os.PathLike[str], *, force: bool = False) -> None:
-    """Write a model as an MPS or LP file (by the suffix) and its sidecar NAME.names.json.
+def write_program(
+    model: Hamiltonian, path: str | os.PathLike[str], *, force: bool = False, kind: str | None = None
+) -> None:
+    """Write a model as an MPS or LP file and its sidecar NAME.names.json.
 
     Parameters
     ----------
     model : Hamiltonian
         A spin model is written in booleans; the sidecar says so and reading undoes it.
+    kind : "mps" or "lp", optional
+        By default the suffix says it.
 
     Raises
     ------
@@ -55,7 +59,7 @@ def write_program(model: Hamiltonian, path: str | os.PathLike[str], *, force: bo
     if not held:
         refuse_existing(side, force=force)
     with safe_path(path, force=force) as temporary:
-        highs_write(program, temporary)
+        highs_write(program, temporary, _kind(path, kind))
     if not held:
         write_text(side, text, force=force)
 
@@ -65,14 +69,20 @@ def read_program(path: str | os.PathLike[str]) -> Hamiltonian:
     return load_program(path).model
 
 
-def load_program(path: str | os.PathLike[str]) -> Reading:
+def _kind(path: str | os.PathLike[str], kind: str | None) -> str:
+    return kind or ("mps" if os.fspath(path).lower().endswith(".mps") else "lp")
+
+
+def load_program(path: str | os.PathLike[str], kind: str | None = None) -> Reading:
     """The model of an MPS or LP file: one that `write_program` wrote, or any program in binary columns.
 
     Parameters
     ----------
     path : path
-        ``.mps`` or ``.lp``. Product columns are recognised by their names and rows. Other rows become penalties of
+        Product columns are recognised by their names and rows. Other rows become penalties of
         proven weight (`hubokit.exchange.constraints`).
+    kind : "mps" or "lp", optional
+        By default the suffix says it.
 
     Raises
     ------
@@ -83,7 +93,7 @@ def load_program(path: str | os.PathLike[str]) -> Reading:
     """
     name = os.fspath(path)
     try:
-        program = own_order(highs_read(name))
+        program = own_order(highs_read(name, _kind(path, kind)))
         header = Header()
         read_sidecar(path, header)
         own = product_columns(program)

@@ -458,3 +458,37 @@ def test_convert_reads_a_file_whose_suffix_says_nothing(hubokit: Any, fixtures: 
     assert hubokit("convert", bare, tmp_path / "a.json").code == 2
     assert hubokit("convert", bare, tmp_path / "a.json", "--from", "cnf").code == 0
     assert hk.read(tmp_path / "a.json") == hk.read(fixtures / "satisfiable-20.cnf")
+
+
+@pytest.mark.parametrize("name", ["mps", "lp", "npz", "csv", "opb"])
+def test_a_named_format_does_without_its_suffix(hubokit: Any, tmp_path: Path, name: str) -> None:
+    model = hk.Hamiltonian({("mist", "vent", "pump"): "3/2", ("mist",): -1}, "boolean")
+    hk.write(model, tmp_path / "m.json")
+    assert hubokit("convert", tmp_path / "m.json", tmp_path / "plan.txt", "--format", name).code == 0
+    assert hubokit("convert", tmp_path / "plan.txt", tmp_path / "back.json", "--from", name).code == 0
+    assert hk.read(tmp_path / "back.json") == model
+
+
+def test_audit_finds_the_models_of_a_verdict_that_check_wrote(hubokit: Any, twelve: Path, tmp_path: Path) -> None:
+    assert hubokit("check", twelve, "-o", tmp_path / "verdict.json").code == 0
+    assert hubokit("audit", tmp_path / "verdict.json").code == 0
+    (tmp_path / "other").mkdir()
+    assert hubokit("check", twelve, "-o", tmp_path / "other" / "verdict.json").code == 0
+    away = hubokit("audit", tmp_path / "other" / "verdict.json")
+    assert away.code == 2
+    assert "--model" in away.err
+
+
+def test_audit_says_what_is_no_verdict(hubokit: Any, twelve: Path) -> None:
+    refused = hubokit("audit", twelve)
+    assert refused.code == 2
+    assert "this is no verdict" in refused.err
+
+
+def test_reduce_says_what_a_foreign_format_leaves_behind(hubokit: Any, fixtures: Path, tmp_path: Path) -> None:
+    done = hubokit("reduce", fixtures / "greenhouse.json", "-o", tmp_path / "r.opb")
+    assert done.code == 0
+    assert "left behind" in done.out
+    assert "the source" in done.out
+    kept = hubokit("reduce", fixtures / "greenhouse.json", "-o", tmp_path / "r.json")
+    assert "left behind" not in kept.out
