@@ -10,7 +10,7 @@ from hubokit.model.hamiltonian import Hamiltonian
 from hubokit.model.numbers import Number, as_fraction, format_fraction
 from hubokit.model.trail import Step, Trail
 from hubokit.reduction.deductions import STEP
-from hubokit.reduction.lifting import LISTS, MODEL
+from hubokit.reduction.lifting import MODEL
 from hubokit.reduction.planner import methods, planned, planned_for_ground_states
 from hubokit.reduction.plans import Question
 from hubokit.reduction.result import Reduction
@@ -95,8 +95,9 @@ def reduce(
         change = {"from": H.domain, "to": domain, "convention": H.convention}
         steps.append(Step("domain", model.digest, parameters=change))
         model = model.in_domain(domain)
-    if any(keys[0] in made for keys in LISTS) and (gap or "common parts" not in made):
-        # Without a gap a common part has ties, and the rule might not give the first of the best.
+    # Without a gap a common part has ties, and the rule might not give the first of the best.
+    parts, pairs = "common parts" in made, isinstance(made.get("pair cover", {}).get("pairs"), list)
+    if (parts and gap) or (pairs and not parts):
         parameters[MODEL] = model.digest
     trail = Trail(tuple(steps), source=H, source_digest=H.digest, keep=keep)
     return Reduction(H, model, auxiliaries, trail=trail)
