@@ -20,8 +20,8 @@ from hubokit.validation.verdict import Evenness, Figure
 
 #: Seconds that a ground level may be predicted to take when only a figure needs it.
 PATIENCE = 5.0
-#: Variables of which local minima are counted.
-MINIMA_SIZE = 20
+#: Most variables of which local minima are counted.
+MINIMA_SIZE = 28
 #: Ground states listed for a figure.
 LISTED = 10_000
 
@@ -168,8 +168,12 @@ def _local_minima(case: Case, options: Options, found: Findings) -> None:
     from hubokit.spectrum.exhaustive import count_local_minima
 
     for name, H in (("source-local-minima", case.source), ("model-local-minima", case.model)):
-        if H.size <= MINIMA_SIZE:
-            found.figures[name] = Figure(Fraction(count_local_minima(H)))
+        if H.size > MINIMA_SIZE:
+            continue
+        try:
+            found.figures[name] = Figure(Fraction(count_local_minima(H, time=PATIENCE)))
+        except LimitError as refusal:
+            found.note(f"{name} not counted: {refusal.message}")
 
 
 def _evenness(case: Case, found: Findings) -> None:
