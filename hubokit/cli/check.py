@@ -18,7 +18,6 @@ from hubokit.exchange.files import refuse_existing
 from hubokit.exchange.formats import write
 from hubokit.preparation.figures import intent_remarks
 from hubokit.validation.check import check
-from hubokit.validation.verdict import Verdict
 
 
 def command(
@@ -49,17 +48,19 @@ def command(
         refuse_existing(out, force=force)
     reduction, document = load_reduction(reduced, Elsewhere(source, auxiliaries, origin, scale, shift))
     centres = None if around is None else read_states(around, reduction.source.labels, reduction.source.domain)
-    with bar("checking") as progress:
-        verdict = check(
-            reduction,
-            claims=options.claims(claim),
-            evidence=evidence.value,
-            radius=radius,
-            around=centres,
-            progress=progress,
-            time=time,
-        )
-    _refuse_undone(verdict, evidence, reduced)
+    try:
+        with bar("checking") as progress:
+            verdict = check(
+                reduction,
+                claims=options.claims(claim),
+                evidence=evidence.value,
+                radius=radius,
+                around=centres,
+                progress=progress,
+                time=time,
+            )
+    except LimitError as refusal:
+        raise refusal.located(file=str(reduced)) from None
     least = verdict.figures.get("source-ground-energy")
     remarks = intent_remarks(document.intent, reduction.source, None if least is None else least.value)
     verdict = replace(verdict, notes=(*verdict.notes, *remarks))
@@ -76,12 +77,3 @@ def _beside(out: Path, reduced: Path, source: Path | None) -> dict[str, str]:
     """Names of the models' files that stand beside the verdict, where an audit looks for them."""
     files = {"model": reduced} | ({} if source is None else {"source": source})
     return {role: path.name for role, path in files.items() if path.resolve().parent == out.resolve().parent}
-
-
-def _refuse_undone(verdict: Verdict, evidence: options.Evidence, file: Path) -> None:
-    """Raise where a visit to all states, asked for by name, was refused for its size; made, it settles everything."""
-    if evidence is not options.Evidence.exhaustion:
-        return
-    asked = [verdict.claims[name] for name in verdict.asked if name != "quadratic"]
-    if asked and all(claim.status == "open" for claim in asked):
-        raise LimitError(f"{asked[0].detail}; --evidence projection or auto may decide it", "--evidence", str(file))

@@ -75,6 +75,8 @@ def parsed(text: str, *, file: str | None = None) -> Any:
     try:
         value = json.loads(text, object_pairs_hook=unique)
     except json.JSONDecodeError as error:
+        if not text.strip():
+            raise InputError("the file is empty", file=file) from None
         place = f"line {error.lineno} column {error.colno}"
         raise InputError(f"not JSON: {error.msg}", place, file) from None
     except RecursionError:
