@@ -85,17 +85,20 @@ def command(
         refuse_existing(out, force=force)
     thing = _loaded(model, Elsewhere(source, auxiliaries, origin))
     hamiltonian = thing.model if isinstance(thing, Reduction) else thing
-    if density:
-        parts, shown = _density(hamiltonian, time, checkpoint)
-    elif targets is not None:
-        parts, shown = around(thing, targets, Asked(radius, limit, distinct, time))
-    elif draw is not None:
-        parts, shown = _draw(thing, draw, seed, out, force, time)
-    else:
-        try:
+    try:
+        if density:
+            parts, shown = _density(hamiltonian, time, checkpoint)
+        elif targets is not None:
+            parts, shown = around(thing, targets, Asked(radius, limit, distinct, time))
+        elif draw is not None:
+            parts, shown = _draw(thing, draw, seed, out, force, time)
+        else:
             parts, shown = _levels(thing, levels, limit, time, checkpoint, states)
-        except LimitError as refusal:
-            raise LimitError(f"{refusal.message} (--targets STATES.csv --radius R)", file=str(model)) from None
+    except LimitError as refusal:
+        hint = " (--targets STATES.csv --radius R)" if targets is None and draw is None and not density else ""
+        raise LimitError(f"{refusal.message}{hint}", refusal.place, refusal.file or str(model)) from None
+    except HubokitError as error:
+        raise error.located(file=str(model)) from None
     if as_json:
         heads: Parts = {"model": summary.model_part(hamiltonian, str(model))}
         if isinstance(thing, Reduction):

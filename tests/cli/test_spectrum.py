@@ -372,3 +372,24 @@ def test_a_thousand_spins_without_a_radius_are_refused_with_what_would_do(
     assert "--radius R" in done.err
     done = hubokit("spectrum", tmp_path / "dense.json", "--targets", targets, "--radius", "2", "--json")
     assert summary(done.out)["figures"]["states"] == str(1 + 1000 + 1000 * 999 // 2)
+
+
+def test_an_undefined_ratio_is_explained_below_the_table(hubokit: Any, tmp_path: Path) -> None:
+    design = hk.Hamiltonian({("a", "b", "c"): -1, ("a",): 1, ("d",): 0}, domain="boolean", labels=list("abcd"))
+    hk.write(hk.reduce(design), tmp_path / "reduced.json")
+    (tmp_path / "targets.csv").write_text("a,b,c,d\n0,0,0,0\n", encoding="utf-8")
+    shown = hubokit("spectrum", tmp_path / "reduced.json", "--targets", tmp_path / "targets.csv", "--radius", "1")
+    assert shown.code == 0
+    merit = shown.out[shown.out.index("MERIT") : shown.out.index("AT OR BELOW")]
+    assert "B/D undefined   a state lies at the highest target" in merit
+    assert max(map(len, merit.splitlines())) <= 80
+
+
+def test_work_refused_names_the_file(hubokit: Any, tmp_path: Path) -> None:
+    rng = np.random.default_rng(2)
+    pairs = np.array([(i, j) for i in range(90) for j in range(i)])
+    hk.write(hk.Hamiltonian.from_arrays([pairs], [rng.integers(1, 9, len(pairs))], "spin"), tmp_path / "dense.json")
+    for option in (["--density"], ["--draw", "2"], []):
+        refused = hubokit("spectrum", tmp_path / "dense.json", *option)
+        assert refused.code == 2
+        assert "dense.json: " in refused.err
