@@ -1,42 +1,72 @@
 """A second, small checker of verdicts: plain integers and fractions, nothing of hubokit but its errors.
 
-`audit` reads three JSON documents (verdict, source, reduced model) and trusts none of them. It recomputes
-both digests, follows the certificate of a projection (audit_certificate.py), visits all states of a small
-model by the definitions, re-evaluates every witness, and then says of each claim that the verdict calls
-proved or refuted whether it agrees. What it cannot re-check it calls so; that counts as neither accepted nor
-rejected.
+`audit` reads three JSON documents (verdict, source, reduced model) and trusts none of them. It recomputes both
+digests, repeats the certificate of a projection (audit_certificate.py), visits all states of a small model by
+the definitions, evaluates every witness, and then says of each claim whether it agrees. What it cannot re-check
+it calls so; that is neither accepted nor rejected. The figures beside the claims are not looked at.
+
+With E the source, F the reduced model on originals x and auxiliaries a, P(x) = min over a of F(x, a), and m(x)
+the number of settings that reach it, the claims are:
+
+ground-energy       min P = scale * min E + shift
+ground-states       the states that minimise P are those that minimise E
+even-multiplicity   ground-states, and m is the same at all of them
+energies            P = scale * E + shift at every state
+one-to-one          energies, and m = 1 at every state
+quadratic           no product of F has more than two variables
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
+from dataclasses import dataclass
 from fractions import Fraction
 from itertools import product
 from typing import Any
 
 from hubokit.errors import InputError
-from hubokit.validation.audit_certificate import follow, multiplicity_at
-from hubokit.validation.audit_models import Model, digest, rational, read_model, related, relation_of, scaled
-from hubokit.validation.audit_polynomials import (
-    Key,
-    Poly,
-    TooLarge,
-    add,
-    add_product,
-    settings,
-    tabulated,
-    value_at,
-    values_of,
-)
-from hubokit.validation.audit_proof import Proof, Rejected
-from hubokit.validation.audit_report import AuditReport, Item
+from hubokit.validation.audit_arithmetic import Key, Poly, TooLarge, add, times, value_at, values_of
+from hubokit.validation.audit_certificate import Proof, Rejected, follow
+from hubokit.validation.audit_models import Model, digest, rational, read_model
 
-#: States, auxiliaries included, that are visited by brute force, and multiplications that this may take.
-MOST_STATES, MOST_WORK = 2**16, 2**25
-#: Variables up to which this is done for every setting of the auxiliaries rather than from a certificate.
-SMALL = 12
+#: Variables of which all states are visited, and products that this may evaluate.
+MOST_VARIABLES, MOST_PRODUCTS = 16, 2**25
 
 CLAIMS = ("quadratic", "ground-energy", "ground-states", "even-multiplicity", "energies", "one-to-one")
+
+
+@dataclass(frozen=True)
+class Item:
+    """One thing looked at: `result` is "accepted", "rejected" or "not re-checked"."""
+
+    name: str
+    result: str
+    detail: str
+
+
+@dataclass(frozen=True)
+class AuditReport:
+    """What the audit came to."""
+
+    items: tuple[Item, ...]
+
+    @property
+    def rejected(self) -> bool:
+        """Whether anything was found wrong."""
+        return any(item.result == "rejected" for item in self.items)
+
+    @property
+    def accepted(self) -> bool:
+        """Whether every claim that the verdict settles was re-checked and found right."""
+        return all(item.result == "accepted" for item in self.items)
+
+    @property
+    def exit_code(self) -> int:
+        """0 all accepted, 1 something rejected, 3 something not re-checked."""
+        return 1 if self.rejected else 0 if self.accepted else 3
+
+    def __str__(self) -> str:
+        return "\n".join(f"{item.name:<18} {item.result:<15} {item.detail}".rstrip() for item in self.items)
 
 
 def audit(verdict: Mapping[str, Any], source: Mapping[str, Any], model: Mapping[str, Any]) -> AuditReport:
@@ -57,323 +87,274 @@ def audit(verdict: Mapping[str, Any], source: Mapping[str, Any], model: Mapping[
         A document lacks a field or holds a wrong type.
     """
     try:
-        return _Audit(verdict, read_model(source), read_model(model), model.get("trail") or []).report()
+        E, F, items = read_model(source), read_model(model), []
+        for name, one in (("source digest", E), ("model digest", F)):
+            good = digest(one) == verdict[name.replace(" ", "_")]
+            items.append(Item(name, *(_ACCEPTED if good else ("rejected", "the document holds another function"))))
+        if all(item.result == "accepted" for item in items):
+            items += _Audit(verdict, E, F, model.get("trail") or []).items
+        return AuditReport(tuple(items))
     except TooLarge as limit:
         return AuditReport((Item("models", "not re-checked", str(limit)),))
-    except (KeyError, IndexError, TypeError, ValueError, AttributeError, ZeroDivisionError, RecursionError) as fault:
+    except (ArithmeticError, AttributeError, LookupError, RecursionError, TypeError, ValueError) as fault:
         if isinstance(fault, InputError):
             raise
         raise InputError(f"a document is not of the expected form: {type(fault).__name__} {fault}") from None
 
 
-class _Audit:
-    """One verdict against its two models; `known` collects what is established, claim by claim."""
+_ACCEPTED = ("accepted", "recomputed")
 
-    def __init__(self, verdict: Mapping[str, Any], source: Model, model: Model, trail: Sequence[Any]) -> None:
-        self.verdict, self.source, self.model, self.trail = verdict, source, model, trail
+
+class _Audit:
+    """One verdict against its two models; `known` collects what is established, claim by claim, and how."""
+
+    def __init__(self, verdict: Mapping[str, Any], source: Model, model: Model, trail: Any) -> None:
+        self.verdict, self.source, self.model = verdict, source, model
         self.items: list[Item] = []
-        self.known: dict[str, bool] = {}
-        self.why: dict[str, str] = {}
+        self.known: dict[str, tuple[bool, str]] = {}
         self.limits: list[str] = []
         self.scale, self.shift = rational(verdict["scale"]), rational(verdict["shift"])
-        first = next((piece for piece in verdict["evidence"] if piece["kind"] == "correspondence"), None)
-        if first is None:
-            raise InputError("the verdict does not say which variables are auxiliaries", "/evidence")
-        self.origin: Mapping[str, Any] = first["origin"] or {}
-        self.place = {label: position for position, label in enumerate(model.labels)}
-        self.auxiliaries = sorted({self.place[label] for label in first["auxiliaries"]})
-        inside = set(self.auxiliaries)
-        self.originals = [position for position in range(len(model.labels)) if position not in inside]
-        self.link = {label: self._linked(label) for label in source.labels}
-        targets = [column for column, _, _ in self.link.values() if column is not None]
-        if set(targets) != set(self.originals):
-            raise InputError("the originals of the model are not those that the source's variables became")
-        self.represents_all = len(targets) == len(set(targets)) == len(source.labels)
-
-    def report(self) -> AuditReport:
-        """Run every check and judge the claims."""
-        self._digests()
-        self.learn("quadratic", all(len(key) <= 2 for key in self.model.terms), "locality read off the terms")
-        self._declared()
-        self._projection()
-        self._exhaustion()
+        self.evidence: list[Mapping[str, Any]] = list(verdict["evidence"])
+        kinds = {piece["kind"] for piece in self.evidence}
+        self.sought = verdict["scale_from"] != "declared" and not kinds.isdisjoint(("projection", "exhaustion"))
+        self._correspond()
+        self._declared(trail)
+        self.learn("quadratic", all(len(key) <= 2 for key in model.terms), "locality read off the terms")
+        pieces = [piece for piece in self.evidence if piece["kind"] == "projection"]
+        proofs = [proof for piece in pieces for proof in self._repeated(piece)]
+        if any(self.open(name) for name in CLAIMS) or self.sought:
+            self._visit(proofs[0] if proofs else None)
+        if set(verdict["claims"]) != set(CLAIMS):
+            raise InputError(f"the claims are not {', '.join(CLAIMS)}", "/claims")
         for name in CLAIMS:
-            self._judge(name, self.verdict["claims"][name])
-        return AuditReport(tuple(self.items))
+            self._judge(name, verdict["claims"][name])
 
     def note(self, name: str, good: bool, detail: str) -> None:
         """Add an item."""
         self.items.append(Item(name, "accepted" if good else "rejected", detail))
 
     def learn(self, name: str, value: bool, why: str) -> None:
-        """Establish a claim, or its negation."""
-        self.known.setdefault(name, value)
-        self.why.setdefault(name, why)
+        """Establish a claim, or its negation; two ways must agree."""
+        if self.known.setdefault(name, (value, why))[0] != value:
+            self.note(name, False, f"{self.known[name][1]} and {why} disagree")
 
-    def _linked(self, label: str) -> tuple[int | None, Fraction, Fraction]:
-        """A source variable as p + q * (model variable): its column (None: fixed), p and q."""
-        image = self.origin.get(label, label)
-        if not isinstance(image, (str, list)):
-            if image not in values_of(self.source.domain):
-                raise InputError(f"{label!r} is fixed at {image!r}", "/evidence")
+    def open(self, name: str) -> bool:
+        """Whether the verdict settles a claim that is not established so far."""
+        return name not in self.known and self.verdict["claims"][name]["status"] in ("proved", "refuted")
+
+    # --- which variable is which ---
+
+    def _correspond(self) -> None:
+        first = next((piece for piece in self.evidence if piece["kind"] == "correspondence"), None)
+        if first is None:
+            raise InputError("the verdict does not say which variables are auxiliaries", "/evidence")
+        self.place = {label: position for position, label in enumerate(self.model.labels)}
+        self.auxiliaries = sorted({self.place[label] for label in first["auxiliaries"]})
+        originals = set(range(len(self.place))).difference(self.auxiliaries)
+        self.link = {label: self._linked((first["origin"] or {}).get(label, label)) for label in self.source.labels}
+        columns = [column for column, _, _ in self.link.values() if column is not None]
+        if set(columns) != originals:
+            raise InputError("the originals of the model are not those that the source's variables became")
+        #: Whether every source state is a state of the model: no variable fixed, no two merged.
+        self.whole = len(columns) == len(originals) == len(self.link)
+
+    def _linked(self, image: Any) -> tuple[int | None, Fraction, Fraction]:
+        """A source variable as p + q * (model variable): that one's position (None: fixed), p and q."""
+        spin = self.source.domain == "spin"
+        if type(image) is int and image in values_of(self.source.domain):
             return None, Fraction(image), Fraction(0)
         p, q = Fraction(0), Fraction(1)
         if self.source.domain != self.model.domain:
             sign = -1 if self.model.convention == "1-2x" else 1
-            p, q = (
-                (Fraction(-sign), Fraction(2 * sign))
-                if self.source.domain == "spin"
-                else (
-                    Fraction(1, 2),
-                    Fraction(sign, 2),
-                )
-            )
-        if isinstance(image, list):
-            p, q, image = (-p, -q, image[1]) if self.source.domain == "spin" else (1 - p, -q, image[1])
+            p, q = (Fraction(-sign), Fraction(2 * sign)) if spin else (Fraction(1, 2), Fraction(sign, 2))
+        if isinstance(image, list) and image[:1] == ["not"]:
+            (_, image), p, q = image, (0 if spin else 1) - p, -q
         return self.place[image], p, q
 
-    def _digests(self) -> None:
-        for name, model in (("source", self.source), ("model", self.model)):
-            good = digest(model) == self.verdict[f"{name}_digest"]
-            self.note(f"{name} digest", good, "recomputed" if good else "the document is another function")
+    def _bits(self, state: Mapping[str, Any]) -> dict[int, int] | None:
+        """Bits of the originals for a source state, None where the model has no such state."""
+        found: dict[int, int] = {}
+        low = values_of(self.model.domain)[0]
+        for label, (column, p, q) in self.link.items():
+            value = self.source.value(state, label)
+            bit = int(p + q * low != value)
+            if found.setdefault(-1 if column is None else column, 0 if column is None else bit) != bit:
+                return None
+        found.pop(-1, None)
+        return found
 
-    def _declared(self) -> None:
-        """Scale and shift against the trail of the reduced document, where it has one."""
+    # --- scale and shift ---
+
+    def _declared(self, trail: Any) -> None:
+        """Scale and shift against the trail of the reduced document, where it declares them."""
         if self.scale <= 0:
             self.note("scale", False, "the scale is not positive")
-        steps = list(self.trail[1:])
-        first = self.trail[0] if self.trail else {}
-        scale, shift = rational(first.get("scale", 1)), rational(first.get("shift", 0))
-        if not steps and "scale" not in first and "shift" not in first:
+        scale, shift = Fraction(1), Fraction(0)
+        for step in trail:
+            factor = rational(step.get("scale", 1))
+            scale, shift = scale * factor, shift * factor + rational(step.get("shift", 0))
+        if any("scale" in step or "shift" in step for step in trail):
+            good = (self.scale, self.shift) == (scale, shift) and self.verdict["scale_from"] == "declared"
+            self.note("scale", good, "as the trail declares" if good else f"the trail declares {scale} and {shift}")
+
+    def _scale(self, alpha: Fraction | None, energy: Any, level: Any) -> None:
+        """A scale that was not declared is the one that holds everywhere, or 1 and 0."""
+        if not self.sought:
             return
-        for step in steps:
-            scale, shift = scale * rational(step["scale"]), shift * rational(step["scale"]) + rational(step["shift"])
-        good = (self.scale, self.shift) == (scale, shift) and self.verdict["scale_from"] == "declared"
-        self.note("scale", good, "as the trail declares" if good else f"the trail declares {scale} and {shift}")
+        self.sought = False
+        wanted, origin = ((1, 0), "default") if alpha is None else ((alpha, level - alpha * energy), "found")
+        good = (self.scale, self.shift) == wanted and self.verdict["scale_from"] == origin
+        self.note("scale", good, "sought again" if good else f"{wanted[0]} and {wanted[1]} ({origin}) would be right")
+
+    # --- the certificate ---
 
     def _energy(self) -> Poly:
-        """E over the originals of the model, as a polynomial in positions of the model."""
-        E: Poly = {}
-        split = {i for i, label in enumerate(self.source.labels) if self.link[label][1] and self.link[label][2]}
-        if sum(1 << min(len(split.intersection(key)), 60) for key in self.source.terms) > MOST_WORK:
+        """E over the originals of the model, as a polynomial in their positions."""
+        E: Poly = {(): self.source.constant}
+        split = {label for label, (_, p, q) in self.link.items() if p and q}
+        sizes = (sum(self.source.labels[i] in split for i in key) for key in self.source.terms)
+        if sum(2 ** min(size, 60) for size in sizes) > MOST_PRODUCTS:
             raise TooLarge("a source whose change of variables would expand too far")
         for key, weight in self.source.terms.items():
             term: Poly = {(): weight * self.source.resolution}
             for position in key:
                 column, p, q = self.link[self.source.labels[position]]
-                factor: Poly = {(): p} if p else {}
-                if column is not None:
-                    factor[(column,)] = q
-                grown: Poly = {}
-                add_product(grown, term, factor, self.model.domain)
-                term = grown
+                term = times(term, {(): p} if column is None else {(): p, (column,): q}, self.model.domain)
             for one, value in term.items():
                 add(E, one, value)
-        add(E, (), self.source.constant)
-        return E
+        return {key: value for key, value in E.items() if value}
 
-    def _projection(self) -> None:
-        for piece in self.verdict["evidence"]:
-            if piece["kind"] != "projection":
-                continue
-            certificate = piece["certificate"]
-            try:
-                if list(certificate.get("auxiliaries", self.auxiliaries)) != self.auxiliaries:
-                    raise Rejected("it speaks of other auxiliaries")
-                size = len(self.model.labels)
-                proof = follow(certificate, self.model.terms, self.model.domain, size, self.auxiliaries)
-                stated = certificate["multiplicity"]
-                if stated is not None and (proof.uneven or proof.unclear or stated != proof.multiplicity):
-                    raise Rejected(f"the multiplicity is not {stated} everywhere")
-                P: Poly = {key: value * self.model.resolution for key, value in proof.gained.items()}
-                add(P, (), self.model.constant)
-                E = self._energy()
-            except Rejected as fault:
-                self.note("projection", False, str(fault))
-                continue
-            except TooLarge as limit:
-                self.limits.append(f"projection: {limit}")
-                continue
-            self.note("projection", True, f"every step repeated, P has {len(P)} terms")
-            self._compare(P, E)
-            self._multiplicity(proof, "the certificate")
-            self._visited(P, E, proof)
-
-    def _compare(self, P: Poly, E: Poly) -> None:
-        """What P and E as polynomials say of the claims and of the scale."""
-        why = "P and E compared term by term"
-        found = related(P, E)
-        same = {key: value for key, value in scaled(E, self.scale, self.shift).items() if value} == P
-        self._scale(found, constant=not any(E))
-        self.learn("energies", same and self.represents_all, why)
-        if not self.represents_all:
-            return
-        if same:
-            self.learn("ground-energy", True, why)
-        if found is not None:
+    def _repeated(self, piece: Mapping[str, Any]) -> list[Proof]:
+        """Repeat a certificate, and compare its P with E."""
+        certificate, model = piece["certificate"], self.model
+        try:
+            if list(certificate.get("auxiliaries", self.auxiliaries)) != self.auxiliaries:
+                raise Rejected("it speaks of other auxiliaries")
+            proof = follow(certificate, model.terms, model.domain, len(model.labels), self.auxiliaries)
+            uniform = None if proof.uneven or proof.unclear else proof.multiplicity
+            if certificate["multiplicity"] not in (None, uniform):
+                raise Rejected(f"the multiplicity is not {certificate['multiplicity']} everywhere")
+            P, E = {key: value * model.resolution for key, value in proof.gained.items()}, self._energy()
+        except Rejected as fault:
+            self.note("projection", False, str(fault))
+            return []
+        except TooLarge as limit:
+            self.limits.append(f"projection: {limit}")
+            return []
+        add(P, (), model.constant)
+        self.note("projection", True, f"every step repeated, P has {len(P)} terms")
+        alpha = _ratio([(E.get(key, 0), P.get(key, 0)) for key in E.keys() | P.keys() if key])
+        energy, level, why = E.get((), 0), P.get((), 0), "P and E compared term by term"
+        self._scale(alpha, energy, level)
+        flat = not any(E)  # then any scale does
+        same = alpha is not None and (flat or alpha == self.scale) and level == self.scale * energy + self.shift
+        self.learn("energies", same and self.whole, why)
+        if self.whole and alpha is not None:
             self.learn("ground-states", True, why)
-            if found[0] == self.scale or not any(E):
+            if flat or alpha == self.scale:
                 self.learn("ground-energy", same, why)
+            if uniform is not None:
+                self.learn("even-multiplicity", True, "m is the same everywhere by the certificate")
+        witness = self.verdict["claims"]["one-to-one"]["witness"]
+        bits = self._bits(witness["state"]) if witness is not None and not proof.unclear else None
+        if not self.known["energies"][0] or uniform is not None:
+            self.learn("one-to-one", self.known["energies"][0] and uniform == 1, "the certificate")
+        elif bits is not None and proof.multiplicity_at(bits) != 1:
+            self.learn("one-to-one", False, "m at the witness, by the certificate")
+        return [proof]
 
-    def _scale(self, found: tuple[Fraction, Fraction] | None, constant: bool) -> None:
-        """A scale that was not declared is the one that holds everywhere, or 1 and 0."""
-        sought = any(piece["kind"] in ("projection", "exhaustion") for piece in self.verdict["evidence"])
-        if self.verdict["scale_from"] == "declared" or not sought:
+    # --- the definitions ---
+
+    def _visit(self, proof: Proof | None) -> None:
+        """Every claim by its definition, where all states are few; P by brute force, or from the certificate."""
+        model, n, size = self.model, len(self.source.labels), len(self.model.labels)
+        direct = size <= MOST_VARIABLES and (len(model.terms) << size) <= MOST_PRODUCTS
+        P_terms: Poly = model.terms if proof is None else proof.gained
+        much = n > MOST_VARIABLES or (len(self.source.terms) + len(P_terms) << n) > MOST_PRODUCTS
+        if much or not (direct or proof):
+            self.limits.append(f"exhaustion: 2^{size} settings of the model; those of {MOST_VARIABLES} are visited")
             return
-        wanted = (Fraction(1), Fraction(0)) if found is None else found
-        origin = "default" if found is None else "found"
-        good = (self.scale, self.shift) == wanted and self.verdict["scale_from"] == origin
-        self.note("scale", good, "sought again" if good else f"{wanted[0]} and {wanted[1]} ({origin}) would be right")
-
-    def _multiplicity(self, proof: Proof, why: str) -> None:
-        uniform = None if proof.uneven or proof.unclear else proof.multiplicity
-        if self.known.get("ground-states") and uniform is not None:
-            self.learn("even-multiplicity", True, why)
-        if not self.known["energies"]:
-            self.learn("one-to-one", False, why)
-        elif uniform is not None:
-            self.learn("one-to-one", uniform == 1, why)
-        else:
-            witness = self.verdict["claims"]["one-to-one"]["witness"]
-            if witness is not None and not proof.unclear:
-                bits = self._bits(witness["state"])
-                if bits is not None and multiplicity_at(proof, bits) != 1:
-                    self.learn("one-to-one", False, f"{why}, at the witness")
-
-    def _bits(self, state: Mapping[str, int]) -> dict[int, int] | None:
-        """Bits of the originals by position for a source state, None where the model has no such state."""
-        found: dict[int, int] = {}
-        low = values_of(self.model.domain)[0]
-        for label in self.source.labels:
-            column, p, q = self.link[label]
-            if state[label] not in values_of(self.source.domain):
-                raise InputError(f"a witness gives {label!r} the value {state[label]!r}")
-            if column is None:
-                if p != state[label]:
-                    return None
-                continue
-            bit = 0 if p + q * low == state[label] else 1
-            if found.setdefault(column, bit) != bit:
-                return None
-        return found
-
-    def _visited(self, P: Poly, E: Poly, proof: Proof) -> None:
-        """Every claim by the definitions, from P and m as the certificate gives them, where the originals are few."""
-        n = len(self.originals)
-        if not self.represents_all or 2**n > MOST_STATES or len(self.auxiliaries) + n <= SMALL:
-            return
-        domain = self.model.domain
-        E_all, P_all = (tabulated(poly, self.originals, domain) for poly in (E, P))
-        states = list(settings(n))
+        E: dict[Key, Fraction] = {}
+        P: dict[Key, Fraction] = {}
         m: dict[Key, int] = {}
-        if not proof.unclear:
-            low_E, low_P = min(E_all), min(P_all)
-            ground = [x for x, e, p in zip(states, E_all, P_all, strict=True) if e == low_E or p == low_P]
-            if len(ground) * (len(proof.uneven) + len(proof.known)) <= MOST_WORK // 8:
-                for x in ground:
-                    m[x] = multiplicity_at(proof, dict(zip(self.originals, x, strict=True)))
-        self._define(dict(zip(states, E_all, strict=True)), dict(zip(states, P_all, strict=True)), m)
-
-    def _exhaustion(self) -> None:
-        """Every claim by the definitions, where all states are few."""
-        n, size = len(self.source.labels), len(self.model.labels)
-        work = (len(self.model.terms) << size) + (len(self.source.terms) << n) if max(n, size) < 40 else MOST_WORK + 1
-        if 2 ** min(size, 99) > MOST_STATES or 2 ** min(n, 99) > MOST_STATES or work > MOST_WORK:
-            self.limits.append(f"exhaustion: 2^{size} settings of the model, {MOST_STATES} are visited")
-            return
-        E, P, m = {}, {}, {}
-        bits_of = list(product(values_of(self.model.domain), repeat=len(self.auxiliaries)))
-        low_high = values_of(self.model.domain)
+        bits_of: dict[Key, dict[int, int]] = {}
+        values, full = values_of(model.domain), [0] * size
         for state in product(values_of(self.source.domain), repeat=n):
-            at = dict(zip(self.source.labels, state, strict=True))
-            E[state] = self.source.energy(at)
-            bits = self._bits(at)
+            E[state] = self.source.constant + self.source.resolution * value_at(self.source.terms, state)
+            bits = self._bits(dict(zip(self.source.labels, state, strict=True)))
             if bits is None:
                 continue
-            full = [0] * size
+            bits_of[state] = bits
             for column, bit in bits.items():
-                full[column] = low_high[bit]
+                full[column] = values[bit]
             energies = []
-            for setting in bits_of:
-                for position, value in zip(self.auxiliaries, setting, strict=True):
+            for setting in product(values, repeat=len(self.auxiliaries)) if direct else [()]:
+                for position, value in zip(self.auxiliaries, setting, strict=direct):
                     full[position] = value
-                energies.append(value_at(self.model.terms, full))
-            least = min(energies)
-            P[state], m[state] = self.model.constant + least * self.model.resolution, energies.count(least)
-        self._define(E, P, m)
-
-    def _define(self, E: dict[Key, Fraction], P: dict[Key, Fraction], m: dict[Key, int]) -> None:
-        """The claims by their definitions; what the certificate gave must agree."""
-        pairs = sorted({(E[x], P[x]) for x in P})
-        found = relation_of(pairs)
-        if not any(item.name == "scale" for item in self.items):
-            self._scale(found, constant=pairs[0][0] == pairs[-1][0])
-        low_E, low_P = min(E.values()), min(P.values())
-        ground = {x for x in E if E[x] == low_E}
-        states = ground == {x for x in P if P[x] == low_P}
+                energies.append(value_at(model.terms if direct else P_terms, full))
+            P[state] = model.constant + model.resolution * min(energies)
+            m[state] = energies.count(min(energies)) if direct else 0
+        first, low_E, low_P = next(iter(P)), min(E.values()), min(P.values())
+        self._scale(_ratio([(E[x] - E[first], P[x] - P[first]) for x in P]), E[first], P[first])
+        ground, why = [x for x in E if E[x] == low_E], f"all {len(E)} states visited"
+        states = ground == [x for x in E if P.get(x) == low_P]
         same = len(P) == len(E) and all(P[x] == self.scale * E[x] + self.shift for x in E)
-        lowest = low_P == self.scale * low_E + self.shift
-        truth = {"ground-energy": lowest, "ground-states": states, "energies": same}
-        if not states or ground <= set(m):
-            truth["even-multiplicity"] = states and len({m[x] for x in ground}) == 1
-        if not same or len(m) == len(P):
-            truth["one-to-one"] = same and set(m.values()) == {1}
-        for name, value in truth.items():
-            if self.known.get(name, value) != value:
-                self.note(name, False, "the certificate and all states disagree")
-            self.known[name], self.why[name] = value, f"all {len(E)} states visited"
+        self.learn("ground-energy", low_P == self.scale * low_E + self.shift, why)
+        self.learn("ground-states", states, why)
+        self.learn("energies", same, why)
+        if not same or direct:
+            self.learn("one-to-one", same and set(m.values()) == {1}, why)
+        if direct or not states:
+            self.learn("even-multiplicity", states and len({m[x] for x in ground}) == 1, why)
+        elif proof is not None and not proof.unclear and len(ground) * (len(proof.rules) + 1) <= MOST_PRODUCTS >> 3:
+            counts = {proof.multiplicity_at(bits_of[x]) for x in ground}
+            self.learn("even-multiplicity", len(counts) == 1, f"{why}, m by the certificate")
+
+    # --- the verdict ---
 
     def _judge(self, name: str, claim: Mapping[str, Any]) -> None:
         """Accept or reject one claim, its witnesses first."""
         status = claim["status"]
-        for kind in ("witness", "rival"):
-            fault = self._witness(claim[kind]) if claim[kind] is not None else None
-            if fault:
-                self.note(name, False, f"{kind}: {fault}")
-                return
-        if status in ("open", "tested"):
-            if status == "tested":
-                self.items.append(Item(name, "not re-checked", "tested on some states; the verdict claims no more"))
-            return
-        if status not in ("proved", "refuted"):
+        faults = [self._witness(claim[kind]) for kind in ("witness", "rival") if claim[kind] is not None]
+        if any(faults):
+            self.note(name, False, f"the witness is wrong: {'; '.join(filter(None, faults))}")
+        elif status == "tested":
+            self.items.append(Item(name, "not re-checked", "tested on some states; the verdict claims no more"))
+        elif status not in ("proved", "refuted", "open"):
             self.note(name, False, f"no such status: {str(status)[:20]}")
-        elif name not in self.known and status == "refuted" and self._shown(name, claim):
+        elif name in self.known and status != "open":
+            value, why = self.known[name]
+            good = value == (status == "proved")
+            self.note(name, good, f"{status}: {why}" if good else f"not so: {why}")
+        elif status == "refuted" and self._shown(name, claim["witness"]):
             self.note(name, True, "refuted: the witness alone shows it")
-        elif name not in self.known:
-            self.items.append(
-                Item(name, "not re-checked", "; ".join(self.limits) or "no evidence that is re-checked")
-            )
-        else:
-            good = self.known[name] == (status == "proved")
-            self.note(name, good, f"{status}: {self.why[name]}" if good else f"not so: {self.why[name]}")
+        elif status != "open":
+            self.items.append(Item(name, "not re-checked", "; ".join(self.limits) or "no evidence to repeat"))
 
     def _witness(self, witness: Mapping[str, Any]) -> str | None:
         """What is wrong with a witness: its energies are evaluated again."""
-        state = witness["state"]
-        if self.source.energy(state) != rational(witness["source_energy"]):
-            return "E of the state is another"
-        bits = self._bits(state)
-        if (bits is None) != (witness["model_energy"] is None):
-            return "whether the model has the state is told wrongly"
-        if bits is None:
-            return None
-        values = values_of(self.model.domain)
-        full = {self.model.labels[column]: values[bit] for column, bit in bits.items()}
+        x = [self.source.value(witness["state"], label) for label in self.source.labels]
+        E = self.source.constant + self.source.resolution * value_at(self.source.terms, x)
+        if rational(witness["source_energy"]) != E:
+            return f"E of the state is {E}"
+        bits = self._bits(witness["state"])
+        if bits is None or witness["model_energy"] is None:
+            return None if bits is witness["model_energy"] else "whether the model has the state is told wrongly"
+        full = [values_of(self.model.domain)[bits.get(position, 0)] for position in range(len(self.model.labels))]
         for position in self.auxiliaries:
-            label = self.model.labels[position]
-            if witness["auxiliaries"][label] not in values:
-                return "an auxiliary has no value of the domain"
-            full[label] = witness["auxiliaries"][label]
-        if self.model.energy(full) != rational(witness["model_energy"]):
-            return "F of the state is another"
-        return None
+            full[position] = self.model.value(witness["auxiliaries"], self.model.labels[position])
+        F = self.model.constant + self.model.resolution * value_at(self.model.terms, full)
+        return None if rational(witness["model_energy"]) == F else f"F of the state is {F}"
 
-    def _shown(self, name: str, claim: Mapping[str, Any]) -> bool:
-        """Whether a witness refutes without any minimum: F(x, a) < alpha E(x) + beta, or no model state at all."""
-        witness = claim["witness"]
+    def _shown(self, name: str, witness: Mapping[str, Any] | None) -> bool:
+        """Whether a witness refutes without any minimum: F(x, a) < scale E(x) + shift, or no model state at all."""
         if name not in ("energies", "one-to-one") or witness is None:
             return False
-        if witness["model_energy"] is None:
-            return True
         bound = self.scale * rational(witness["source_energy"]) + self.shift
-        return rational(witness["model_energy"]) < bound
+        return witness["model_energy"] is None or rational(witness["model_energy"]) < bound
+
+
+def _ratio(pairs: list[tuple[Any, Any]]) -> Fraction | None:
+    """The alpha > 0 with ``second = alpha * first`` for all pairs; 1 where all are 0."""
+    alpha = next((Fraction(second) / first for first, second in pairs if first), Fraction(1))
+    return alpha if alpha > 0 and all(second == alpha * first for first, second in pairs) else None
