@@ -83,7 +83,7 @@ def interpolated(table: Sequence[Any], classes: Sequence[Sequence[int]], domain:
     sizes = [len(one) for one in classes]
     found = dict(zip(product(*(range(d + 1) for d in sizes)), table, strict=True))
     for axis, d in enumerate(sizes):  # the coefficient of j chosen variables, from the values at k set bits
-        work.spend(len(found) * (d + 1))
+        work.spend(len(found) * (d + 1) + (d + 1) ** 3)
         weight = [[_weight(domain, d, j, k) for k in range(d + 1)] for j in range(d + 1)]
         fresh: dict[Key, Any] = {}
         for ks, value in found.items():

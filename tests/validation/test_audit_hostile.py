@@ -223,3 +223,16 @@ def test_the_documents_hold_every_kind_of_step_that_the_checks_rest_on(judged):
     assert statuses >= {"proved", "refuted"}
     assert all(audit(*documents).accepted for documents in judged)
     assert any(Fraction(verdict["scale"]) == 2 for verdict, _, _ in judged)
+
+
+def test_a_witness_shows_nothing_under_a_scale_that_nobody_declared_or_found(judged, by_hand):
+    chain = {(f"v{i}", f"v{i + 1}"): -1 for i in range(24)}
+    made = Reduction(Hamiltonian(chain, "spin"), 2 * Hamiltonian(chain, "spin"), [])
+    verdict = by_hand["written"](check(made))
+    assert Fraction(verdict["scale"]) == 2
+    state = {f"v{i}": 1 for i in range(25)}
+    witness = {"state": state, "auxiliaries": {}, "source_energy": "-24", "model_energy": "-48", "multiplicity": 1}
+    verdict["claims"]["energies"].update(status="refuted", witness=witness)
+    verdict.update(scale="1", shift="0", scale_from="default", evidence=verdict["evidence"][:1])
+    report = audit(verdict, by_hand["document"](made.source), by_hand["document"](made.model))
+    assert "accepted" not in {item.result for item in report.items if item.name == "energies"}
