@@ -19,7 +19,7 @@ from hubokit.exchange.verdict_document import unpacked
 from hubokit.validation.audit import audit
 
 OUTCOMES = {
-    0: "accepted: everything that the verdict asserts was re-checked",
+    0: "accepted: every claim of the verdict was re-checked (its figures and lists were not)",
     1: "rejected: the verdict asserts what does not hold, or is about other models",
     3: "not decided: some of it was not re-checked",
 }
