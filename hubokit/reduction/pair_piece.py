@@ -29,24 +29,22 @@ class PairPiece:
     ----------
     plan : PairCoverPlan
         Pairs, factors and penalties.
+    method : str
+        Name for the trail.
     """
 
     plan: PairCoverPlan
-
-    @property
-    def method(self) -> str:
-        """Name for the trail."""
-        return METHOD
+    method: str = METHOD
 
     @property
     def auxiliaries(self) -> int:
-        """One a pair."""
+        """One a pair, and one more a product variable."""
         return self.plan.auxiliaries
 
     def rows(self) -> list[dict[str, Any]]:
         """Rows for the trail: one for each locality, the auxiliaries with the first."""
         rows = [
-            {"locality": locality, "method": METHOD, "terms": int(mask.sum()), "auxiliaries": 0}
+            {"locality": locality, "method": self.method, "terms": int(mask.sum()), "auxiliaries": 0}
             for locality, mask in sorted(self.plan.covered.items())
             if mask.any()
         ]

@@ -6,7 +6,8 @@ An auxiliary stands for something that two existing variables u and v (its *oper
   s_u s_v = 1 + s_u + s_v - 2 y, which is s_u s_v = 1 - 2x_u - 2x_v + 4x_y in the booleans x = (1 - s) / 2. The
   identity speaks of spins alone and holds under either convention;
 - a *product variable* p (spins only) is s_u s_v itself, made quadratic by the pair variable of the same operands,
-  its *companion*. It is what pairs of pairs of spins are made of; terms of up to four spins need none.
+  its *companion*. It is what pairs of pairs of spins are made of; terms of up to four spins need none, though they
+  may take fewer couplers with them (product_spins.py).
 
 A term is rewritten as the product of two *factors*. For booleans a factor is a variable. For spins the factor of a
 pair variable is the affine form above, and that of any other variable the variable, so that a product of four spins

@@ -6,7 +6,10 @@ Ways are
   one term alone, and every mix, or the best improved one locality at a time;
 - *four-variable groups* (groups.py) and *symmetric* parts (symmetric.py), with the best mix for what is left over;
 - *common parts* of boolean terms (common_part.py), then the best of term by term and a pair cover for the rest;
-- *pair cover* (covers.py): pairs chosen globally.
+- *pair cover* (covers.py): pairs chosen globally;
+- *product spins* (product_spins.py): the same pairs of spins with a spin for their product. They
+  take more auxiliaries than the pair cover and a wider range than term by term (of the models tried), so they are
+  priced unasked only where couplers are preferred.
 
 Prices are exact counts and coefficients of the model that would come out, so the choice is never dearer in the
 preferred figure than any single family. Limits count steps, never seconds: the same model gives the same plan
@@ -26,17 +29,23 @@ from hubokit.reduction.gadgets.table import FAMILIES, family
 from hubokit.reduction.groups import METHOD as GROUPS
 from hubokit.reduction.pair_piece import METHOD as PAIR_COVER
 from hubokit.reduction.plans import Plan, Question, single_choice
+from hubokit.reduction.product_spins import METHOD as PRODUCT_SPINS
 from hubokit.reduction.symmetric import LARGEST
 from hubokit.reduction.symmetric import METHOD as SYMMETRIC
 from hubokit.reduction.ways import (
     TERM_BY_TERM,
     best_gap,
     common_part_plans,
+    cover_plans,
     group_plans,
-    pair_plans,
+    pair_covers,
+    product_spin_plans,
     symmetric_plans,
     term_plans,
 )
+
+PARTIAL = (GROUPS, SYMMETRIC, COMMON_PART, PAIR_COVER, PRODUCT_SPINS)
+"""Ways that serve some terms and leave others to term by term."""
 
 
 @dataclass(frozen=True)
@@ -73,7 +82,7 @@ def methods() -> list[str]:
     >>> methods()[:2]
     ['auto', 'negative-monomial']
     """
-    return ["auto", *(one.name for one in FAMILIES), TERM_BY_TERM, GROUPS, SYMMETRIC, COMMON_PART, PAIR_COVER]
+    return ["auto", *(one.name for one in FAMILIES), TERM_BY_TERM, *PARTIAL]
 
 
 def planned(question: Question, method: str = "auto") -> Planned:
@@ -97,12 +106,16 @@ def planned(question: Question, method: str = "auto") -> Planned:
         plans += symmetric_plans(question, largest)
     if method in ("auto", COMMON_PART):
         plans += _noted(common_part_plans(question), COMMON_PART, others)
-    if method in ("auto", PAIR_COVER):
-        plans += _noted(pair_plans(question, method), PAIR_COVER, others)
-    if others and method in (GROUPS, COMMON_PART, PAIR_COVER):
+    if method in ("auto", PAIR_COVER, PRODUCT_SPINS):
+        covers = pair_covers(question, method)
+        if method != PRODUCT_SPINS:
+            plans += _noted(cover_plans(question, covers), PAIR_COVER, others)
+        if method == PRODUCT_SPINS or (method == "auto" and question.prefer == "couplers"):
+            plans += _noted(product_spin_plans(question, covers), PRODUCT_SPINS, others)
+    if others and method in PARTIAL:
         raise LimitError(f'{others[0]["reason"]}; method "auto" takes another way', "method")
     if not plans:
-        name = method if method not in (GROUPS, SYMMETRIC, COMMON_PART, PAIR_COVER) else ""
+        name = method if method not in PARTIAL else ""
         if name:
             family(name)
         plans = [best_gap(question, single_choice(question, name), name or TERM_BY_TERM)]

@@ -1,10 +1,11 @@
 """The ways of reducing a model, each as priced plans.
 
-Term by term, groups, symmetric parts, common parts, pair covers.
+Term by term, groups, symmetric parts, common parts, pair covers, product spins.
 """
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import replace
 from functools import partial
 from itertools import product
@@ -15,13 +16,15 @@ import numpy as np
 from hubokit.reduction.assembly import Choice, Price, term_pieces, work_of
 from hubokit.reduction.common_part import METHOD as COMMON_PART
 from hubokit.reduction.common_part import Shared, shared_parts
-from hubokit.reduction.covers import pair_cover_reduction
+from hubokit.reduction.covers import PairCoverPlan, pair_cover_reduction
 from hubokit.reduction.gadgets.table import FAMILIES, stand_in
 from hubokit.reduction.groups import METHOD as GROUPS
 from hubokit.reduction.groups import Taken, gathered, group_piece
 from hubokit.reduction.pair_piece import METHOD as PAIR_COVER
 from hubokit.reduction.pair_piece import PairPiece, lonely_terms, without
 from hubokit.reduction.plans import Built, Plan, Question, options_of, plan_of, single_choice, with_rest
+from hubokit.reduction.product_spins import METHOD as PRODUCT_SPINS
+from hubokit.reduction.product_spins import fewest_couplers, with_product_spins
 from hubokit.reduction.symmetric import METHOD as SYMMETRIC
 from hubokit.reduction.symmetric import symmetric_pieces
 from hubokit.reduction.tightening import tightened
@@ -171,27 +174,57 @@ def _with_common_parts(shared: Shared, rest: Plan) -> Built:
 
 def pair_plans(question: Question, method: str) -> list[Plan] | str:
     """Pair covers of all terms and of the short ones, with gadgets for the rest; or the work limit in the way."""
+    return cover_plans(question, pair_covers(question, method))
+
+
+def pair_covers(question: Question, method: str) -> list[PairCoverPlan] | str:
+    """The covers that are worth pricing, penalties from interval bounds; or the work limit in the way."""
     H = question.H
     if H.locality < 3:
         return []
     work = work_of(H)
-    if method != PAIR_COVER and question.prefer != "auxiliaries" and work > PAIR_COVER_LIMIT:
+    if method not in (PAIR_COVER, PRODUCT_SPINS) and question.prefer != "auxiliaries" and work > PAIR_COVER_LIMIT:
         return f"{work:,} members to cover; at most {PAIR_COVER_LIMIT:,} unless auxiliaries are preferred"
     longer = {block.locality: np.ones(len(block), bool) for block in H.blocks if block.locality > 4}
-    plans = []
+    found = []
     for left_out in ({}, longer) if longer else ({},):
-        plans += _covers(question, left_out, work <= PAIR_COVER_LIMIT)
-    return [min(plans, key=lambda plan: plan.price.figure(question.prefer))]
+        found += _covers(question, left_out, work <= PAIR_COVER_LIMIT)
+    return found
 
 
-def _covers(question: Question, left_out: Taken, every: bool) -> list[Plan]:
+def cover_plans(question: Question, covers: Sequence[PairCoverPlan] | str) -> list[Plan] | str:
+    """The best of the covers as pair covers, their penalties tightened; or the work limit in the way of covers."""
+    if isinstance(covers, str):
+        return covers
+    plans: list[Plan] = []
+    for cover in covers:
+        plans += with_rest(question, [PairPiece(tightened(cover))], dict(cover.covered), PAIR_COVER)
+    return plans and [min(plans, key=lambda plan: plan.price.figure(question.prefer))]
+
+
+def product_spin_plans(question: Question, covers: Sequence[PairCoverPlan] | str) -> list[Plan] | str:
+    """The best of the covers of a spin model with product spins; or the work limit in the way of covers."""
+    if question.H.domain != "spin":
+        return []
+    if isinstance(covers, str):
+        return covers
+    plans: list[Plan] = []
+    for cover in covers:
+        better = with_product_spins(cover, fewest_couplers(cover))
+        if better is not cover:
+            pieces = [PairPiece(tightened(better), PRODUCT_SPINS)]
+            plans += with_rest(question, pieces, dict(better.covered), PRODUCT_SPINS)
+    return plans and [min(plans, key=lambda plan: plan.price.figure(question.prefer))]
+
+
+def _covers(question: Question, left_out: Taken, every: bool) -> list[PairCoverPlan]:
     """The cover of all terms but those left out, and what becomes of it when lonely terms are left out too.
 
-    Where `every` is False only the last is priced. Beside them, where there are quartic terms, a cover whose search
+    Where `every` is False only the last is given. Beside them, where there are quartic terms, a cover whose search
     knows that each of these may keep a gadget of its own.
     """
     H = question.H
-    plans: list[Plan] = []
+    found: list[PairCoverPlan] = []
     start = left_out
     for last in (False, False, True):
         cover = pair_cover_reduction(
@@ -204,7 +237,7 @@ def _covers(question: Question, left_out: Taken, every: bool) -> list[Plan]:
         lonely = lonely_terms(cover)
         done = last or not any(mask.any() for mask in lonely.values())
         if done or every:
-            plans += with_rest(question, [PairPiece(tightened(cover))], dict(cover.covered), PAIR_COVER)
+            found.append(cover)
         if done:
             break
         left_out = {k: mask | left_out.get(k, np.zeros(len(mask), bool)) for k, mask in lonely.items()}
@@ -219,5 +252,5 @@ def _covers(question: Question, left_out: Taken, every: bool) -> list[Plan]:
             alone=free,
         )
         if cover.chosen.alone:
-            plans += with_rest(question, [PairPiece(tightened(cover))], dict(cover.covered), PAIR_COVER)
-    return plans
+            found.append(cover)
+    return found

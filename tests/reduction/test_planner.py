@@ -15,6 +15,7 @@ from hubokit.reduction import ways
 from hubokit.reduction.covers import PairCoverPlan, pair_cover_reduction
 from hubokit.reduction.gadgets.table import FAMILIES
 from hubokit.reduction.planner import methods, plan_table
+from hubokit.reduction.product_spins import METHOD as PRODUCT_SPINS
 from hubokit.reduction.reduce import PREFERENCES, reduce
 from hubokit.reduction.ways import (
     COMMON_PART,
@@ -59,7 +60,7 @@ STRUCTURED = {
     "common part, ties allowed": Hamiltonian({(*"abcd", other): -3 for other in "efgh"}, "boolean"),
     "three of four": Hamiltonian(dict.fromkeys(combinations("abcd", 3), 1), "spin"),
 }
-WAYS = (TERM_BY_TERM, GROUPS, SYMMETRIC, COMMON_PART, PAIR_COVER)
+WAYS = (TERM_BY_TERM, GROUPS, SYMMETRIC, COMMON_PART, PAIR_COVER, PRODUCT_SPINS)
 
 
 def covers_without_gadgets(H: Hamiltonian, *, alone: object = None, **given: Any) -> PairCoverPlan:
