@@ -71,7 +71,7 @@ def export(reduction: Reduction, place: Path, formats: Iterable[str]) -> tuple[d
                 continue
             name = stem + entry.suffixes[0]
             if len(model) > EXPORT_LIMIT:
-                left_out[name] = f"more than {EXPORT_LIMIT} terms; hubokit convert writes it"
+                left_out[name] = f"more than {EXPORT_LIMIT} terms; hubokit convert --lossy writes it"
                 continue
             other = "" if entry.domain in ("any", model.domain) else f" (in {entry.domain} variables)"
             try:
