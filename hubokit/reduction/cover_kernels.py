@@ -15,6 +15,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from hubokit.model import compiling
+
 COMPILED_FROM = 30_000
 """Work (steps times slots touched) from which a loop is compiled first; compiling costs about as much."""
 
@@ -25,10 +27,7 @@ Flags = NDArray[Any]
 @cache
 def compiled(function: Callable[..., Any]) -> Callable[..., Any]:
     """The function compiled by numba."""
-    import numba
-
-    twin: Callable[..., Any] = numba.njit(cache=True)(function)
-    return twin
+    return compiling.compiled(function)
 
 
 def kernel(function: Callable[..., Any], work: int) -> Callable[..., Any]:

@@ -125,8 +125,7 @@ class Neighbourhood:
         noun = "state" if len(self.balls) == 1 else "states"
         seen = "1 state" if self.states == 1 else f"{self.states:,} states"
         lines = [
-            f"{flips} around {len(self.balls)} {noun}: {seen} visited, "
-            f"highest centre {format_fraction(self.highest)}"
+            f"{flips} around {len(self.balls)} {noun}: {seen} visited, highest centre {format_fraction(self.highest)}"
         ]
         rows = [("distance", "states", "lowest", "at or below")]
         for distance in range(self.radius + 1):

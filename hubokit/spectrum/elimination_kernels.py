@@ -14,6 +14,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from hubokit.model.compiling import compiled
+
 COMPILED_FROM = 1 << 15
 """Tables from this size on are worked by compiled loops."""
 
@@ -74,8 +76,6 @@ def _apply(
 
 @cache
 def _compiled(name: str) -> Callable[..., None]:
-    import numba
-
     def add(table: Table, message: Table, high: Table, low: Table) -> None:
         width = len(low)
         for row in range(len(high)):
@@ -98,8 +98,7 @@ def _compiled(name: str) -> Callable[..., None]:
                 table[start + column] = min(table[start + column], message[offset + low[column]])
 
     loops: dict[str, Callable[..., None]] = {"add": add, "multiply": multiply, "lower": lower}
-    compiled: Callable[..., None] = numba.njit(nogil=True, cache=True)(loops[name])
-    return compiled
+    return compiled(loops[name], nogil=True)
 
 
 def transform(values: Table, domain: str) -> None:

@@ -14,6 +14,7 @@ from typing import Any
 
 import numpy as np
 
+from hubokit.model.compiling import compiled as compile_loop
 from hubokit.spectrum.elimination_counts import from_residues, primes_beyond
 from hubokit.spectrum.elimination_kernels import COMPILED_FROM, Table, partner_index
 from hubokit.spectrum.elimination_tables import Elimination
@@ -114,9 +115,7 @@ def _identity(entries: int, count: int, kind: type[Any], number_kind: type[Any])
 def _loops(compiled: bool) -> tuple[Callable[..., None], Callable[..., None]]:
     if not compiled:
         return _combine, _merge
-    import numba
-
-    return numba.njit(nogil=True, cache=True)(_combine), numba.njit(nogil=True, cache=True)(_merge)
+    return compile_loop(_combine, nogil=True), compile_loop(_merge, nogil=True)
 
 
 def _combine(

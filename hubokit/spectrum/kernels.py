@@ -7,21 +7,21 @@ is in `cursor` (int64) and in the tables of `hubokit.spectrum.derivatives`:
     cursor[1]  least entry of the current vector
     cursor[2]  entry of the current block at which its scan resumes, -1 when the block is done
 
-All loops stand in this one file because the cache on disk knows only the file of the function that it holds: a
-change to what another file inlines would go unnoticed. A walk function returns 0 when block ``end - 1`` is done
-and 1 when the room for states is used up.
+All loops stand in this one file: the cache on disk would not notice a change to what another file inlines. A walk
+function returns 0 when block ``end - 1`` is done and 1 when the room for states is used up.
 """
 
 from __future__ import annotations
 
+from functools import partial
 from typing import Any
 
 import numpy as np
-from numba import njit, types
-from numba.extending import intrinsic
+from numba import extending, njit, types
+
+from hubokit.model.compiling import compiled
 
 HIGHEST = 2**63 - 1
-_OPTIONS: dict[str, Any] = {"nogil": True, "cache": True, "boundscheck": False}
 _INLINE: dict[str, Any] = {"nogil": True, "boundscheck": False, "forceinline": True}
 
 
@@ -34,10 +34,11 @@ def _trailing_zeros(typingctx, value):  # type: ignore[no-untyped-def]
     return types.int64(types.int64), generate
 
 
-_lowest_bit: Any = intrinsic(_trailing_zeros)
+_lowest_bit: Any = extending.intrinsic(_trailing_zeros)
+_loop = partial(compiled, nogil=True, boundscheck=False)
 
 
-@njit(**_OPTIONS)
+@_loop
 def place(rows, row, column, fixed, value, slab, spin):  # type: ignore[no-untyped-def]
     """Add coefficients into zeroed rows once the fixed bits have the values of a slab."""
     kind = rows.dtype.type
@@ -55,7 +56,7 @@ def place(rows, row, column, fixed, value, slab, spin):  # type: ignore[no-untyp
         rows[row[m], column[m]] = kind(rows[row[m], column[m]] + amount)
 
 
-@njit(**_OPTIONS)
+@_loop
 def transform(rows, spin):  # type: ignore[no-untyped-def]
     """Coefficients to values, every row in place."""
     kind = rows.dtype.type
@@ -192,7 +193,7 @@ def _advance(t, root, flat, size, row, child, number, sign, steady, chain, least
     return np.int64(_subtract_through_two(flat, e, a, m, b, size))
 
 
-@njit(**_OPTIONS)
+@_loop
 def walk_levels(  # type: ignore[no-untyped-def]
     cursor, end, base, rows, row, child, number, sign, steady, chain, energy, count, name, cut, tally, states, names
 ):
@@ -251,7 +252,7 @@ def walk_levels(  # type: ignore[no-untyped-def]
             resume = 0
 
 
-@njit(**_OPTIONS)
+@_loop
 def walk_candidates(  # type: ignore[no-untyped-def]
     cursor, end, base, rows, row, child, number, sign, steady, chain, ceiling, tally, states, energies
 ):
@@ -282,7 +283,7 @@ def walk_candidates(  # type: ignore[no-untyped-def]
             resume = 0
 
 
-@njit(**_OPTIONS)
+@_loop
 def walk_counts(  # type: ignore[no-untyped-def]
     cursor, end, rows, row, child, number, sign, steady, chain, lowest, step, counts
 ):
@@ -304,7 +305,7 @@ def walk_counts(  # type: ignore[no-untyped-def]
         cursor[2] = 0
 
 
-@njit(**_OPTIONS)
+@_loop
 def walk_energies(  # type: ignore[no-untyped-def]
     cursor, end, rows, row, child, number, sign, steady, chain, out
 ):
@@ -326,14 +327,14 @@ def walk_energies(  # type: ignore[no-untyped-def]
         cursor[2] = 0
 
 
-@njit(**_OPTIONS)
+@_loop
 def _keep_within(kept, d, least, most):  # type: ignore[no-untyped-def]
     kind = kept.dtype.type
     for i in range(d.shape[0]):
         kept[i] = kind(kept[i] & (kind(least <= d[i]) & kind(d[i] <= most)))
 
 
-@njit(**_OPTIONS)
+@_loop
 def _keep_low_flips(kept, e):  # type: ignore[no-untyped-def]
     """Every pair at distance `reach`, also those that differ in more than one bit: whole vectors, masked.
 
@@ -348,7 +349,7 @@ def _keep_low_flips(kept, e):  # type: ignore[no-untyped-def]
         reach = np.uint64(reach + reach)
 
 
-@njit(**_OPTIONS)
+@_loop
 def walk_minima(  # type: ignore[no-untyped-def]
     cursor, end, rows, row, child, number, sign, steady, chain, roots, watched, fixed, kept, lowest, highest, total
 ):
@@ -390,7 +391,7 @@ def walk_minima(  # type: ignore[no-untyped-def]
         cursor[2] = 0
 
 
-@njit(**_OPTIONS)
+@_loop
 def bare_additions(e, a, repeats):  # type: ignore[no-untyped-def]
     """The machine's own limit, for benchmarks: vector additions in the cache and nothing else."""
     kind = e.dtype.type

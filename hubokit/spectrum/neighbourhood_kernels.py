@@ -9,15 +9,16 @@ in the trie of `hubokit.spectrum.recentring`.
 
 from __future__ import annotations
 
-from typing import Any
+from functools import partial
 
 import numpy as np
-from numba import njit
 
-_OPTIONS: dict[str, Any] = {"nogil": True, "cache": True, "boundscheck": False}
+from hubokit.model.compiling import compiled
+
+_loop = partial(compiled, nogil=True, boundscheck=False)
 
 
-@njit(**_OPTIONS)
+@_loop
 def first_in_order(one, other, count, bits):  # type: ignore[no-untyped-def]
     """Whether the first flip set leads to a state before that of the second in lift order, for one centre."""
     for place in range(count):
@@ -28,7 +29,7 @@ def first_in_order(one, other, count, bits):  # type: ignore[no-untyped-def]
     return False
 
 
-@njit(**_OPTIONS)
+@_loop
 def keep_lowest(energy, flips, count, bits, energies, sets, filled):  # type: ignore[no-untyped-def]
     """Insert a flip set into a list by energy and lift order; a full list forgets its last. Returns the length."""
     limit = len(energies)
@@ -49,7 +50,7 @@ def keep_lowest(energy, flips, count, bits, energies, sets, filled):  # type: ig
     return filled
 
 
-@njit(**_OPTIONS)
+@_loop
 def _add_row(target, base, row, start):  # type: ignore[no-untyped-def]
     """``target = base + row`` from `start` on; returns the least entry."""
     kind = target.dtype.type
@@ -61,7 +62,7 @@ def _add_row(target, base, row, start):  # type: ignore[no-untyped-def]
     return least
 
 
-@njit(**_OPTIONS)
+@_loop
 def _least(vector, start, stop):  # type: ignore[no-untyped-def]
     least = vector[start]
     for k in range(start, stop):
@@ -69,7 +70,7 @@ def _least(vector, start, stop):  # type: ignore[no-untyped-def]
     return least
 
 
-@njit(**_OPTIONS)
+@_loop
 def _count_up_to(vector, start, stop, bar):  # type: ignore[no-untyped-def]
     kind = vector.dtype.type
     count = kind(0)
@@ -78,7 +79,7 @@ def _count_up_to(vector, start, stop, bar):  # type: ignore[no-untyped-def]
     return np.int64(count)
 
 
-@njit(**_OPTIONS)
+@_loop
 def scan(  # type: ignore[no-untyped-def]
     vector, least, energy, start, stop, depth, flips, overlap, near, sizes, cuts, threshold, bits, kept, lowest,
     below, energies, sets, filled,
@@ -129,7 +130,7 @@ def scan(  # type: ignore[no-untyped-def]
                 )
 
 
-@njit(**_OPTIONS)
+@_loop
 def walk(  # type: ignore[no-untyped-def]
     radius, begin_at, end_at, values, last, begin, end, dense, active_room, near, sizes, cuts, threshold, bits, kept,
     lowest, below, energies, sets, filled,

@@ -24,6 +24,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hubokit.errors import LimitError
+from hubokit.model.compiling import compiled
 from hubokit.model.terms import Block
 
 SUBSETS = 2**27
@@ -225,15 +226,12 @@ def _scatter_booleans(
 
 @cache
 def _compiled_scatter() -> Callable[..., None]:
-    import numba
-
     def scatter(values: NDArray[Any], nodes: Members, weights: NDArray[Any]) -> None:
         for term in range(nodes.shape[0]):
             for place in range(nodes.shape[1]):
                 values[nodes[term, place]] += weights[term]
 
-    compiled: Callable[..., None] = numba.njit(nogil=True, cache=True)(scatter)
-    return compiled
+    return compiled(scatter, nogil=True)
 
 
 @dataclass(frozen=True)
