@@ -172,11 +172,14 @@ def refuse_existing(path: str | os.PathLike[str], *, force: bool) -> None:
     Raises
     ------
     InputError
-        The file exists and force is not set, or it is a folder.
+        The file exists and force is not set, or it is a folder, a device or a pipe.
     """
     name = os.fspath(path)
     if os.path.isdir(name):
         raise InputError("this is a folder; name a file in it", file=name)
+    if os.path.exists(name) and not os.path.isfile(name):
+        # A rename would put a plain file in its place, with or without force.
+        raise InputError("this is a device or a pipe; name a file", file=name)
     if os.path.lexists(name) and not force:
         raise InputError("the file exists; choose another name, or replace it with --force", file=name)
 

@@ -130,3 +130,15 @@ def test_the_same_content_is_compressed_to_the_same_bytes(tmp_path: Path) -> Non
     write_bytes(tmp_path / "b.gz", [b"some text"])
     assert (tmp_path / "a.gz").read_bytes() == (tmp_path / "b.gz").read_bytes()
     assert gzip.decompress((tmp_path / "a.gz").read_bytes()) == b"some text"
+
+
+def test_a_device_or_a_pipe_is_not_replaced_even_with_force(tmp_path: Path) -> None:
+    pipe = tmp_path / "answers.csv"
+    os.mkfifo(pipe)
+    link = tmp_path / "link.csv"
+    link.symlink_to(pipe)
+    for place in (pipe, link):
+        with pytest.raises(InputError, match="a device or a pipe"):
+            write_bytes(place, [b"x"], force=True)
+    assert pipe.is_fifo()
+    assert link.is_symlink()
