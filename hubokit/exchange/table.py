@@ -169,16 +169,20 @@ def write_table(
     ----------
     model : Hamiltonian
     members : "names" or "numbers", optional
-        By default names up to ``NAMED_LIMIT`` terms, else numbers.
+        By default names up to ``NAMED_LIMIT`` terms, else numbers. A carriage return in a name would not outlive
+        the cells of a table: such models are written with numbers.
 
     Raises
     ------
     InputError
-        The file exists and force is not set, or another word for members.
+        The file exists and force is not set, another word for members, or names that no cell can hold.
     """
     if members not in (None, "names", "numbers"):
         raise InputError(f'members are "names" or "numbers", not {members!a}', "members")
-    named = members == "names" or (members is None and len(model) <= NAMED_LIMIT)
+    returns = [label for label in model.labels if "\r" in label]
+    if members == "names" and returns:
+        raise InputError(f'a cell cannot hold the carriage return in {returns[0]!a}; members="numbers" would do')
+    named = members == "names" or (members is None and not returns and len(model) <= NAMED_LIMIT)
     write_bytes(path, _named_lines(model) if named else _numbered_lines(model), force=force)
 
 

@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 from scipy.io import mmread
 
+from hubokit.errors import InputError
 from hubokit.exchange.formats import read, read_document, write
 from hubokit.exchange.matrix_market import write_matrix_market
 from hubokit.exchange.pauli import write_pauli
@@ -116,3 +117,15 @@ def test_an_existing_file_of_fields_is_not_replaced(tmp_path: Path) -> None:
 def test_an_unknown_word_is_refused(way: object, word: str, tmp_path: Path) -> None:
     with pytest.raises(ValueError, match=word):
         way(Hamiltonian({("a",): 1}, "boolean"), tmp_path / "m", **{word: "other"})  # type: ignore[operator]
+
+
+@pytest.mark.parametrize("name", ["\r", "line\r\nbreak", "end\r"])
+def test_a_name_with_a_carriage_return_comes_back_from_a_table(name: str, tmp_path: Path) -> None:
+    model = Hamiltonian({(name,): 1, ("a", name): "1/2", ("a",): -3}, "spin")
+    write(model, tmp_path / "t.csv")
+    again = read(tmp_path / "t.csv")
+    assert again == model
+    assert again.labels == model.labels
+    with pytest.raises(InputError, match="carriage return"):
+        write_table(model, tmp_path / "named.csv", members="names")
+    assert not (tmp_path / "named.csv").exists()
