@@ -58,7 +58,7 @@ def reduce(
     Raises
     ------
     InputError
-        An unknown word, a negative gap, a gap of 0 with one-to-one.
+        An unknown word, a negative gap, a gap of 0 with one-to-one, or no Hamiltonian.
     LimitError
         A method that was named is beyond its work limit.
 
@@ -68,6 +68,9 @@ def reduce(
     >>> R.auxiliaries, str(R.model)
     (('y0',), '2 y0 - a y0 - b y0 - c y0')
     """
+    if not isinstance(H, Hamiltonian):
+        already = "; this one has been reduced, and .model is a Hamiltonian" if isinstance(H, Reduction) else ""
+        raise InputError(f"a Hamiltonian is needed, not a {type(H).__name__}{already}")
     gap = _checked(H, keep, prefer, domain, auxiliary_gap)
     if method not in methods():
         raise InputError(f"no such reduction method: {method!r}; the methods are {', '.join(methods())}", "method")

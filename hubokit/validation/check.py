@@ -7,7 +7,7 @@ from concurrent.futures import Executor
 from importlib.metadata import PackageNotFoundError, version
 from typing import Any
 
-from hubokit.errors import LimitError
+from hubokit.errors import InputError, LimitError
 from hubokit.model.numbers import Number, as_fraction
 from hubokit.reduction.result import Reduction
 from hubokit.validation.case import Case
@@ -64,7 +64,7 @@ def check(
     Raises
     ------
     InputError
-        An unknown claim or kind of evidence.
+        An unknown claim or kind of evidence, or no Reduction.
     LimitError
         The evidence named is too much for the models; the message says the size, the cost, and what would do.
 
@@ -77,6 +77,9 @@ def check(
     >>> verdict.claims["energies"].status, verdict.claims["one-to-one"].status
     ('proved', 'refuted')
     """
+    if not isinstance(reduction, Reduction):
+        given = type(reduction).__name__
+        raise InputError(f"a Reduction is needed, not a {given}; Reduction(source, model, auxiliaries) makes one")
     case, found = Case(reduction), Findings()
     kinds = kinds_for(evidence)
     options = Options(

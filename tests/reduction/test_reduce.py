@@ -179,3 +179,24 @@ def test_huge_weights_stay_exact() -> None:
 def test_an_unknown_word_is_refused(arguments: dict[str, object], words: str) -> None:
     with pytest.raises(InputError, match=words):
         reduce(Hamiltonian({("a", "b", "c"): 1}, "spin"), **arguments)  # type: ignore[arg-type]
+
+
+@pytest.mark.parametrize("method", ["auto", "pair-cover", "spin-product"])
+@pytest.mark.parametrize("domain", ["spin", "boolean"])
+def test_a_gap_beyond_int64_stays_exact(domain: str, method: str) -> None:
+    gap = 10**40
+    H = Hamiltonian({("a", "b", "c"): 1, ("b", "c", "d"): 2}, domain)
+    made = reduce(H, method, auxiliary_gap=gap)
+    least = made.projection.gap_everywhere
+    assert least is not None
+    assert least.value is not None
+    assert least.value >= gap
+    assert made.projection.polynomial == H
+
+
+def test_what_is_no_hamiltonian_is_refused_and_a_reduction_is_called_one() -> None:
+    made = reduce(Hamiltonian({("a", "b", "c"): 1}, "spin"))
+    with pytest.raises(InputError, match=r"not a Reduction; this one has been reduced, and \.model is a Hamiltonian"):
+        reduce(made)  # type: ignore[arg-type]
+    with pytest.raises(InputError, match="a Hamiltonian is needed, not a str"):
+        reduce("model.json")  # type: ignore[arg-type]

@@ -322,3 +322,8 @@ class TestManyGroundStates:
         verdict = self.pair({(): 3}, {(self.LOOSE[-1],): 1, (): 3})
         assert verdict.lost.count == 2**41
         assert verdict.claims["ground-states"].witness.state[self.LOOSE[-1]] == 1
+
+
+def test_what_is_no_reduction_is_refused_with_what_would_do():
+    with pytest.raises(InputError, match=r"a Reduction is needed, not a Hamiltonian; Reduction\(source, model"):
+        check(Hamiltonian({("a", "b"): 1}, "spin"))

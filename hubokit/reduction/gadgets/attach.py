@@ -165,7 +165,8 @@ class TermPiece:
 
     def _safe_sizes(self, slopes: dict[tuple[int, ...], int], steps: dict[tuple[int, ...], int]) -> npt.NDArray[Any]:
         """The sizes as objects where some coefficient might not fit int64."""
-        total, count = absolute_sum(self.sizes), len(self.sizes)
+        # Of no term at all numpy would still multiply int64 by the factors.
+        total, count = max(absolute_sum(self.sizes), 1), max(len(self.sizes), 1)
         bound = sum(abs(slopes[item]) * total + abs(steps[item]) * count for item in slopes)
         return self.sizes.astype(object) if bound >= INT64_BOUND else self.sizes
 
