@@ -245,3 +245,16 @@ def test_the_ground_states_of_the_greenhouse_are_the_settings_that_break_no_rule
     assert np.all((north.sum(axis=1) <= 2) & (south.sum(axis=1) >= 1) & (south.sum(axis=1) <= 2))
     mist = found[:, place["mist-east"]] == 1
     assert np.all(found[mist][:, [place["pump"], place["tank-a"]]] == 1)
+
+
+@pytest.mark.parametrize("domain", ["spin", "boolean"])
+def test_pauli_strings_of_many_variables_are_left_out_and_nothing_else(
+    domain: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    model = hk.Hamiltonian({("a", "b", "c"): 1, ("c", "d", "e"): -1}, domain=domain)
+    monkeypatch.setattr("hubokit.preparation.contents.LETTERS_LIMIT", 79 if domain == "boolean" else 9)
+    made = prepare(model, tmp_path / "out")
+    assert set(made.left_out) == {"source.pauli", "reduced.pauli"}
+    assert made.left_out["source.pauli"].startswith("a letter for each of 5 variables in every term")
+    monkeypatch.setattr("hubokit.preparation.contents.LETTERS_LIMIT", 80 if domain == "boolean" else 10)
+    assert set(prepare(model, tmp_path / "again").left_out) == {"reduced.pauli"}

@@ -11,6 +11,7 @@ from hubokit.errors import HubokitError, InputError
 from hubokit.model.numbers import format_fraction
 
 if TYPE_CHECKING:
+    from hubokit.model.hamiltonian import Hamiltonian
     from hubokit.reduction.result import Reduction
     from hubokit.validation.verdict import Verdict
 
@@ -24,8 +25,11 @@ DOCUMENTS = {
 NOT_EXPORTED = ("json", "cnf")
 """The documents stand in the folder anyway; in CNF a weight of w would become w equal clauses."""
 
-EXPORT_LIMIT = 200_000
+EXPORT_LIMIT = 500_000
 """Terms above which a model is not written in other formats unasked."""
+
+LETTERS_LIMIT = 100_000_000
+"""Letters above which a table of Pauli strings, one letter a variable in every term, is not written unasked."""
 
 BOOLEAN_ANSWERS = "       hubokit project reduced.json STATES.csv --domain boolean"
 
@@ -70,8 +74,9 @@ def export(reduction: Reduction, place: Path, formats: Iterable[str]) -> tuple[d
             if entry.locality is not None and model.locality > entry.locality:
                 continue
             name = stem + entry.suffixes[0]
-            if len(model) > EXPORT_LIMIT:
-                left_out[name] = f"more than {EXPORT_LIMIT} terms; hubokit convert --lossy writes it"
+            reason = _too_large(model, entry.name)
+            if reason is not None:
+                left_out[name] = f"{reason}; hubokit convert --lossy writes it"
                 continue
             other = "" if entry.domain in ("any", model.domain) else f" (in {entry.domain} variables)"
             try:
@@ -86,6 +91,18 @@ def export(reduction: Reduction, place: Path, formats: Iterable[str]) -> tuple[d
                 BESIDE if path.name.endswith(".names.json") else f"second part of {_first_part(path, files)}"
             )
     return files, left_out
+
+
+def _too_large(model: Hamiltonian, format_name: str) -> str | None:
+    """Why a model is not written in a format unasked; None where it is."""
+    if len(model) > EXPORT_LIMIT:
+        return f"more than {EXPORT_LIMIT} terms"
+    if format_name == "pauli":
+        # A term of k booleans is up to 2**k terms of spins.
+        strings = sum(len(block.weights) << (block.locality * (model.domain == "boolean")) for block in model.blocks)
+        if strings * model.size > LETTERS_LIMIT:
+            return f"a letter for each of {model.size} variables in every term"
+    return None
 
 
 def _first_part(path: Path, files: Mapping[str, str]) -> str:
