@@ -51,8 +51,13 @@ def load_document(path: Path, source: Hamiltonian | None = None, file_format: st
 
 def load_model(path: Path) -> Hamiltonian:
     """The Hamiltonian of a file; of a reduction, the reduced model."""
+    return model_of(load_document(path), path)
+
+
+def model_of(document: Document, path: Path) -> Hamiltonian:
+    """The Hamiltonian of a document read from a file; an error names the file."""
     try:
-        return load_document(path).model
+        return document.model
     except HubokitError as error:
         raise error.located(file=str(path)) from None
 
@@ -70,11 +75,11 @@ def load_reduction(path: Path, elsewhere: Elsewhere) -> tuple[Reduction, Documen
     if isinstance(document.thing, Reduction) and not elsewhere.given:
         return document.thing, document
     try:
+        model = document.model
         source = document.thing.source if named is None and isinstance(document.thing, Reduction) else named
         if source is None:
             hint = f" (the trail calls it {document.trail[0]['file']})" if _names_file(document) else ""
             raise InputError(f"the source is not in the file; --source SOURCE names it{hint}")
-        model = document.model
         origin = None if elsewhere.origin is None else read_origin(elsewhere.origin, source, model)
         added = options.names(elsewhere.auxiliaries) or document.auxiliaries or _unreached(source, model, origin)
         made = Reduction(

@@ -62,7 +62,7 @@ GapOption = Annotated[
         "--auxiliary-gap", metavar="ENERGY", help="Least auxiliary gap; by default the source's resolution."
     ),
 ]
-Seed = Annotated[int, typer.Option("--seed", help="Seed of the searches of the reduction.")]
+Seed = Annotated[int, typer.Option("--seed", help="Seed of what is left to chance; the same seed gives the same.")]
 EvidenceOption = Annotated[Evidence, typer.Option("--evidence", help="Kind of evidence; auto takes the cheapest.")]
 ClaimOption = Annotated[
     list[str] | None,

@@ -9,7 +9,7 @@ from typing import Annotated
 import typer
 
 from hubokit.cli import describing, options, summary
-from hubokit.cli.loading import load_document
+from hubokit.cli.loading import load_document, model_of
 from hubokit.cli.text import fields, section
 from hubokit.exchange.conversion import losses
 from hubokit.exchange.documents import as_document
@@ -39,7 +39,7 @@ def command(
     format_of(out, file_format)
     refuse_existing(out, force=force)
     document = load_document(model)
-    source = document.model
+    source = model_of(document, model)
     reduction = reduce(
         source,
         method=method,

@@ -5,6 +5,8 @@ from __future__ import annotations
 import copy
 import gzip
 import json
+import subprocess
+import sys
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -310,3 +312,54 @@ def test_a_count_of_every_state_of_a_large_model_is_refused_before_the_start(hub
     path = tmp_path / "large.json"
     path.write_text(json.dumps(document), encoding="utf-8")
     one_line(hubokit("spectrum", path, "--density"), "70")
+
+
+@pytest.mark.parametrize(
+    "arguments", [("check",), ("reduce", "-o", "never.json"), ("spectrum",), ("project", "answers.csv")]
+)
+def test_a_verdict_where_a_model_is_needed_is_called_one(hubokit: Any, fixtures: Path, arguments: Any) -> None:
+    verdict = fixtures / "formats" / "valves-verdict.json"
+    command, *rest = arguments
+    one_line(hubokit(command, verdict, *rest), str(verdict), "a verdict holds no model")
+
+
+def run_apart(program: str, *arguments: str) -> subprocess.CompletedProcess[str]:
+    """A shell command whose first argument is this Python."""
+    return subprocess.run(
+        ["sh", "-c", program, "sh", sys.executable, *arguments],
+        capture_output=True,
+        text=True,
+        check=False,
+        cwd=Path(__file__).parents[2],
+    )
+
+
+def test_a_closed_standard_output_is_no_defect(fixtures: Path) -> None:
+    done = run_apart('"$1" -m hubokit.cli show "$2" >&-', str(fixtures / "greenhouse.json"))
+    assert (done.returncode, done.stderr) == (0, "")
+
+
+def test_an_interrupt_that_falls_where_nothing_can_be_raised_is_passed_on() -> None:
+    program = """
+import sys
+import time
+from hubokit import cli
+from hubokit.cli import app
+
+class Falls:
+    def __del__(self):
+        raise KeyboardInterrupt
+
+def run(arguments):
+    with __import__("contextlib").suppress(KeyboardInterrupt):
+        Falls()
+        for _ in range(1000):
+            time.sleep(0.01)
+        print("lost")
+    return 130
+
+app.run = run
+cli.main()
+"""
+    done = subprocess.run([sys.executable, "-c", program], capture_output=True, text=True, check=False)
+    assert (done.returncode, done.stdout, done.stderr) == (130, "", "")
