@@ -191,6 +191,6 @@ def smallest_weights(weights: NDArray[Any]) -> NDArray[Any]:
 
 def times(weights: NDArray[Any], factor: int) -> NDArray[Any]:
     """Weights times an integer; objects where int64 might wrap."""
-    if weights.dtype != object and absolute_sum(weights) * abs(factor) >= INT64_BOUND:
+    if weights.dtype != object and max(absolute_sum(weights), 1) * abs(factor) >= INT64_BOUND:
         weights = weights.astype(object)
     return weights * factor if weights.dtype == object else weights * np.int64(factor)
