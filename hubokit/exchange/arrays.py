@@ -27,7 +27,7 @@ from hubokit.exchange.model_document import model_fields
 from hubokit.exchange.reading import Reading
 from hubokit.exchange.schema_errors import kind_of, refuse_invalid
 from hubokit.model.hamiltonian import Hamiltonian
-from hubokit.model.numbers import Number, as_fraction
+from hubokit.model.numbers import Number, as_fraction, exact_array
 
 if TYPE_CHECKING:
     from scipy.sparse import coo_array
@@ -268,7 +268,7 @@ def from_matrix(
         entries = matrix.tocoo()
         shape, rows, columns, values = entries.shape, entries.row, entries.col, entries.data
     else:
-        dense = np.asarray(matrix)
+        dense = exact_array(matrix)
         shape = dense.shape
         rows, columns = np.nonzero(dense) if dense.ndim == 2 else (np.zeros(0, int), np.zeros(0, int))
         values = dense[rows, columns] if dense.ndim == 2 else dense
@@ -279,7 +279,7 @@ def from_matrix(
     members = [np.stack([rows, columns], axis=1).astype(np.int64)]
     weights = [np.asarray(values)]
     if fields is not None:
-        vector = np.asarray(fields)
+        vector = exact_array(fields)
         if vector.shape != (shape[0],):
             raise InputError(f"{shape[0]} fields are needed, not an array of shape {vector.shape}", "fields")
         members.append(np.arange(shape[0])[:, None])

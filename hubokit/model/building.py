@@ -11,7 +11,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from hubokit.errors import InputError
 from hubokit.model.labels import as_label, as_labels
-from hubokit.model.numbers import Number, as_fraction, as_weights, common_resolution, format_fraction
+from hubokit.model.numbers import Number, as_fraction, as_weights, common_resolution, exact_array, format_fraction
 from hubokit.model.terms import Part
 
 
@@ -84,7 +84,7 @@ def _member_array(array: ArrayLike, place: int) -> NDArray[Any]:
 
 def _weight_arrays(weights: Sequence[ArrayLike], unit: Fraction) -> tuple[list[NDArray[Any]], Fraction]:
     """Whole weights and their unit; floats and fractions are brought to their common resolution first."""
-    arrays = [np.asarray(array) for array in weights]
+    arrays = [exact_array(array) for array in weights]
     if all(_holds_integers(array) for array in arrays):
         return [as_weights(array, f"weights[{i}]") for i, array in enumerate(arrays)], unit
     values = [[as_fraction(value, f"weights[{i}]") for value in a.tolist()] for i, a in enumerate(arrays)]

@@ -152,6 +152,22 @@ def absolute_sum(weights: NDArray[Any]) -> int:
     return total - 2 * below
 
 
+def exact_array(values: object) -> NDArray[Any]:
+    """``np.asarray``, save that numbers in a list stay what they are where numpy would make floats of them.
+
+    Of a list with an integer beyond 63 bits, or with an integer and a float, numpy makes float64 and rounds.
+
+    Examples
+    --------
+    >>> exact_array([2**64 - 1, -1]).tolist()
+    [18446744073709551615, -1]
+    """
+    array = np.asarray(values)
+    if array.dtype.kind == "f" and not isinstance(values, (np.ndarray, np.generic)):
+        return np.array(values, dtype=object)
+    return array
+
+
 def as_weights(values: object, place: str | None = None) -> NDArray[Any]:
     """Whole numbers as int64 where every one fits, else as Python integers in an object array.
 
@@ -165,7 +181,7 @@ def as_weights(values: object, place: str | None = None) -> NDArray[Any]:
     InputError
         Something in it is not a whole number, or the array is not one-dimensional.
     """
-    array = np.asarray(values)
+    array = exact_array(values)
     if array.ndim != 1:
         raise InputError(f"weights have shape {array.shape}; one dimension is needed", place)
     if array.size == 0:

@@ -128,7 +128,7 @@ class _Verdict:
             text = f"m = {low} at every one of {self.whole.common} ground states"
             self.found.prove("even-multiplicity", METHOD, f"{text}; {self.account}")
             return
-        counts = np.array(self.whole.source.multiplicities)
+        counts = np.array(self.whole.source.multiplicities, object)
         states = self.whole.source.states
         text = f"m runs from {low} to {high} over {self.whole.common} ground states"
         if counts.min() == counts.max():
@@ -147,7 +147,7 @@ class _Verdict:
             self.found.prove("one-to-one", METHOD, f"m = 1 at every state; {self.account}")
             return
         text = f"m runs from {low} to {high} over all states"
-        counts = np.array(self.whole.source.multiplicities)
+        counts = np.array(self.whole.source.multiplicities, object)
         state = self.whole.source.states[int(counts.argmax())] if counts.max() > 1 else tied_state(self.case)
         if state is None:
             self.found.leave_open("one-to-one", f"exhaustion: {text}, and no state was found to show for it")

@@ -169,3 +169,8 @@ def test_powers_are_reduced_by_the_domain() -> None:
 def test_what_is_no_polynomial_is_refused(expression: str, message: str) -> None:
     with pytest.raises(InputError, match=message):
         from_sympy(sympy.sympify(expression), "spin")
+
+
+def test_a_matrix_of_lists_keeps_integers_that_numpy_would_round() -> None:
+    model = from_matrix([[0, 2**64 - 1], [0, -1]], "boolean", [2**63 + 5, 3])
+    assert [value for _, value in model.terms()] == [2**63 + 5, 2, 2**64 - 1]

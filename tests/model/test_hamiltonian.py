@@ -194,3 +194,12 @@ def test_a_million_cubic_terms_are_merged_as_arrays():
     assert H.energy(state) == int((state[members].astype(np.int64).prod(axis=1) * weights).sum())
     assert (H + H).weight_bound == H.weight_bound
     assert (H + H).resolution == 2 * H.resolution
+
+
+@pytest.mark.parametrize(
+    "weights", [[2**64 - 1, -1], [2**63, -(2**63)], [2**63 + 5, 3], [2**60 + 1, 0.5], [2**64 - 1, Fraction(1, 3)]]
+)
+def test_numbers_of_a_list_are_kept_where_numpy_would_round_them(weights):
+    expected = hk.Hamiltonian({("v0", "v1"): weights[0], ("v1", "v2"): weights[1]}, domain="spin")
+    assert [value for _, value in expected.terms()] == [Fraction(weight) for weight in weights]
+    assert hk.Hamiltonian.from_arrays([[[0, 1], [1, 2]]], [weights], domain="spin") == expected

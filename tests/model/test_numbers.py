@@ -74,6 +74,11 @@ def test_unsigned_and_mixed_weights_keep_their_values():
         as_weights(np.array([1, 0.5], dtype=object))
 
 
+@given(st.lists(st.integers(-(2**65), 2**65), min_size=1, max_size=5))
+def test_whole_numbers_of_a_list_are_never_rounded(values):
+    assert as_weights(values).tolist() == values
+
+
 def test_denominators_without_end_are_refused():
     primes = [p for p in range(2, 60_000) if all(p % q for q in range(2, int(p**0.5) + 1))]
     with pytest.raises(InputError, match="65536 bits"):
