@@ -17,6 +17,7 @@ from hubokit.reduction.result import Reduction
 
 KEEPS = ("ground-states", "energies", "one-to-one")
 PREFERENCES = ("auxiliaries", "range", "couplers")
+LARGEST_SEED = 2**53 - 1
 
 
 def reduce(
@@ -49,7 +50,7 @@ def reduce(
         Least auxiliary gap asked for, in energy units. Default: the source's resolution for one-to-one, else 0 (ties
         between auxiliary settings are allowed).
     seed : int
-        Seed of the searches that use chance.
+        Seed of the searches that use chance, within 2^53 - 1, which the trail can hold.
 
     Returns
     -------
@@ -58,7 +59,7 @@ def reduce(
     Raises
     ------
     InputError
-        An unknown word, a negative gap, a gap of 0 with one-to-one, or no Hamiltonian.
+        An unknown word, a seed that is too large, a negative gap, a gap of 0 with one-to-one, or no Hamiltonian.
     LimitError
         A method that was named is beyond its work limit.
 
@@ -74,6 +75,8 @@ def reduce(
     gap = _checked(H, keep, prefer, domain, auxiliary_gap)
     if method not in methods():
         raise InputError(f"no such reduction method: {method!r}; the methods are {', '.join(methods())}", "method")
+    if abs(seed) > LARGEST_SEED:
+        raise InputError(f"{seed} was given; seeds lie within 2**53 - 1", "seed")
     question = Question(H, keep, prefer, gap, seed)  # type: ignore[arg-type]
     start, steps = H, []
     if keep == "ground-states" and method == "auto":

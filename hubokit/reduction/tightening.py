@@ -23,8 +23,9 @@ from fractions import Fraction
 import numpy as np
 from numpy.typing import NDArray
 
-from hubokit.model.numbers import format_fraction
+from hubokit.model.numbers import absolute_sum, format_fraction
 from hubokit.projection.shared_bounds import PARTS, Candidate, FlipProblem, Slacks, equal_shares, slacks
+from hubokit.projection.structure import BOUND
 from hubokit.reduction.covers import PairCoverPlan, covered_form
 from hubokit.reduction.pairs import PairVariables
 from hubokit.reduction.penalties import BooleanForm, Strengths
@@ -87,9 +88,11 @@ def tightened(plan: PairCoverPlan, work: int = 1) -> PairCoverPlan:
     """
     form = covered_form(plan.source, plan.covered, plan.factors, plan.pairs, plan.resolution)
     gap = int(plan.gap / plan.resolution)
+    given, (form, strengths) = plan, _wide(form, plan.strengths, gap)
+    plan = replace(plan, strengths=strengths)
     found = heaviest_first(groups(form, plan.pairs, LARGEST_GROUP * work), plan.strengths)
     if not found:
-        return plan
+        return given
     ledgers = [Ledger(plan, domain) for domain in dict.fromkeys((plan.source.domain, "boolean"))]
     one, both = plan.strengths.one.copy(), plan.strengths.both.copy()
     proofs: set[str] = set()
@@ -112,11 +115,20 @@ def tightened(plan: PairCoverPlan, work: int = 1) -> PairCoverPlan:
                 ledger.change(numbers, strengths)
             proofs.add(proof)
     if not proofs:
-        return plan
+        return given
     better = replace(plan, strengths=Strengths(one, both))
     scale = Fraction(better.price()["largest"]) / plan.price()["largest"]
     record = {"scale": format_fraction(scale), "proved by": "; ".join(sorted(proofs))}
     return replace(better, tightening=record)
+
+
+def _wide(form: BooleanForm, strengths: Strengths, gap: int) -> tuple[BooleanForm, Strengths]:
+    """Both with Python integers where slacks, which are in units of 1 / `PARTS`, might not fit int64."""
+    numbers = (form.fields, form.couplers, strengths.one, strengths.both)
+    if sum(map(absolute_sum, numbers)) + gap < BOUND:
+        return form, strengths
+    fields, couplers, one, both = (array.astype(object) for array in numbers)
+    return BooleanForm(fields, form.members, couplers), Strengths(one, both)
 
 
 def heaviest_first(found: Sequence[NDArray[np.int64]], strengths: Strengths) -> list[NDArray[np.int64]]:

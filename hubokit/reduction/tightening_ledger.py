@@ -11,7 +11,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from hubokit.model.numbers import INT64_BOUND
+from hubokit.model.numbers import INT64_BOUND, absolute_sum
+from hubokit.projection.structure import BOUND
 from hubokit.reduction.covers import PairCoverPlan
 from hubokit.reduction.penalties import SPIN_DIVISOR, BooleanForm, Strengths, penalty_parts
 
@@ -76,7 +77,8 @@ class Ledger:
         unique, self.row = np.unique(keys[order], return_inverse=True)
         self.end, self.factor = ends[order], factors[order]
         self.start = np.searchsorted(owners[order], np.arange(pairs.count + 1))
-        self.value = np.zeros(len(unique), plan.strengths.one.dtype)
+        wide = sum(absolute_sum(weights) for _, weights in parts) >= BOUND
+        self.value = np.zeros(len(unique), object if wide else plan.strengths.one.dtype)
         for members, weights in parts:
             if members.shape[1]:
                 key = _key(members, total)
@@ -99,7 +101,8 @@ class Ledger:
         """Put new penalties in the place of those of these auxiliaries."""
         for number, place in zip(numbers.tolist(), range(len(numbers)), strict=True):
             entry = slice(self.start[number], self.start[number + 1])
-            more = np.array([strengths.one[place] - self.one[number], strengths.both[place] - self.both[number]])
+            changes = [strengths.one[place] - self.one[number], strengths.both[place] - self.both[number]]
+            more = np.array(changes, self.value.dtype)
             np.add.at(self.value, self.row[entry], self.factor[entry] * more[self.end[entry]])
         self.one[numbers], self.both[numbers] = strengths.one, strengths.both
 

@@ -11,6 +11,7 @@ import pytest
 
 from hubokit.errors import InputError
 from hubokit.model.hamiltonian import Hamiltonian
+from hubokit.model.numbers import as_fraction
 from hubokit.reduction.assembly import fresh_labels
 from hubokit.reduction.gadgets.table import FAMILIES
 from hubokit.reduction.reduce import reduce
@@ -192,6 +193,34 @@ def test_a_gap_beyond_int64_stays_exact(domain: str, method: str) -> None:
     assert least.value is not None
     assert least.value >= gap
     assert made.projection.polynomial == H
+
+
+@pytest.mark.parametrize("gap", [10**18, 10**40, "1e-300"])
+def test_penalties_are_tightened_exactly_whatever_the_gap(gap: int | str) -> None:
+    members = [(0, 1, 2, 3), (0, 1, 4, 5), (0, 1, 2, 4), (1, 2, 3, 4), (2, 3, 4, 5)]
+    H = Hamiltonian.from_arrays([np.array(members)], [np.array([1, 1, -1, 2, 1])], domain="boolean")
+    made = reduce(H, "pair-cover", auxiliary_gap=gap)
+    least = made.projection.gap_everywhere
+    assert least is not None
+    assert least.value is not None
+    assert least.value >= as_fraction(gap)
+    assert made.projection.polynomial == H
+
+
+@pytest.mark.parametrize("domain", ["spin", "boolean"])
+@pytest.mark.parametrize("largest", [2**51, 10**17, 10**18, 2**61, 10**25])
+def test_terms_on_common_pairs_stay_exact_beside_one_that_is_huge(domain: str, largest: int) -> None:
+    terms = {("a", "b", "c"): largest, ("b", "c", "d"): -3, ("a", "b", "c", "d"): "1/7"}
+    H = Hamiltonian({**terms, ("a", "c", "d", "e", "f"): 2, ("a", "b", "d", "e", "f"): 2}, domain)
+    for method in ("auto", "pair-cover"):
+        for keep in ("energies", "one-to-one"):
+            assert reduce(H, method, keep).projection.polynomial == H
+    assert reduce(H, keep="ground-states").model.locality <= 2
+
+
+def test_a_seed_that_no_document_holds_is_refused() -> None:
+    with pytest.raises(InputError, match=r"seed: 9007199254740992 was given; seeds lie within 2\*\*53 - 1"):
+        reduce(Hamiltonian({("a", "b", "c"): 1}, "spin"), seed=2**53)
 
 
 def test_what_is_no_hamiltonian_is_refused_and_a_reduction_is_called_one() -> None:
