@@ -46,6 +46,13 @@ class Evidence(StrEnum):
     neighbourhood = "neighbourhood"
 
 
+def _seconds(time: float) -> float:
+    """A limit that every prediction can be compared with."""
+    if not time >= 0:
+        raise InputError(f"{time} is no number of seconds; 60 is a minute, inf is no limit", "--time")
+    return time
+
+
 Model = Annotated[Path, typer.Argument(metavar="MODEL", help="A model in any format that hubokit reads.")]
 Reduced = Annotated[Path, typer.Argument(metavar="REDUCED", help="The reduced model.")]
 Json = Annotated[bool, typer.Option("--json", help="Print the machine-readable document instead of the table.")]
@@ -68,7 +75,10 @@ ClaimOption = Annotated[
     list[str] | None,
     typer.Option("--claim", metavar="NAME", help="Claim to ask for, or all; may be given several times."),
 ]
-Time = Annotated[float, typer.Option("--time", metavar="SECONDS", help="Refuse work that would take longer.")]
+Time = Annotated[
+    float,
+    typer.Option("--time", metavar="SECONDS", callback=_seconds, help="Refuse work that would take longer."),
+]
 Limit = Annotated[int, typer.Option("--limit", min=0, help="Most states kept per level.")]
 Checkpoint = Annotated[
     Path | None,

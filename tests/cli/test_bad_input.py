@@ -323,6 +323,11 @@ def test_a_verdict_where_a_model_is_needed_is_called_one(hubokit: Any, fixtures:
     one_line(hubokit(command, verdict, *rest), str(verdict), "a verdict holds no model")
 
 
+@pytest.mark.parametrize("seconds", ["nan", "-1"])
+def test_a_time_that_limits_nothing_is_refused(hubokit: Any, fixtures: Path, seconds: str) -> None:
+    one_line(hubokit("spectrum", fixtures / "greenhouse.json", "--time", seconds), "--time", "no number of seconds")
+
+
 def run_apart(program: str, *arguments: str) -> subprocess.CompletedProcess[str]:
     """A shell command whose first argument is this Python."""
     return subprocess.run(
